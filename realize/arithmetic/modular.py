@@ -1,0 +1,312 @@
+"""Subspaces modulo word-size primes, and lifting them to the rationals.
+
+The controllability matrix over the rationals is never built: its entries explode. Modulo a prime
+the reachable subspace costs a few matrix products, and a rank modulo a prime never exceeds the
+true rank. What the primes agree on is lifted by the Chinese remainder theorem and rational
+reconstruction, and *verified* over the rationals: the lifted subspace holds B and is invariant,
+so it contains the reachable one, and its dimension was a lower bound already.
+
+References
+----------
+Mulders and Storjohann (2004), Certified dense linear system solving, J. Symbolic Computation 37,
+for lifting and verifying. Wang, Guy, Davenport (1982), P-adic reconstruction of rational numbers,
+ACM SIGSAM Bulletin 16. von zur Gathen and Gerhard, Modern Computer Algebra, section 5.10.
+"""
+
+from __future__ import annotations
+
+import math
+import time
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from functools import cache
+from typing import Any
+
+from flint import fmpq, fmpz, fmpz_mat, nmod_mat
+
+from realize.errors import BudgetError
+
+__all__ = ["Clock", "Profile", "krylov_stairs", "krylov_steps", "lift", "primes", "reached_rows"]
+
+PRIME_BITS = 62
+
+
+@cache
+def _prime_below(start: int) -> int:
+    candidate = start - 1
+    while not fmpz(candidate).is_prime():
+        candidate -= 1
+    return candidate
+
+
+def primes() -> Iterator[int]:
+    """Yield word-size primes, always the same ones, so that the exact path is reproducible."""
+    prime = 1 << PRIME_BITS
+    while True:
+        prime = _prime_below(prime)
+        yield prime
+
+
+class Clock:
+    """A budget of time, looked at between steps.
+
+    Parameters
+    ----------
+    seconds : float or None
+        None for no limit.
+    """
+
+    __slots__ = ("_end", "seconds")
+
+    def __init__(self, seconds: float | None) -> None:
+        self.seconds = seconds
+        self._end = math.inf if seconds is None else time.monotonic() + seconds
+
+    def check(self, where: str) -> None:
+        """Raise when the time is up.
+
+        Raises
+        ------
+        BudgetError
+            Saying where the time ran out.
+        """
+        if time.monotonic() > self._end:
+            raise BudgetError(
+                f"the exact path ran out of its budget of {self.seconds:g} s in: {where}. Give a "
+                "larger budget, or use the floating path alone"
+            )
+
+    def afford(self, estimate: float, where: str) -> None:
+        """Raise when a step is expected to take longer than what is left.
+
+        Raises
+        ------
+        BudgetError
+            Saying what was estimated. FLINT calls cannot be interrupted, so a step that is far
+            too long must not be begun.
+        """
+        left = self._end - time.monotonic()
+        if estimate > left:
+            raise BudgetError(
+                f"the exact path did not begin: {where} is estimated at {estimate:.3g} s, and "
+                f"{max(left, 0.0):.3g} s of the budget of {self.seconds:g} s are left. Give a "
+                "larger budget, or use the floating path alone"
+            )
+
+
+@dataclass(frozen=True, slots=True)
+class Profile:
+    """A row space modulo a prime in reduced echelon form.
+
+    ``rows`` has ``len(pivots)`` rows; row i has a 1 in column ``pivots[i]``.
+    """
+
+    rows: nmod_mat
+    pivots: tuple[int, ...]
+
+    def beats(self, other: Profile) -> bool:
+        """Whether this profile is nearer the true one: larger rank, then earlier pivots.
+
+        Modulo a prime the rank can only fall and the pivots can only move right, so the true
+        profile dominates; primes with different profiles must never be mixed.
+        """
+        if len(self.pivots) != len(other.pivots):
+            return len(self.pivots) > len(other.pivots)
+        return self.pivots < other.pivots
+
+
+def _pivots(echelon: nmod_mat, rank: int) -> tuple[int, ...]:
+    found: list[int] = []
+    column = 0
+    for i in range(rank):
+        while int(echelon[i, column]) == 0:
+            column += 1
+        found.append(column)
+        column += 1
+    return tuple(found)
+
+
+def _echelon(matrix: nmod_mat) -> tuple[nmod_mat, int]:
+    """Return the non-zero rows of the reduced echelon form, and their number."""
+    reduced, rank = matrix.rref()
+    if rank == matrix.nrows():
+        return reduced, rank
+    width, prime = matrix.ncols(), matrix.modulus()
+    return nmod_mat(rank, width, reduced.entries()[: rank * width], prime), rank
+
+
+def _stack(upper: nmod_mat, lower: nmod_mat) -> nmod_mat:
+    return nmod_mat(
+        upper.nrows() + lower.nrows(),
+        upper.ncols(),
+        upper.entries() + lower.entries(),
+        upper.modulus(),
+    )
+
+
+def reached_rows(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> Profile:
+    """Return the row space of [B, AB, A^2 B, ...] transposed, modulo a prime.
+
+    ``K_2t = span(K_t, A^t K_t)`` by repeated squaring of A. K_t lies in K_(t+1) lies in K_2t, so
+    equal dimensions mean invariance.
+
+    Parameters
+    ----------
+    A : fmpz_mat (n, n)
+    B : fmpz_mat (n, m)
+    """
+    order = A.nrows()
+    rows, rank = _echelon(nmod_mat(B.transpose(), prime))
+    power = nmod_mat(A.transpose(), prime) if rank else None
+    while power is not None and 0 < rank < order:
+        clock.check("the reachable subspace modulo a prime")
+        grown, grown_rank = _echelon(_stack(rows, rows * power))
+        if grown_rank == rank:
+            break
+        rows, rank = grown, grown_rank
+        if rank < order:
+            power = power * power
+    return Profile(rows, _pivots(rows, rank))
+
+
+def krylov_steps(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> list[Profile]:
+    """Return, for each stage, a canonical basis of what the stage adds, modulo a prime.
+
+    Stage t adds span[B, ..., A^t B] over span[B, ..., A^(t-1) B]. Its basis vectors vanish in
+    the pivots of all earlier stages and are in reduced echelon form, which makes them unique, so
+    that they can be lifted.
+    """
+    order = A.nrows()
+    power = nmod_mat(A.transpose(), prime)
+    steps: list[Profile] = []
+    pending = nmod_mat(B.transpose(), prime)
+    found = 0
+    while True:
+        clock.check("the staircase modulo a prime")
+        for step in steps:
+            pending = _clear(pending, step)
+        rows, rank = _echelon(pending)
+        if rank == 0:
+            return steps
+        step = Profile(rows, _pivots(rows, rank))
+        steps.append(step)
+        found += rank
+        if found == order:
+            return steps
+        pending = rows * power
+
+
+def _clear(matrix: nmod_mat, step: Profile) -> nmod_mat:
+    """Subtract the multiples of a stage's rows that clear its pivots."""
+    width, entries = matrix.ncols(), matrix.entries()
+    chosen = [entries[i * width + j] for i in range(matrix.nrows()) for j in step.pivots]
+    factors = nmod_mat(matrix.nrows(), len(step.pivots), chosen, matrix.modulus())
+    return matrix - factors * step.rows
+
+
+def krylov_stairs(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> tuple[int, ...]:
+    """Return the rank increments of [B, AB, ...] modulo a prime, without the closing zero."""
+    return tuple(len(step.pivots) for step in krylov_steps(A, B, prime, clock))
+
+
+def _reconstruct(residue: int, modulus: int, bound: int) -> tuple[int, int] | None:
+    """Return (p, q) with p = q * residue modulo the modulus, both at most the bound, or None."""
+    first, second = modulus, residue % modulus
+    left, right = 0, 1
+    while second > bound:
+        quotient = first // second
+        first, second = second, first - quotient * second
+        left, right = right, left - quotient * right
+    if right == 0 or abs(right) > bound or math.gcd(second, right) != 1:
+        return None
+    return (second, right) if right > 0 else (-second, -right)
+
+
+def _combine(images: list[list[int]], moduli: list[int]) -> tuple[list[int], int]:
+    """Join residues by the Chinese remainder theorem, all entries at once."""
+    if len(moduli) == 1:
+        return images[0], moduli[0]
+    modulus = math.prod(moduli)
+    weights = [(modulus // prime) * pow(modulus // prime, -1, prime) % modulus for prime in moduli]
+    count = len(images[0])
+    flat = [images[k][i] for i in range(count) for k in range(len(moduli))]
+    joined = fmpz_mat(count, len(moduli), flat) * fmpz_mat(len(moduli), 1, weights)
+    return [int(value) % modulus for value in joined.entries()], modulus
+
+
+def _to_rationals(residues: list[int], modulus: int) -> list[fmpq] | None:
+    """Reconstruct every residue; a denominator found once is tried on the rest first."""
+    bound = math.isqrt((modulus - 1) // 2)
+    denominator = 1
+    found: list[fmpq] = []
+    for residue in residues:
+        scaled = residue * denominator % modulus
+        if scaled > modulus // 2:
+            scaled -= modulus
+        if abs(scaled) <= bound:
+            found.append(fmpq(scaled, denominator))
+            continue
+        pair = _reconstruct(residue, modulus, bound)
+        if pair is None:
+            return None
+        found.append(fmpq(*pair))
+        common = math.lcm(denominator, pair[1])
+        if common <= bound:
+            denominator = common
+    return found
+
+
+def lift(
+    compute: Callable[[int], tuple[tuple[Any, ...], list[int]]],
+    better: Callable[[tuple[Any, ...], tuple[Any, ...]], bool],
+    verify: Callable[[tuple[Any, ...], list[fmpq]], Any | None],
+    clock: Clock,
+) -> Any:
+    """Lift residues modulo primes to rationals and return what `verify` makes of them.
+
+    Parameters
+    ----------
+    compute : callable
+        prime -> (profile, residues). Residues of different primes belong together only when the
+        profiles are equal.
+    better : callable
+        Whether the first profile is nearer the truth than the second.
+    verify : callable
+        (profile, rationals) -> the answer when they hold over the rationals, else None.
+
+    Notes
+    -----
+    No height bound is needed. A random-looking combination of the residues is the probe: while it
+    cannot be reconstructed, or a fresh prime contradicts it, nothing else is tried. The proof is
+    the verification.
+    """
+    profile: tuple[Any, ...] | None = None
+    images: list[list[int]] = []
+    moduli: list[int] = []
+    probe: list[int] = []
+    expected: tuple[int, int] | None = None
+    for prime in primes():
+        clock.check("lifting a subspace to the rationals")
+        found, residues = compute(prime)
+        if profile is None or better(found, profile):
+            profile, images, moduli, probe, expected = found, [], [], [], None
+        elif found != profile:
+            continue
+        images.append(residues)
+        moduli.append(prime)
+        # Weights are small and irregular, so that no structure of the entries cancels in the sum.
+        mixed = sum((7919 * i % 1009 + 1) * r for i, r in enumerate(residues)) % prime
+        probe.append(mixed)
+        confirmed = expected is not None and (expected[0] - mixed * expected[1]) % prime == 0
+        first = len(moduli) == 1
+        joined, modulus = _combine([[value] for value in probe], moduli)
+        expected = _reconstruct(joined[0], modulus, math.isqrt((modulus - 1) // 2))
+        if not (confirmed or first):
+            continue
+        rationals = _to_rationals(*_combine(images, moduli))
+        if rationals is None:
+            continue
+        answer = verify(profile, rationals)
+        if answer is not None:
+            return answer
+    raise AssertionError("the primes never end")

@@ -1,0 +1,145 @@
+"""Rational matrices that read like arrays, on FLINT.
+
+The wrapper exists so that a form's text is the same on every path: it slices, transposes,
+multiplies and adds like an array. FLINT objects stay behind it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from fractions import Fraction
+from typing import Any
+
+import numpy as np
+from flint import fmpq, fmpq_mat, fmpz_mat
+
+from realize.entries import make_fraction
+from realize.polynomials import Polynomial, from_flint
+
+__all__ = ["RationalMatrix"]
+
+Array = np.ndarray[Any, Any]
+
+
+def _fraction(value: fmpq) -> Fraction:
+    return make_fraction(int(value.p), int(value.q))
+
+
+class RationalMatrix:
+    """A matrix over the rationals, (rows, columns), immutable."""
+
+    __slots__ = ("_integer", "matrix", "shape")
+
+    def __init__(self, matrix: fmpq_mat) -> None:
+        self.matrix = matrix
+        self.shape: tuple[int, int] = (matrix.nrows(), matrix.ncols())
+        self._integer: tuple[fmpz_mat, int] | None = None
+
+    @classmethod
+    def from_array(cls, values: Array) -> RationalMatrix:
+        """Take an object array of Fractions, (rows, columns)."""
+        rows, columns = values.shape
+        flat = values.ravel().tolist()
+        if all(q.denominator == 1 for q in flat):
+            integers = fmpz_mat(rows, columns, [q.numerator for q in flat])
+            result = cls(fmpq_mat(integers))
+            result._integer = (integers, 1)
+            return result
+        return cls(fmpq_mat(rows, columns, [fmpq(q.numerator, q.denominator) for q in flat]))
+
+    @classmethod
+    def from_ratios(
+        cls, shape: tuple[int, ...], ratios: Sequence[tuple[int, int]]
+    ) -> RationalMatrix:
+        """Take pairs (numerator, denominator), row by row."""
+        return cls(fmpq_mat(shape[0], shape[1], [fmpq(*pair) for pair in ratios]))
+
+    @classmethod
+    def from_entries(cls, rows: int, columns: int, entries: Sequence[Any]) -> RationalMatrix:
+        """Take FLINT rationals or integers, row by row."""
+        return cls(fmpq_mat(rows, columns, entries))
+
+    @classmethod
+    def identity(cls, size: int) -> RationalMatrix:
+        """Return the identity."""
+        entries = [0] * (size * size)
+        entries[:: size + 1] = [1] * size
+        return cls(fmpq_mat(fmpz_mat(size, size, entries)))
+
+    @classmethod
+    def zeros(cls, rows: int, columns: int) -> RationalMatrix:
+        """Return a matrix of zeros."""
+        return cls(fmpq_mat(rows, columns))
+
+    @classmethod
+    def block(cls, rows: Sequence[Sequence[RationalMatrix]]) -> RationalMatrix:
+        """Assemble a matrix from blocks."""
+        lines: list[list[Any]] = []
+        for row in rows:
+            tables = [item.matrix.tolist() for item in row]
+            for i in range(row[0].shape[0]):
+                lines.append([entry for table in tables for entry in table[i]])
+        height = sum(row[0].shape[0] for row in rows)
+        width = sum(item.shape[1] for item in rows[0]) if rows else 0
+        return cls(fmpq_mat(height, width, [entry for line in lines for entry in line]))
+
+    def to_array(self) -> Array:
+        """Return an object array of Fractions."""
+        result = np.empty(self.shape[0] * self.shape[1], dtype=object)
+        result[:] = [_fraction(value) for value in self.matrix.entries()]
+        return result.reshape(self.shape)
+
+    def integers(self) -> tuple[fmpz_mat, int]:
+        """Return an integer matrix and the common denominator to divide it by."""
+        if self._integer is None:
+            numerator, denominator = self.matrix.numer_denom()
+            self._integer = (numerator, int(denominator))
+        return self._integer
+
+    def take(self, rows: Iterable[int], columns: Iterable[int]) -> RationalMatrix:
+        """Return the submatrix of the rows and columns named, in that order."""
+        entries, width = self.matrix.entries(), self.shape[1]
+        chosen_rows, chosen = list(rows), list(columns)
+        picked = [entries[i * width + j] for i in chosen_rows for j in chosen]
+        return RationalMatrix(fmpq_mat(len(chosen_rows), len(chosen), picked))
+
+    def __getitem__(self, key: tuple[slice, slice]) -> RationalMatrix:
+        rows, columns = (
+            range(*part.indices(size)) for part, size in zip(key, self.shape, strict=True)
+        )
+        if len(rows) == self.shape[0] and len(columns) == self.shape[1]:
+            return self
+        return self.take(rows, columns)
+
+    @property
+    def T(self) -> RationalMatrix:
+        result = RationalMatrix(self.matrix.transpose())
+        if self._integer is not None:
+            result._integer = (self._integer[0].transpose(), self._integer[1])
+        return result
+
+    def __matmul__(self, other: RationalMatrix) -> RationalMatrix:
+        return RationalMatrix(self.matrix * other.matrix)
+
+    def __add__(self, other: RationalMatrix) -> RationalMatrix:
+        return RationalMatrix(self.matrix + other.matrix)
+
+    def __sub__(self, other: RationalMatrix) -> RationalMatrix:
+        return RationalMatrix(self.matrix - other.matrix)
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, RationalMatrix) and bool(self.matrix == other.matrix)
+
+    __hash__ = None  # type: ignore[assignment]  # compared by value, so not hashable by identity
+
+    def is_zero(self) -> bool:
+        """Whether every entry is zero."""
+        return not any(self.integers()[0].entries())
+
+    def rank(self) -> int:
+        """Return the rank."""
+        return int(self.matrix.rank())
+
+    def characteristic_polynomial(self) -> Polynomial:
+        """Return det(s - A), monic, descending powers."""
+        return from_flint(self.matrix.charpoly())

@@ -1,0 +1,198 @@
+"""The command line: `realize examine`, `realize minimal`, `realize demo`.
+
+Data go to stdout, messages to stderr. Exit statuses: 0 clean; 1 findings; 2 usage or input error;
+3 undecided; 4 something hidden is not known to be stable.
+"""
+
+from __future__ import annotations
+
+import json
+import sys
+from typing import Any, NoReturn
+
+import click
+from rich.console import Console
+from rich.text import Text
+
+import realize
+from realize.convert import as_realization
+from realize.demo import stories
+from realize.dispatch import path_for
+from realize.entries import Reading
+from realize.errors import RealizeError
+from realize.examination import Examination
+from realize.examination.examine import DEFAULT_BUDGET, examine
+from realize.examination.page import findings
+from realize.forms import reduce
+from realize.model.files import load, save, to_document
+from realize.model.realization import Realization
+from realize.model.transfer import TransferMatrix
+from realize.results import Mode, Reduction
+from realize.stability import Stability, hidden_cautions
+
+__all__ = ["main"]
+
+FINDINGS, INPUT_ERROR, NOT_STABLE = 1, 2, 4
+
+_EXIT_TEXT = (
+    "Exit status: 0 nothing hidden and nothing in doubt; 1 hidden modes, or paths or readings "
+    "that disagree; 2 usage or input error; 3 undecided; 4 something hidden is not known to be "
+    "stable (4 outranks the others)."
+)
+
+
+class _Commands(click.Group):
+    """Turns errors raised on purpose into one line and status 2."""
+
+    def invoke(self, ctx: click.Context) -> Any:
+        try:
+            return super().invoke(ctx)
+        except (RealizeError, OSError) as error:
+            _fail(str(error))
+
+
+def _fail(message: str) -> NoReturn:
+    click.echo(f"realize: {message}", err=True)
+    sys.exit(INPUT_ERROR)
+
+
+@click.group(cls=_Commands, epilog=_EXIT_TEXT, context_settings={"max_content_width": 80})
+@click.version_option(realize.__version__, prog_name="realize")
+def main() -> None:
+    """Decide which modes of a linear model are hidden, on exact and floating paths side by side.
+
+    FILE is a model file (JSON); "-" reads it from standard input.
+    """
+
+
+def _read(file: str) -> Realization | TransferMatrix:
+    return load(sys.stdin if file == "-" else file)
+
+
+def _print_page(text: str) -> None:
+    """Print a page; on a terminal the labels stand out and a danger is red."""
+    if not sys.stdout.isatty():
+        click.echo(text)
+        return
+    console = Console(highlight=False, soft_wrap=True)
+    for line in text.split("\n"):
+        styled = Text(line)
+        if line[:1].strip():
+            styled.stylize("bold", 0, 11)
+        if line.startswith("Danger") and "a hidden mode" in line:
+            styled.stylize("red")
+        console.print(styled)
+
+
+@main.command("examine", epilog=_EXIT_TEXT)
+@click.argument("file", metavar="FILE")
+@click.option(
+    "--reading",
+    "readings",
+    multiple=True,
+    type=click.Choice([str(word) for word in Reading]),
+    help="Which exact model the floats stand for; may be repeated. Default: all that fit.",
+)
+@click.option("--tolerance", type=float, help="For the floating path; default order * 2^-32.")
+@click.option(
+    "--budget",
+    type=click.FloatRange(min=0),
+    default=DEFAULT_BUDGET,
+    show_default=True,
+    help="Seconds that the exact path may take.",
+)
+@click.option("--json", "as_json", is_flag=True, help="Print the stable form.")
+def examine_command(
+    file: str, readings: tuple[str, ...], tolerance: float | None, budget: float, as_json: bool
+) -> None:
+    """Examine the model in FILE on both paths."""
+    model = as_realization(_read(file))
+    examination = examine(model, readings=readings or None, tolerance=tolerance, budget=budget)
+    if as_json:
+        click.echo(json.dumps(examination.to_dict(), indent=2))
+    else:
+        _print_page(str(examination))
+    sys.exit(examination.status)
+
+
+@main.command("minimal", epilog=_EXIT_TEXT)
+@click.argument("file", metavar="FILE")
+@click.option(
+    "-o",
+    "--output",
+    metavar="FILE",
+    default="-",
+    help='Where to write the reduced model; "-", the default, is standard output.',
+)
+@click.option(
+    "--reading",
+    type=click.Choice([str(word) for word in Reading]),
+    help="Reduce exactly, with floats read so. Default: the arithmetic follows the data.",
+)
+@click.option("--json", "as_json", is_flag=True, help="Print a report with the model in it.")
+def minimal_command(file: str, output: str, reading: str | None, as_json: bool) -> None:
+    """Write a minimal realization of the model in FILE."""
+    source = _read(file)
+    if reading is not None:
+        source = source.read(reading)
+    reduction = reduce(path_for(source), source)
+    modes = reduction.removed.modes
+    status = _status_of(reduction, modes)
+    if output != "-":
+        save(reduction.model, output)
+    elif not as_json:
+        save(reduction.model, sys.stdout)
+    if as_json:
+        click.echo(json.dumps(_report(reduction, modes), indent=2))
+    click.echo(
+        f"order {reduction.source_order} to {reduction.order}, {reduction.model.kind}", err=True
+    )
+    for caution in hidden_cautions(modes):
+        click.echo(f"caution: {caution}", err=True)
+    sys.exit(status)
+
+
+def _status_of(reduction: Reduction, modes: tuple[Mode, ...]) -> int:
+    if any(mode.stability is not Stability.STABLE for mode in modes):
+        return NOT_STABLE
+    return FINDINGS if reduction.order < reduction.source_order else 0
+
+
+def _report(reduction: Reduction, modes: tuple[Mode, ...]) -> dict[str, Any]:
+    removed = reduction.removed.polynomial
+    return {
+        "format": "realize-reduction",
+        "version": 1,
+        "source_order": reduction.source_order,
+        "order": reduction.order,
+        "removed": [mode.to_dict() for mode in modes],
+        "removed_polynomial": None if removed is None else [str(c) for c in removed],
+        "decisions": [decision.to_dict() for decision in reduction.decisions],
+        "model": to_document(reduction.model),
+    }
+
+
+@main.command("demo")
+@click.option("--json", "as_json", is_flag=True, help="Print the stable form.")
+def demo_command(as_json: bool) -> None:
+    """Examine four models that are shipped with the package."""
+    told = [(story, examine(story.model)) for story in stories()]
+    if as_json:
+        click.echo(
+            json.dumps({story.name: examination.to_dict() for story, examination in told}, indent=2)
+        )
+        return
+    for number, (story, examination) in enumerate(told, start=1):
+        _print_story(number, story.title, story.lines(), examination)
+
+
+def _print_story(number: int, title: str, lines: list[str], examination: Examination) -> None:
+    if number > 1:
+        click.echo()
+    heading = f"{number}. {title}"
+    click.echo(heading)
+    click.echo("=" * len(heading))
+    for line in lines:
+        click.echo(line)
+    click.echo()
+    _print_page(findings(examination))

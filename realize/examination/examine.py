@@ -1,0 +1,539 @@
+"""The paired examination of one model."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+import time
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from typing import Any, Final
+
+import numpy as np
+
+from realize.arithmetic.floating import FloatingPath, FloatingReach, OpenedFloating
+from realize.arithmetic.modular import Clock
+from realize.entries import Reading, is_simple, known_word
+from realize.errors import BudgetError, NotBuiltError, UnknownWordError, UnsupportedEntryError
+from realize.examination.nearest import Nearest, nearest_of
+from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
+from realize.forms.kalman import decompose
+from realize.forms.sources import accept
+from realize.model.realization import Kind, Realization
+from realize.polynomials import Polynomial
+from realize.results import Deferred, Mode, Part, RankDecision
+from realize.stability import Stability, hidden_cautions
+from realize.tolerance import check_tolerance, rounding_floor
+
+__all__ = ["DEFAULT_BUDGET", "Answer", "Examination", "Nearest", "examine"]
+
+DEFAULT_BUDGET: Final = 10.0
+"""Seconds that the exact path may take in one examination, unless another budget is given."""
+
+_READINGS: Final = (Reading.STORED, Reading.WRITTEN, Reading.INTENDED)
+_LEADING: Final = (Reading.STORED, Reading.WRITTEN)
+"""Readings that may lead an answer; `intended` is a hypothesis and never does."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Answer:
+    """The order that the examination stands by.
+
+    Attributes
+    ----------
+    order : int
+    basis : str
+        "given", "stored", "written": the reading it is proved for; "nearest": proved for an exact
+        model within the rounding floor of the one examined; "floating": the exact path did not
+        run, and nothing is proved.
+    """
+
+    order: int
+    basis: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Examination:
+    """What both paths say of one model.
+
+    Attributes
+    ----------
+    model : Realization
+    order : int
+        Number of states.
+    minimal_order : dict
+        Reading -> minimal order, proved.
+    floating_order, unscaled_order : int
+        What the floating path takes at the cutoff, on the scaled model and in the user's units.
+    paths_agree : bool
+        Whether for some reading the floating order is the exact one.
+    readings_agree : bool
+        Whether all readings examined have one minimal order.
+    answer : Answer
+    verdict : str
+        The answer in one sentence.
+    stabilizable, detectable : str
+        "yes", "no" or "cannot tell", about the answer.
+    nearest : Nearest or None
+        The nearest model of lower order that the floating reduction shows.
+    cutoff_ranges : dict
+        Reading -> (low, high): every cutoff from low up to high gives the floating path the exact
+        ranks at every stage; None when no single cutoff does. In the units of the decisions'
+        cutoffs; divide by their scale for a tolerance.
+    conflicts : dict
+        Reading -> the stages that leave no cutoff, in words; empty where there is a range.
+    routes : dict
+        Reading -> {"state": order, "polynomial": order, "hankel": order}.
+    within_uncertainty : None
+        Kept for data with an uncertainty, which are not built yet. So is `witness`.
+    not_done : tuple of str
+        What was skipped and why.
+    seconds : dict
+        Path -> wall-clock seconds.
+    """
+
+    model: Realization
+    order: int
+    minimal_order: dict[str, int]
+    floating_order: int
+    unscaled_order: int
+    paths_agree: bool
+    readings_agree: bool
+    answer: Answer
+    verdict: str
+    stabilizable: str
+    detectable: str
+    nearest: Nearest | None
+    cutoff_ranges: dict[str, tuple[float, float] | None]
+    conflicts: dict[str, tuple[str, ...]]
+    routes: dict[str, dict[str, int]]
+    not_done: tuple[str, ...]
+    seconds: dict[str, float]
+    within_uncertainty: str | None = None
+    witness: Realization | None = None
+    _decisions: Deferred[tuple[RankDecision, ...]]
+    _hidden: Deferred[tuple[Mode, ...]]
+    _visible: Deferred[tuple[Mode, ...]]
+    _parts: Deferred[dict[str, dict[str, Polynomial]]]
+    _unsimple: Deferred[int]
+
+    @property
+    def decisions(self) -> tuple[RankDecision, ...]:
+        """Every rank decision of the floating path, with the exact ranks beside it."""
+        return self._decisions.get()
+
+    @property
+    def hidden_modes(self) -> tuple[Mode, ...]:
+        """The modes of the answer that the transfer matrix does not show."""
+        return self._hidden.get()
+
+    @property
+    def modes(self) -> tuple[Mode, ...]:
+        """All modes of the answer, the hidden ones first.
+
+        The visible ones come from the exact path within its budget, and otherwise from the
+        floating path, with infinite radius.
+        """
+        return self._hidden.get() + self._visible.get()
+
+    @property
+    def parts(self) -> dict[str, dict[str, Polynomial]]:
+        """Reading -> part -> exact characteristic polynomial."""
+        return self._parts.get()
+
+    @property
+    def cautions(self) -> tuple[str, ...]:
+        """What must be said of the hidden modes of the answer."""
+        return hidden_cautions(self.hidden_modes)
+
+    @property
+    def entries_without_simple_fraction(self) -> int:
+        """How many floats have no simple fraction near; says how far to trust `intended`."""
+        return self._unsimple.get()
+
+    @property
+    def digest(self) -> str:
+        """SHA-256 of what the exact path says; the same on every machine."""
+        exact = {
+            "model": self.model.digest,
+            "minimal_order": self.minimal_order,
+            "routes": self.routes,
+            "parts": _plain_parts(self.parts),
+        }
+        text = json.dumps(exact, sort_keys=True, separators=(",", ":"), ensure_ascii=True)
+        return hashlib.sha256(text.encode("ascii")).hexdigest()
+
+    @property
+    def status(self) -> int:
+        """Exit status of the command line.
+
+        0: nothing hidden, and nothing in doubt. 1: hidden modes, or paths or readings that
+        disagree. 3: undecided, the exact path did not run. 4: a hidden mode is not known to be
+        stable.
+        """
+        if any(mode.stability is not Stability.STABLE for mode in self.hidden_modes):
+            return 4
+        if self.answer.basis == "floating":
+            return 3
+        clean = self.answer.order == self.order and self.paths_agree and self.readings_agree
+        return 0 if clean else 1
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the examination as plain JSON values."""
+        return {
+            "format": "realize-examination",
+            "version": 1,
+            "model": self.model.digest,
+            "order": self.order,
+            "inputs": self.model.input_count,
+            "outputs": self.model.output_count,
+            "minimal_order": dict(self.minimal_order),
+            "floating_order": self.floating_order,
+            "unscaled_order": self.unscaled_order,
+            "paths_agree": self.paths_agree,
+            "readings_agree": self.readings_agree,
+            "answer": {"order": self.answer.order, "basis": self.answer.basis},
+            "verdict": self.verdict,
+            "stabilizable": self.stabilizable,
+            "detectable": self.detectable,
+            "nearest": None if self.nearest is None else self.nearest.to_dict(),
+            "parts": _plain_parts(self.parts),
+            "modes": [mode.to_dict() for mode in self.modes],
+            "decisions": [decision.to_dict() for decision in self.decisions],
+            "cutoff_ranges": {
+                reading: None if span is None else [_finite(value) for value in span]
+                for reading, span in self.cutoff_ranges.items()
+            },
+            "conflicts": {reading: list(text) for reading, text in self.conflicts.items()},
+            "routes": {reading: dict(found) for reading, found in self.routes.items()},
+            "within_uncertainty": self.within_uncertainty,
+            "witness": None,
+            "cautions": list(self.cautions),
+            "not_done": list(self.not_done),
+            "seconds": dict(self.seconds),
+            "environment": environment(),
+            "digest": self.digest,
+        }
+
+    def __str__(self) -> str:
+        from realize.examination.page import page
+
+        return page(self)
+
+    def __repr__(self) -> str:
+        return f"<Examination: {self.verdict}>"
+
+
+def _finite(value: float) -> float | None:
+    """Return None for infinity, which JSON cannot hold."""
+    return None if value == float("inf") else value
+
+
+def _plain_parts(parts: dict[str, dict[str, Polynomial]]) -> dict[str, dict[str, list[str]]]:
+    return {
+        reading: {part: [str(c) for c in polynomial] for part, polynomial in found.items()}
+        for reading, found in parts.items()
+    }
+
+
+def environment() -> dict[str, str]:
+    """Return what the floating path ran on: one numpy on one machine can round in several ways."""
+    import scipy
+
+    config: dict[str, Any] = np.show_config(mode="dicts")  # type: ignore[assignment,unused-ignore]
+    blas = config.get("Build Dependencies", {}).get("blas", {})
+    return {
+        "numpy": np.__version__,
+        "scipy": scipy.__version__,
+        "blas": f"{blas.get('name', 'unknown')} {blas.get('version', '')}".strip(),
+        "blas_kernel": str(blas.get("openblas configuration", "unknown")),
+        "threads": os.environ.get("OPENBLAS_NUM_THREADS", "not set"),
+    }
+
+
+def examine(
+    model: Realization,
+    *,
+    readings: Iterable[str] | None = None,
+    tolerance: float | None = None,
+    uncertainty: None = None,
+    budget: float | None = DEFAULT_BUDGET,
+) -> Examination:
+    """Examine a model on both paths: which modes are hidden, and how much is the tolerance's doing.
+
+    Parameters
+    ----------
+    model : Realization, A (n, n), B (n, m), C (p, n), D (p, m).
+    readings : iterable of str, keyword-only
+        Which exact models the floats stand for. None: "stored", "written" and "intended"; a
+        rational model has one reading, "given".
+    tolerance : float, keyword-only
+        For the floating path: the cutoff is this times the Frobenius norm of the scaled model.
+        None for the default, order * 2**-32.
+    uncertainty : None, keyword-only
+        Kept for data with an uncertainty, which are not built yet.
+    budget : float or None, keyword-only
+        Seconds that the exact path may take; None for no limit. When they do not suffice, the
+        answer is the floating one, and says so.
+
+    Returns
+    -------
+    Examination
+        Costly fields are computed at first access.
+
+    Raises
+    ------
+    DisagreementError
+        When the three routes to the minimal order differ, which would be a bug.
+    NotBuiltError
+        For any uncertainty but None.
+    UnknownWordError
+        For an unknown reading, or one that does not fit the model.
+
+    References
+    ----------
+    Kalman (1963), Mathematical description of linear dynamical systems, SIAM J. Control 1. The
+    replay rests on the stairs being invariants: Brunovsky (1970), Kybernetika 6.
+
+    Examples
+    --------
+    >>> import realize
+    >>> model = realize.Realization([[-1, 0], [0, -2]], [1, 0], [1, 1])
+    >>> examination = realize.examine(model)
+    >>> examination.minimal_order
+    {'given': 1}
+    >>> [(mode.value, str(mode.part)) for mode in examination.hidden_modes]
+    [((-2+0j), 'uncontrollable, observable')]
+    """
+    accept(model, Realization)
+    if uncertainty is not None:
+        raise NotBuiltError(
+            "examine takes no uncertainty yet; leave it at None", feature="uncertainty"
+        )
+    words = _readings_of(model, readings)
+    tolerance = check_tolerance(tolerance)
+    _check_budget(budget)
+    floating = _Floating(model, tolerance)
+    exact, not_done, exact_seconds = _exact_answers(model, words, budget)
+    orders = {word: found.order for word, found in exact.items()}
+    replays = {
+        word: Replay.of(floating.opened, found.stairs, floating.run)
+        for word, found in exact.items()
+    }
+    answer, about, nearest = _answer(model, exact, orders, floating, budget)
+    stabilizable, detectable = _stabilities(about, floating)
+    stairs = {word: found.stairs for word, found in exact.items()}
+    return Examination(
+        model=model,
+        order=model.order,
+        minimal_order=orders,
+        floating_order=floating.order,
+        unscaled_order=floating.unscaled_order,
+        paths_agree=floating.order in orders.values(),
+        readings_agree=len(set(orders.values())) == 1,
+        answer=answer,
+        verdict=_verdict(model.order, answer, orders, floating.order),
+        stabilizable=stabilizable,
+        detectable=detectable,
+        nearest=nearest,
+        cutoff_ranges={word: replay.interval for word, replay in replays.items()},
+        conflicts={word: replay.conflicts for word, replay in replays.items()},
+        routes={word: found.routes for word, found in exact.items()},
+        not_done=not_done,
+        seconds={"floating": floating.seconds, "exact": exact_seconds},
+        _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
+        _hidden=Deferred(
+            lambda: floating.hidden_modes() if about is None else about.hidden_modes()
+        ),
+        _visible=Deferred(lambda: _visible_modes(about, floating, budget)),
+        _parts=Deferred(lambda: {word: found.parts for word, found in exact.items()}),
+        _unsimple=Deferred(lambda: _count_unsimple(model)),
+    )
+
+
+class _Floating:
+    """What the floating path says of the model."""
+
+    def __init__(self, model: Realization, tolerance: float | None) -> None:
+        began = time.perf_counter()
+        self.path = FloatingPath(tolerance)
+        self.opened: OpenedFloating = self.path.open(model)
+        self.run = _reach_and_see(self.opened)
+        self.order = self.run[1].dimension
+        unscaled = FloatingPath(tolerance, scaled=False).open(model)
+        self.unscaled_order = _reach_and_see(unscaled)[1].dimension
+        self.seconds = time.perf_counter() - began
+
+    def decisions(self) -> tuple[RankDecision, ...]:
+        return self.run[0].decisions() + self.run[1].decisions()
+
+    def hidden_modes(self) -> tuple[Mode, ...]:
+        parts = decompose(self.opened, *self.run)
+        return self.opened.modes(parts.hidden_blocks())
+
+    def visible_modes(self) -> tuple[Mode, ...]:
+        return self.opened.modes([(Part.CONTROLLABLE_OBSERVABLE, self.run[1].A.T)])
+
+
+def _reach_and_see(opened: OpenedFloating) -> tuple[FloatingReach, FloatingReach]:
+    reach = opened.reached(opened.A, opened.B, opened.C, "reached")
+    return reach, opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen")
+
+
+def _readings_of(model: Realization, readings: Iterable[str] | None) -> tuple[Reading, ...]:
+    if isinstance(readings, str):
+        raise UnknownWordError(
+            f"readings is the text {readings!r}; wanted a list of words, such as ({readings!r},)",
+            argument="readings",
+            found=readings,
+        )
+    if model.kind == Kind.RATIONAL:
+        for word in readings or ():
+            known_word(Reading, word, "readings")
+        return (Reading.GIVEN,)
+    if readings is None:
+        return _READINGS
+    words = tuple(dict.fromkeys(known_word(Reading, word, "readings") for word in readings))
+    for word in words:
+        if word is Reading.GIVEN:
+            raise UnknownWordError(
+                'readings holds "given", but the model has floats; wanted some of "stored", '
+                '"written", "intended"',
+                argument="readings",
+                found="given",
+                allowed=tuple(str(known) for known in _READINGS),
+            )
+    if not words:
+        raise UnknownWordError(
+            'readings is empty; wanted some of "stored", "written", "intended", or None for all',
+            argument="readings",
+            found="",
+            allowed=tuple(str(known) for known in _READINGS),
+        )
+    return words
+
+
+def _check_budget(budget: float | None) -> None:
+    if budget is None:
+        return
+    if isinstance(budget, bool) or not isinstance(budget, (int, float)) or not budget >= 0:
+        raise UnsupportedEntryError(
+            f"budget is {budget!r}; wanted seconds, not negative, or None for no limit"
+        )
+
+
+def _exact_answers(
+    model: Realization, words: Sequence[Reading], budget: float | None
+) -> tuple[dict[str, ExactAnswer], tuple[str, ...], float]:
+    """Return reading -> exact answer; readings that give one model share one answer."""
+    began = time.perf_counter()
+    clock = Clock(budget)
+    found: dict[str, ExactAnswer] = {}
+    not_done: list[str] = []
+    for word in words:
+        try:
+            rational = model.read(word)
+            for other in found.values():
+                if other.model == rational:
+                    found[str(word)] = other
+                    break
+            else:
+                found[str(word)] = ExactAnswer(rational, clock)
+        except BudgetError as error:
+            not_done.append(f"the exact path did not run on the reading {word}: {error}")
+    return found, tuple(not_done), time.perf_counter() - began
+
+
+def _answer(
+    model: Realization,
+    exact: dict[str, ExactAnswer],
+    orders: dict[str, int],
+    floating: _Floating,
+    budget: float | None,
+) -> tuple[Answer, ExactAnswer | None, Nearest | None]:
+    """Return the answer, the exact answer it rests on, and the nearest model of lower order."""
+    if not exact:
+        return Answer(order=floating.order, basis="floating"), None, None
+    if Reading.GIVEN in exact:
+        leading = [str(Reading.GIVEN)]
+    else:
+        leading = [str(word) for word in _LEADING if word in exact] or list(exact)
+    best = min(leading, key=lambda word: orders[word])
+    answer, about = Answer(order=orders[best], basis=best), exact[best]
+    if floating.order >= answer.order:
+        return answer, about, None
+    nearest, near = nearest_of(floating.opened, floating.run, Clock(budget))
+    if nearest is None or near is None:
+        return answer, about, None
+    floor = rounding_floor(model.order, 1.0)
+    if model.kind == Kind.FLOATING and nearest.relative_distance <= floor:
+        return Answer(order=near.order, basis="nearest"), near, nearest
+    return answer, about, nearest
+
+
+def _stabilities(about: ExactAnswer | None, floating: _Floating) -> tuple[str, str]:
+    """Return whether the answer is stabilizable, and detectable."""
+    unreached = (Part.UNCONTROLLABLE_OBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
+    unseen = (Part.CONTROLLABLE_UNOBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
+    if about is not None:
+        return (
+            "yes" if about.is_stable_outside(*unreached) else "no",
+            "yes" if about.is_stable_outside(*unseen) else "no",
+        )
+    modes = floating.hidden_modes()
+
+    def summary(parts: tuple[Part, ...]) -> str:
+        found = {mode.stability for mode in modes if mode.part in parts}
+        if Stability.UNSTABLE in found:
+            return "no"
+        return "cannot tell" if Stability.CANNOT_TELL in found else "yes"
+
+    return summary(unreached), summary(unseen)
+
+
+def _visible_modes(
+    about: ExactAnswer | None, floating: _Floating, budget: float | None
+) -> tuple[Mode, ...]:
+    if about is None:
+        return floating.visible_modes()
+    about.opened.clock = Clock(budget)
+    try:
+        return about.visible_modes()
+    except BudgetError:
+        return floating.visible_modes()
+
+
+def _count_unsimple(model: Realization) -> int:
+    if model.kind == Kind.RATIONAL:
+        return 0
+    read = model.read(Reading.INTENDED)
+    return sum(
+        not is_simple(value)
+        for matrix, exact in zip(model.matrices(), read.matrices(), strict=True)
+        for value in exact.ravel().tolist()
+    )
+
+
+def _verdict(order: int, answer: Answer, orders: dict[str, int], floating_order: int) -> str:
+    """Return the answer in one sentence."""
+    grounds = {
+        "given": "proved for the model as given",
+        "stored": "proved for the doubles as stored",
+        "written": "proved for the decimals as written",
+        "intended": "proved for the fractions as intended, which is a hypothesis",
+        "nearest": "proved for a model within rounding of this one",
+        "floating": "by the floating path alone, nothing is proved",
+    }[answer.basis]
+    if answer.order == order:
+        text = f"minimal: all {order} states show" if order else "minimal: it has no states"
+    else:
+        hidden = order - answer.order
+        text = (
+            f"not minimal: {hidden} of {order} states {'is' if hidden == 1 else 'are'} hidden, "
+            f"order {answer.order} remains"
+        )
+    others = [f"{word} gives {value}" for word, value in orders.items() if value != answer.order]
+    if floating_order != answer.order and answer.basis != "floating":
+        others.append(f"the floating path gives {floating_order}")
+    return f"{text}; {grounds}" + (f" ({', '.join(others)})" if others else "")

@@ -1,0 +1,257 @@
+"""The page that a person reads: the answer first, the explanation after."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterable
+from typing import TYPE_CHECKING
+
+from realize.polynomials import text as polynomial_text
+from realize.results import Mode
+from realize.stability import Stability
+from realize.tolerance import default_tolerance
+
+if TYPE_CHECKING:
+    from realize.examination.examine import Examination
+
+__all__ = ["findings", "page"]
+
+WIDTH = 80
+_MARGIN = 11
+
+
+def page(examination: Examination) -> str:
+    """Return the examination as lines of at most 80 columns."""
+    lines = [findings(examination), "", *_tables(examination)]
+    if examination.cautions:
+        lines.append("")
+        for caution in examination.cautions:
+            lines.extend(_field("Caution", caution))
+    return "\n".join(lines)
+
+
+def findings(examination: Examination) -> str:
+    """Return what the page begins with: the answer, and what follows from it."""
+    lines: list[str] = []
+    for label, text in (
+        ("Model", _model(examination)),
+        ("Answer", examination.verdict[0].upper() + examination.verdict[1:] + "."),
+        ("Danger", _danger(examination)),
+        ("Hidden", _hidden(examination)),
+        ("Basis", _basis(examination)),
+        ("Cutoffs", _cutoffs(examination)),
+        ("Removal", _removal(examination)),
+        ("Next", _next(examination)),
+        ("Not done", _not_done(examination)),
+    ):
+        lines.extend(_field(label, text))
+    return "\n".join(lines)
+
+
+def _field(label: str, text: str) -> list[str]:
+    return textwrap.wrap(
+        text,
+        WIDTH,
+        initial_indent=f"{label:<{_MARGIN}}",
+        subsequent_indent=" " * _MARGIN,
+        break_long_words=False,
+        break_on_hyphens=False,
+    )
+
+
+def _count(number: int, thing: str) -> str:
+    return f"{number} {thing}{'' if number == 1 else 's'}"
+
+
+def number_text(value: float) -> str:
+    """Return a number short enough to read."""
+    return f"{value:.6g}"
+
+
+def mode_text(value: complex) -> str:
+    """Return a mode's value short enough to read; a pair is named by its upper member."""
+    if value.imag == 0.0:
+        return number_text(value.real)
+    sign = "+-" if value.imag > 0 else "-+"
+    return f"{number_text(value.real)} {sign} {number_text(abs(value.imag))}j"
+
+
+def _model(examination: Examination) -> str:
+    model = examination.model
+    period = model.sampling_period
+    domain = "continuous time" if period is None else f"discrete time, period {float(period):g}"
+    return (
+        f"{_count(examination.order, 'state')}, {_names(model.input_names)} to "
+        f"{_names(model.output_names)}, {domain}, {model.kind}, "
+        f"digest {model.digest[:12]}"
+    )
+
+
+def _names(names: tuple[str, ...]) -> str:
+    if not names:
+        return "nothing"
+    shown = ", ".join(names[:4])
+    return shown if len(names) <= 4 else f"{shown} and {len(names) - 4} more"
+
+
+def _upper(modes: Iterable[Mode]) -> list[Mode]:
+    """Return modes with each complex pair named once."""
+    return [mode for mode in modes if mode.value.imag >= 0.0]
+
+
+def _danger(examination: Examination) -> str:
+    hidden = examination.hidden_modes
+    for stability, text in (
+        (Stability.UNSTABLE, "a hidden mode is unstable"),
+        (Stability.MARGINAL, "a hidden mode does not decay"),
+        (Stability.CANNOT_TELL, "it cannot be told whether a hidden mode decays"),
+    ):
+        found = [mode for mode in _upper(hidden) if mode.stability is stability]
+        if found:
+            named = ", ".join(f"{mode_text(mode.value)} ({mode.part})" for mode in found[:4])
+            return (
+                f"{text}: {named}. The transfer function does not show it, the plant has it. "
+                f"Stabilizable: {examination.stabilizable}. Detectable: {examination.detectable}."
+            )
+    if not hidden:
+        return "no mode is hidden, so none can be unstable unseen."
+    slowest = max((mode.time_constant or 0.0 for mode in hidden), default=0.0)
+    return (
+        "every hidden mode is stable; the slowest has a time constant of "
+        f"{number_text(slowest)}. Stabilizable: {examination.stabilizable}. Detectable: "
+        f"{examination.detectable}."
+    )
+
+
+def _hidden(examination: Examination) -> str:
+    modes = _upper(examination.hidden_modes)
+    if not modes:
+        return "nothing."
+    shown = "; ".join(
+        f"{mode_text(mode.value)}{f' (x{mode.multiplicity})' if mode.multiplicity > 1 else ''}, "
+        f"{mode.part}"
+        for mode in modes[:6]
+    )
+    return shown + (f"; and {len(modes) - 6} more." if len(modes) > 6 else ".")
+
+
+def _basis(examination: Examination) -> str:
+    if not examination.minimal_order:
+        return "the exact path did not run; nothing here is proved."
+    orders = ", ".join(f"{word} {value}" for word, value in examination.minimal_order.items())
+    text = f"exact minimal order: {orders}; floating path: {examination.floating_order}"
+    if examination.unscaled_order != examination.floating_order:
+        text += f" ({examination.unscaled_order} without scaling)"
+    if examination.nearest is not None:
+        nearest = examination.nearest
+        text += (
+            f". An exact model of order {nearest.order} lies at relative distance "
+            f"{nearest.relative_distance:.2g}"
+        )
+    if examination.model.kind == "floating" and "intended" in examination.minimal_order:
+        count = examination.entries_without_simple_fraction
+        if count:
+            text += (
+                f". {_count(count, 'entry' if count == 1 else 'entrie')} with no simple fraction"
+            )
+    return text + "."
+
+
+def _cutoffs(examination: Examination) -> str:
+    if not examination.cutoff_ranges:
+        return "no exact ranks to compare with."
+    scale = next((d.scale for d in examination.decisions), 0.0)
+    cutoff = next((d.cutoff for d in examination.decisions), 0.0)
+    texts: list[str] = []
+    for reading, span in examination.cutoff_ranges.items():
+        if span is None:
+            conflict = "; ".join(examination.conflicts[reading])
+            texts.append(f"{reading}: no single cutoff gives the exact ranks ({conflict})")
+        else:
+            inside = "inside" if span[0] <= cutoff < span[1] else "OUTSIDE"
+            texts.append(f"{reading}: {span[0]:.2g} to {span[1]:.2g}, the one used is {inside}")
+    used = f"used {cutoff:.2g} (scale {scale:.3g}"
+    used += f", default tolerance {default_tolerance(examination.order):.2g})"
+    return "; ".join(texts) + f"; {used}."
+
+
+def _removal(examination: Examination) -> str:
+    if not examination.hidden_modes:
+        return "nothing to remove."
+    removed = examination.order - examination.answer.order
+    return (
+        f"the minimal realization has {_count(examination.answer.order, 'state')}, "
+        f"{removed} fewer; its transfer matrix is that of the model the answer rests on. What is "
+        "removed stays in the plant."
+    )
+
+
+def _next(examination: Examination) -> str:
+    status = examination.status
+    if status == 4:
+        return (
+            "do not ship the reduced model as a model of the plant. Move a sensor or an actuator, "
+            "or stop cancelling that pole; then examine again."
+        )
+    if status == 3:
+        return "give the exact path a larger budget, or treat the order as a guess."
+    if examination.answer.order < examination.order:
+        return "reduce with `realize minimal`, and keep the list of what was removed."
+    if not examination.paths_agree or not examination.readings_agree:
+        return "say which reading is meant before a routine with a tolerance decides for you."
+    return "use the model as it is."
+
+
+def _not_done(examination: Examination) -> str:
+    undone = list(examination.not_done)
+    undone.append("no uncertainty was given, so none was weighed")
+    return "; ".join(undone) + "."
+
+
+def _tables(examination: Examination) -> list[str]:
+    lines: list[str] = []
+    if examination.minimal_order:
+        lines.append("Parts (exact characteristic polynomials)")
+        variable = "s" if examination.model.sampling_period is None else "z"
+        shown: dict[str, list[str]] = {}
+        for reading, parts in examination.parts.items():
+            block = []
+            for part, polynomial in parts.items():
+                text = polynomial_text(polynomial, variable)
+                if len(text) > 44:
+                    text = f"degree {len(polynomial) - 1}"
+                block.append(f"  {part:<32}{text}")
+            shown.setdefault("\n".join(block), []).append(reading)
+        for block_text, words in shown.items():
+            lines.append(f" as {', '.join(words)}")
+            lines.extend(block_text.split("\n"))
+        lines.append("")
+    modes = examination.modes
+    lines.append("Modes of the answer")
+    lines.append(f"  {'value':<26}{'times':<7}{'stability':<13}part")
+    for mode in _upper(modes)[:40]:
+        lines.append(
+            f"  {mode_text(mode.value):<26}{mode.multiplicity:<7}{mode.stability:<13}{mode.part}"
+        )
+    if len(_upper(modes)) > 40:
+        lines.append(f"  and {len(_upper(modes)) - 40} more")
+    lines.append("")
+    lines.append("Rank decisions of the floating path")
+    readings = list(examination.minimal_order)
+    head = "".join(f"{word:>10}" for word in readings)
+    lines.append(f"  {'stage':<20}{'rank':>5}{'kept':>10}{'dropped':>10}{head}")
+    for decision in examination.decisions[:60]:
+        kept, dropped = (
+            "-" if value is None else f"{value:.2g}"
+            for value in (decision.smallest_kept, decision.largest_dropped)
+        )
+        exact = "".join(f"{decision.exact_rank[word]:>10}" for word in readings)
+        lines.append(f"  {decision.where:<20}{decision.rank:>5}{kept:>10}{dropped:>10}{exact}")
+    if len(examination.decisions) > 60:
+        lines.append(f"  and {len(examination.decisions) - 60} more")
+    if examination.routes:
+        lines.append("")
+        lines.append("Three routes to the minimal order")
+        for reading, found in examination.routes.items():
+            lines.append(f"  {reading:<12}" + ", ".join(f"{k} {v}" for k, v in found.items()))
+    return lines

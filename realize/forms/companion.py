@@ -1,0 +1,120 @@
+"""Companion forms, and realizing a transfer matrix as it is given."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from itertools import accumulate
+from typing import Any
+
+import numpy as np
+
+from realize.arithmetic.path import Path
+from realize.entries import known_word
+from realize.errors import ImproperError, NotBuiltError
+from realize.forms.transfer import transfer_matrix
+from realize.forms.sources import accept
+from realize.model.realization import Kind, Realization
+from realize.model.transfer import TransferMatrix
+from realize.results import Side
+
+__all__ = ["companion", "realize_transfer"]
+
+Array = np.ndarray[Any, Any]
+
+
+def companion(path: Path, source: Realization | TransferMatrix, side: str) -> Realization:
+    """Return the controllable ("input") or observable ("output") companion form."""
+    accept(source, Realization, TransferMatrix)
+    word = known_word(Side, side, "side")
+    source = path.admit(source)
+    if source.input_count > 1 and source.output_count > 1:
+        raise NotBuiltError(
+            f"companion of a source with {source.input_count} inputs and {source.output_count} "
+            "outputs is not built. Take one row or one column of it, or use staircase, which "
+            "takes any number of inputs and outputs"
+        )
+    transfer = source if isinstance(source, TransferMatrix) else transfer_matrix(path, source)
+    if word is Side.OUTPUT:
+        return _by_columns(path, transfer.dual()).dual()
+    return _by_columns(path, transfer)
+
+
+def realize_transfer(path: Path, transfer: TransferMatrix) -> Realization:
+    """Return a realization of a transfer matrix as given, by rows or columns, the smaller one.
+
+    Each column (or row) is brought over one denominator and realized in companion form, one
+    below the other, so that one side is controllable (or observable) from the start (Gilbert
+    1963; Kailath, Linear Systems, section 6.1).
+    """
+    transfer = path.admit(transfer)
+    turned = transfer.dual()
+    columns = sum(len(d) - 1 for d in _column_denominators(path, transfer))
+    rows = sum(len(d) - 1 for d in _column_denominators(path, turned))
+    if rows < columns:
+        return _by_columns(path, turned).dual()
+    return _by_columns(path, transfer)
+
+
+def _column_denominators(path: Path, transfer: TransferMatrix) -> list[tuple[Any, ...]]:
+    return [
+        path.common_denominator([transfer.denominators[i][j] for i in range(transfer.output_count)])
+        for j in range(transfer.input_count)
+    ]
+
+
+def _by_columns(path: Path, transfer: TransferMatrix) -> Realization:
+    """Realize every column in controllable companion form over its common denominator."""
+    inputs, outputs = transfer.input_count, transfer.output_count
+    denominators = _column_denominators(path, transfer)
+    sizes = [len(d) - 1 for d in denominators]
+    order = sum(sizes)
+    starts = [0, *accumulate(sizes)]
+    A: list[list[Any]] = [[0] * order for _ in range(order)]
+    B: list[list[Any]] = [[0] * inputs for _ in range(order)]
+    C: list[list[Any]] = [[0] * order for _ in range(outputs)]
+    D: list[list[Any]] = [[0] * inputs for _ in range(outputs)]
+    for j, below in enumerate(denominators):
+        size, start = sizes[j], starts[j]
+        for k in range(size - 1):
+            A[start + k][start + k + 1] = 1
+        for k in range(size):
+            A[start + size - 1][start + k] = -below[size - k]
+        if size:
+            B[start + size - 1][j] = 1
+        for i in range(outputs):
+            above = _over(path, transfer, i, j, below)
+            D[i][j] = above[0]
+            for k in range(size):
+                # The feedthrough times the denominator leaves the strictly proper part.
+                C[i][start + k] = above[size - k] - above[0] * below[size - k]
+    return Realization._trusted(
+        path.array(A, (order, order)),
+        path.array(B, (order, inputs)),
+        path.array(C, (outputs, order)),
+        path.array(D, (outputs, inputs)),
+        kind=Kind.RATIONAL if path.is_exact else Kind.FLOATING,
+        sampling_period=transfer.sampling_period,
+        input_names=transfer.input_names,
+        output_names=transfer.output_names,
+    )
+
+
+def _over(
+    path: Path, transfer: TransferMatrix, i: int, j: int, below: tuple[Any, ...]
+) -> Sequence[Any]:
+    """Return an entry's numerator over the common denominator, padded to its length."""
+    own = transfer.denominators[i][j]
+    above = transfer.numerators[i][j]
+    if len(above) > len(own):
+        raise ImproperError(
+            f"entry (output {i + 1}, input {j + 1}) is improper: numerator of degree "
+            f"{len(above) - 1} over a denominator of degree {len(own) - 1}. A realization has no "
+            "such transfer function; divide out the polynomial part first"
+        )
+    lead = own[0]
+    if len(own) == len(below):
+        widened = tuple(value / lead for value in above)
+    else:
+        monic = tuple(value / lead for value in own)
+        widened = path.multiply(tuple(value / lead for value in above), path.cofactor(below, monic))
+    return [0] * (len(below) - len(widened)) + list(widened)

@@ -1,0 +1,149 @@
+"""The Kalman decomposition."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from itertools import pairwise
+from typing import Any
+
+from realize.arithmetic.path import Opened, Path, Reach
+from realize.errors import PrecisionError
+from realize.forms.sources import accept
+from realize.model.realization import Realization
+from realize.results import Deferred, KalmanParts, Part
+
+__all__ = ["Decomposition", "decompose", "kalman_parts"]
+
+# A maps each part into itself, into what is both reached and unseen, and, from the part that is
+# neither, anywhere (Kailath, Linear Systems, section 2.4).
+_MAY_BE_NON_ZERO = (
+    (True, True, True, True),
+    (False, True, False, True),
+    (False, False, True, True),
+    (False, False, False, True),
+)
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Decomposition:
+    """The four parts in the coordinates of a path."""
+
+    T: Any
+    A: Any
+    B: Any
+    C: Any
+    spans: tuple[slice, ...]
+    outside: Reach
+
+    def block(self, part: Part) -> Any:
+        """Return the diagonal block of A that belongs to a part."""
+        span = self.spans[list(Part).index(part)]
+        return self.A[span, span]
+
+    def hidden_blocks(self) -> list[tuple[Part, Any]]:
+        """Return the blocks that the transfer matrix does not show."""
+        return [(part, self.block(part)) for part in Part if part.hidden]
+
+
+def kalman_parts(path: Path, model: Realization) -> KalmanParts:
+    """Return the four parts: controllable or not, observable or not."""
+    accept(model, Realization)
+    opened = path.open(model)
+    reach = opened.reached(opened.A, opened.B, opened.C, "reached")
+    sight = opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen")
+    parts = decompose(opened, reach, sight)
+    return KalmanParts(
+        model=opened.close(parts.A, parts.B, parts.C),
+        transformation=opened.transformation(parts.T),
+        dimensions={
+            str(part): span.stop - span.start for part, span in zip(Part, parts.spans, strict=True)
+        },
+        _polynomials=Deferred(
+            lambda: {
+                str(part): opened.characteristic_polynomial(parts.block(part)) for part in Part
+            }
+        ),
+        _decisions=Deferred(
+            lambda: reach.decisions() + sight.decisions() + parts.outside.decisions()
+        ),
+    )
+
+
+def decompose(opened: Opened, reach: Reach, sight: Reach) -> Decomposition:
+    """Return the four parts, from what is reached and what of that is seen.
+
+    One more subspace is asked for: modulo the reachable and unseen part R n N, the rest of the
+    unobservable subspace N. It meets the reachable subspace R only in zero, so its vectors,
+    corrected by vectors of R, complete R n N to N without touching R (Kailath, Linear Systems,
+    section 2.4).
+    """
+    order = opened.A.shape[0]
+    outer = reach.frame()
+    inner = sight.frame()
+    r, visible = reach.dimension, sight.dimension
+    hidden = r - visible
+    # The dual frame has the seen part first; the unobservable part of R goes in front of it.
+    basis, inverse = inner.inverse.T, inner.basis.T
+    basis = opened.block([[basis[:, visible:], basis[:, :visible]]])
+    inverse = opened.block([[inverse[visible:, :]], [inverse[:visible, :]]])
+    T = outer.basis @ _beside(opened, basis, order - r)
+    T_inverse = _beside(opened, inverse, order - r) @ outer.inverse
+    A = T_inverse @ opened.A @ T
+    C = opened.C @ T
+    rest = order - hidden
+    # Modulo R n N, what else do the outputs not see?
+    outside = opened.reached(
+        A[hidden:, hidden:].T, C[:, hidden:].T, opened.zeros(0, rest), "seen beyond"
+    )
+    unseen = rest - outside.dimension
+    if unseen > order - r:
+        raise PrecisionError(
+            f"the rank decisions of the floating path contradict each other: {unseen} unseen "
+            f"states outside a reachable part that leaves room for {order - r}. Give another "
+            "tolerance, or use the exact path"
+        )
+    beyond = outside.frame().inverse.T[:, outside.dimension :]
+    completion = opened.complete(beyond[visible:, :])
+    lean = opened.block(
+        [
+            [
+                beyond[:visible, :] @ completion.factor_inverse,
+                opened.zeros(visible, order - r - unseen),
+            ]
+        ]
+    )
+    inside, above = opened.identity(r), opened.zeros(hidden, order - r)
+    below = opened.zeros(order - r, r)
+    T = T @ opened.block([[inside, opened.block([[above], [lean]])], [below, completion.basis]])
+    shear = opened.zeros(visible, order - r) - lean @ completion.inverse
+    T_inverse = (
+        opened.block([[inside, opened.block([[above], [shear]])], [below, completion.inverse]])
+        @ T_inverse
+    )
+    A, B, C = T_inverse @ opened.A @ T, T_inverse @ opened.B, opened.C @ T
+    edges = (0, hidden, r, r + unseen, order)
+    spans = [slice(low, high) for low, high in pairwise(edges)]
+
+    def kept(matrix: Any, rows: slice, columns: slice, keep: bool) -> Any:
+        part = matrix[rows, columns]
+        return part if keep else opened.zeros(*part.shape)
+
+    # What the four subspaces make zero is zero, whatever rounding left there.
+    A = opened.block(
+        [[kept(A, spans[i], spans[j], _MAY_BE_NON_ZERO[i][j]) for j in range(4)] for i in range(4)]
+    )
+    inputs, outputs = slice(0, B.shape[1]), slice(0, C.shape[0])
+    B = opened.block([[kept(B, span, inputs, k < 2)] for k, span in enumerate(spans)])
+    C = opened.block([[kept(C, outputs, span, k % 2 == 1) for k, span in enumerate(spans)]])
+    return Decomposition(T=T, A=A, B=B, C=C, spans=tuple(spans), outside=outside)
+
+
+def _beside(opened: Opened, first: Any, size: int) -> Any:
+    """Return diag(first, identity)."""
+    rows = first.shape[0]
+    return opened.block(
+        [
+            [first, opened.zeros(rows, size)],
+            [opened.zeros(size, rows), opened.identity(size)],
+        ]
+    )

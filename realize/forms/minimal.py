@@ -1,0 +1,87 @@
+"""The minimal realization: what is reached, and of that what is seen."""
+
+from __future__ import annotations
+
+import warnings
+from collections.abc import Callable
+from typing import Any
+
+from realize.arithmetic.path import Opened, Path, Reach
+from realize.errors import HiddenInstabilityWarning
+from realize.forms.companion import realize_transfer
+from realize.forms.kalman import decompose
+from realize.forms.sources import accept
+from realize.model.realization import Realization
+from realize.model.transfer import TransferMatrix
+from realize.results import Deferred, Mode, Part, Reduction, RemovedModes
+from realize.stability import Stability, hidden_warning
+
+__all__ = ["minimal", "reach_and_see", "reduce"]
+
+
+def reach_and_see(opened: Opened) -> tuple[Reach, Reach]:
+    """Return what the inputs reach, and what the outputs see of it (in the dual)."""
+    reach = opened.reached(opened.A, opened.B, opened.C, "reached")
+    return reach, opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen")
+
+
+def minimal(path: Path, source: Realization | TransferMatrix) -> Reduction:
+    """Return a minimal realization, and warn of what the transfer matrix no longer shows."""
+    reduction, blocks = _reduce(path, source)
+    if reduction.order < reduction.source_order:
+        doubtful = [m for m in blocks() if m.stability is not Stability.STABLE]
+        if doubtful:
+            # The caller called a face, and the face called this.
+            warnings.warn(hidden_warning(doubtful), HiddenInstabilityWarning, stacklevel=3)
+    return reduction
+
+
+def reduce(path: Path, source: Realization | TransferMatrix) -> Reduction:
+    """Return a minimal realization of a model or of a transfer matrix, without warning."""
+    return _reduce(path, source)[0]
+
+
+def _reduce(
+    path: Path, source: Realization | TransferMatrix
+) -> tuple[Reduction, Callable[[], tuple[Mode, ...]]]:
+    """Return the reduction, and what computes the modes removed, not yet sorted into parts."""
+    accept(source, Realization, TransferMatrix)
+    from_transfer = isinstance(source, TransferMatrix)
+    model = realize_transfer(path, source) if isinstance(source, TransferMatrix) else source
+    opened = path.open(model)
+    reach, sight = reach_and_see(opened)
+    order = sight.dimension
+
+    def blocks() -> list[tuple[Part, Any]]:
+        return [
+            (Part.CONTROLLABLE_UNOBSERVABLE, sight.quotient()),
+            (Part.UNCONTROLLABLE_UNOBSERVABLE, reach.quotient()),
+        ]
+
+    def removed() -> RemovedModes:
+        polynomial: tuple[Any, ...] | None = None
+        if path.is_exact:
+            first, second = (opened.characteristic_polynomial(block) for _, block in blocks())
+            polynomial = path.multiply(first, second)
+        return RemovedModes(
+            count=model.order - order,
+            polynomial=polynomial,
+            modes=opened.modes(decompose(opened, reach, sight).hidden_blocks()),
+        )
+
+    # The reduced state is U x on the reachable part, with U the transposed basis of the dual.
+    state_map = Deferred(
+        lambda: None if from_transfer else opened.state_map(sight.basis.T @ reach.coordinates)
+    )
+    reduction = Reduction(
+        model=opened.close(sight.A.T, sight.C.T, sight.B.T),
+        order=order,
+        source_order=model.order,
+        _removed=Deferred(removed),
+        _state_map=state_map,
+        _decisions=Deferred(lambda: reach.decisions() + sight.decisions()),
+        _condition=Deferred(
+            lambda: None if (map_ := state_map.get()) is None else opened.condition(map_)
+        ),
+    )
+    return reduction, lambda: opened.modes(blocks())

@@ -1,0 +1,1 @@
+"""Models as given: state-space realizations, transfer matrices, and their files."""

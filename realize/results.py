@@ -1,0 +1,395 @@
+"""Frozen records that the forms return.
+
+Nothing here computes. A field that is costly is a `Deferred`: it is computed at first access and
+kept, and it is computed before a record is pickled.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from enum import StrEnum
+from fractions import Fraction
+from typing import Any, Generic, TypeVar
+
+import numpy as np
+
+from realize.model.realization import Realization
+from realize.model.transfer import TransferMatrix
+from realize.polynomials import Polynomial
+from realize.stability import Stability
+
+__all__ = [
+    "Cancellation",
+    "Deferred",
+    "KalmanParts",
+    "Mode",
+    "NearPair",
+    "Part",
+    "RankDecision",
+    "Reduction",
+    "RemovedModes",
+    "Side",
+    "Staircase",
+]
+
+Array = np.ndarray[Any, Any]
+T = TypeVar("T")
+
+
+class Side(StrEnum):
+    """Which side of a model a question is about."""
+
+    INPUT = "input"
+    OUTPUT = "output"
+
+
+class Part(StrEnum):
+    """The four parts of the Kalman decomposition, in the order of the blocks."""
+
+    CONTROLLABLE_UNOBSERVABLE = "controllable, unobservable"
+    CONTROLLABLE_OBSERVABLE = "controllable, observable"
+    UNCONTROLLABLE_UNOBSERVABLE = "uncontrollable, unobservable"
+    UNCONTROLLABLE_OBSERVABLE = "uncontrollable, observable"
+
+    @property
+    def hidden(self) -> bool:
+        """Whether the transfer matrix does not show the modes of this part."""
+        return self is not Part.CONTROLLABLE_OBSERVABLE
+
+
+class Deferred(Generic[T]):
+    """A value computed at first access, once."""
+
+    __slots__ = ("_compute", "_value")
+
+    def __init__(self, compute: Callable[[], T]) -> None:
+        self._compute: Callable[[], T] | None = compute
+
+    @classmethod
+    def known(cls, value: T) -> Deferred[T]:
+        """Wrap a value that needs no computing."""
+        kept = cls.__new__(cls)
+        kept._compute = None
+        kept._value = value
+        return kept
+
+    def get(self) -> T:
+        """Return the value, computing it if this is the first time."""
+        if self._compute is not None:
+            self._value: T = self._compute()
+            self._compute = None
+        return self._value
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return (Deferred.known, (self.get(),))
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class RankDecision:
+    """One place where a path said "this many are not zero".
+
+    Attributes
+    ----------
+    where : str
+        The stage, such as ``"reached, stage 2"``.
+    shape : tuple of int
+        Shape of the block whose rank was decided.
+    rank : int
+        The rank taken.
+    scale, cutoff : float
+        Frobenius norm of the whole scaled model, and the number compared with; 0.0 on the exact
+        path, which compares with nothing.
+    smallest_kept, largest_dropped : float or None
+        The singular values on both sides of the decision; None where there is none.
+    exact_rank : dict
+        Reading -> the exact rank at the same place; filled by the paired examination.
+    """
+
+    where: str
+    shape: tuple[int, int]
+    rank: int
+    scale: float
+    cutoff: float
+    smallest_kept: float | None
+    largest_dropped: float | None
+    exact_rank: dict[str, int] = field(default_factory=dict)
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the decision as plain JSON values."""
+        return {
+            "where": self.where,
+            "shape": list(self.shape),
+            "rank": self.rank,
+            "scale": self.scale,
+            "cutoff": self.cutoff,
+            "smallest_kept": self.smallest_kept,
+            "largest_dropped": self.largest_dropped,
+            "exact_rank": dict(self.exact_rank),
+        }
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Mode:
+    """One eigenvalue of the state matrix, with what is known of it.
+
+    Attributes
+    ----------
+    value : complex
+        Double closest to the eigenvalue, each part rounded (units: 1 / time; dimensionless in
+        discrete time).
+    radius : float
+        The eigenvalue lies within this distance of ``value``: proved on the exact path, ``inf``
+        on the floating path, which proves nothing.
+    part : Part
+        Which part of the Kalman decomposition holds it.
+    multiplicity : int
+        How often it occurs in that part.
+    stability : Stability
+        What it does when left alone.
+    time_constant : float or None
+        Time to fall (or, negative, to grow) by a factor e, in the time unit of the model.
+    damping : float or None
+        Damping ratio, 1 for a real stable mode.
+    polynomial : tuple of Fraction, or None
+        Monic irreducible factor it is a root of; None on the floating path.
+    """
+
+    value: complex
+    radius: float
+    part: Part
+    multiplicity: int
+    stability: Stability
+    time_constant: float | None
+    damping: float | None
+    polynomial: Polynomial | None = None
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the mode as plain JSON values."""
+        return {
+            "real": self.value.real,
+            "imaginary": self.value.imag,
+            "radius": self.radius if self.radius != float("inf") else None,
+            "part": str(self.part),
+            "multiplicity": self.multiplicity,
+            "stability": str(self.stability),
+            "time_constant": self.time_constant,
+            "damping": self.damping,
+            "polynomial": None if self.polynomial is None else [str(c) for c in self.polynomial],
+        }
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class RemovedModes:
+    """What a reduction removed.
+
+    Attributes
+    ----------
+    count : int
+        How many states were removed.
+    polynomial : tuple of Fraction, or None
+        Characteristic polynomial of what was removed, monic; None on the floating path.
+    modes : tuple of Mode
+        The modes removed, with their stability.
+    """
+
+    count: int
+    polynomial: Polynomial | None
+    modes: tuple[Mode, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Staircase:
+    """A model in staircase form.
+
+    Attributes
+    ----------
+    model : Realization
+        The model in the new coordinates.
+    transformation : array (n, n)
+        T, with state = T @ new state. On the floating path a scaling by powers of two times an
+        orthogonal matrix.
+    stairs : tuple of int
+        Rank increments of [B, AB, A^2 B, ...] (of the dual for side "output"), without the
+        closing zero.
+    side : Side
+        "input": the reachable part comes first. "output": the observable part comes first.
+    dimension : int
+        Dimension of the reachable, or observable, part.
+    """
+
+    model: Realization
+    transformation: Array
+    stairs: tuple[int, ...]
+    side: Side
+    dimension: int
+    _decisions: Deferred[tuple[RankDecision, ...]]
+
+    @property
+    def decisions(self) -> tuple[RankDecision, ...]:
+        """Every rank decision taken, in order."""
+        return self._decisions.get()
+
+    def __repr__(self) -> str:
+        part = "reachable" if self.side is Side.INPUT else "observable"
+        return f"<Staircase: {part} {self.dimension} of {self.model.order}, stairs {self.stairs}>"
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Reduction:
+    """A minimal realization and what was removed to reach it.
+
+    Attributes
+    ----------
+    model : Realization
+        The minimal realization, of order `order`.
+    order : int
+        Its number of states.
+    source_order : int
+        Number of states of the realization that was reduced.
+    """
+
+    model: Realization
+    order: int
+    source_order: int
+    _removed: Deferred[RemovedModes]
+    _state_map: Deferred[Array | None]
+    _decisions: Deferred[tuple[RankDecision, ...]]
+    _condition: Deferred[float | None]
+
+    @property
+    def removed(self) -> RemovedModes:
+        """The modes removed; computed at first access."""
+        return self._removed.get()
+
+    @property
+    def state_map(self) -> Array | None:
+        """Array (order, n): reduced state = state_map @ state on the reachable part.
+
+        None when the source was not a state model.
+        """
+        return self._state_map.get()
+
+    @property
+    def state_map_condition(self) -> float | None:
+        """2-norm condition number of `state_map`; None on the exact path."""
+        return self._condition.get()
+
+    @property
+    def decisions(self) -> tuple[RankDecision, ...]:
+        """Every rank decision taken, in order."""
+        return self._decisions.get()
+
+    def __repr__(self) -> str:
+        return f"<Reduction: order {self.source_order} to {self.order}, {self.model.kind}>"
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class KalmanParts:
+    """The Kalman decomposition.
+
+    Attributes
+    ----------
+    model : Realization
+        The model in the new coordinates, blocks in the order of `Part`.
+    transformation : array (n, n)
+        T, with state = T @ new state.
+    dimensions : dict
+        Part -> number of states.
+    """
+
+    model: Realization
+    transformation: Array
+    dimensions: dict[str, int]
+    _polynomials: Deferred[dict[str, tuple[Any, ...]]]
+    _decisions: Deferred[tuple[RankDecision, ...]]
+
+    @property
+    def polynomials(self) -> dict[str, tuple[Any, ...]]:
+        """Part -> monic characteristic polynomial, descending powers."""
+        return self._polynomials.get()
+
+    @property
+    def decisions(self) -> tuple[RankDecision, ...]:
+        """Every rank decision taken, in order."""
+        return self._decisions.get()
+
+    def __repr__(self) -> str:
+        return f"<KalmanParts: {', '.join(f'{k}: {v}' for k, v in self.dimensions.items())}>"
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class NearPair:
+    """A pole and a zero that lie close together and do not cancel.
+
+    Attributes
+    ----------
+    pole, zero : complex
+    output, input : int
+        Which entry of the transfer matrix (0-based).
+    change : float
+        Relative size (2-norm of the change of the coefficients over the norm of the
+        coefficients) of the smallest change found that makes the pair cancel.
+    response_change : float
+        Largest change of the frequency response over its largest size, if the pair is dropped;
+        ``inf`` when the pole lies on the stability boundary.
+    stability : Stability
+        Of the pole.
+    """
+
+    pole: complex
+    zero: complex
+    output: int
+    input: int
+    change: float
+    response_change: float
+    stability: Stability
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Cancellation:
+    """What cancels in a transfer matrix, entry by entry.
+
+    Attributes
+    ----------
+    transfer : TransferMatrix
+        The coprime fractions.
+    common : tuple
+        Monic common factor, descending powers; for several entries a tuple of rows of them.
+    decisions : tuple of RankDecision
+        Rank decisions of the floating path, entry by entry; empty on the exact path.
+    cautions : tuple of str
+    """
+
+    transfer: TransferMatrix
+    common: tuple[Any, ...]
+    decisions: tuple[RankDecision, ...]
+    cautions: tuple[str, ...]
+    _factors: Deferred[tuple[Any, ...]]
+    _near: Deferred[tuple[NearPair, ...]]
+
+    @property
+    def factors(self) -> tuple[Any, ...]:
+        """Irreducible factors of `common` over the rationals, with multiplicity.
+
+        Pairs (polynomial, multiplicity); for several entries a tuple of rows of such tuples. On
+        the floating path the factors have degree one or two and come from computed roots.
+        """
+        return self._factors.get()
+
+    @property
+    def near(self) -> tuple[NearPair, ...]:
+        """Pole-zero pairs that lie close together and do not cancel."""
+        return self._near.get()
+
+    def __repr__(self) -> str:
+        inputs, outputs = self.transfer.input_count, self.transfer.output_count
+        if inputs == outputs == 1:
+            return f"<Cancellation: common factor of degree {len(self.common) - 1}>"
+        degrees = [[len(c) - 1 for c in row] for row in self.common]
+        return f"<Cancellation: common factors of degrees {degrees}>"
+
+
+def as_fractions(values: Array) -> tuple[Fraction, ...]:
+    """Return a flat object array as a tuple of Fractions."""
+    return tuple(values.ravel().tolist())
