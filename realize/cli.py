@@ -14,7 +14,7 @@ import click
 from rich.console import Console
 from rich.text import Text
 
-import realize
+from realize import __version__
 from realize.convert import as_realization
 from realize.demo import stories
 from realize.dispatch import path_for
@@ -57,7 +57,7 @@ def _fail(message: str) -> NoReturn:
 
 
 @click.group(cls=_Commands, epilog=_EXIT_TEXT, context_settings={"max_content_width": 80})
-@click.version_option(realize.__version__, prog_name="realize")
+@click.version_option(__version__, prog_name="realize")
 def main() -> None:
     """Decide which modes of a linear model are hidden, on exact and floating paths side by side.
 

@@ -219,11 +219,14 @@ def _product(roots: Any, where: str) -> tuple[list[Fraction], bool]:
     exact = True
     pending: list[complex] = []
     for index, root in enumerate(roots):
+        place = f"{where}, item {index + 1}"
         if isinstance(root, complex | np.complexfloating):
             exact = False
-            _place_complex(complex(root), pending, factors, f"{where}, item {index + 1}")
+            parse_entry(float(root.real), place)  # for the error when a part is not finite
+            parse_entry(float(root.imag), place)
+            pending.append(complex(root))
         else:
-            entry = parse_entry(root, f"{where}, item {index + 1}")
+            entry = parse_entry(root, place)
             exact = exact and isinstance(entry, Fraction)
             factors.append((Fraction(1), -Fraction(entry)))
     factors += _paired(pending, where)
@@ -233,40 +236,26 @@ def _product(roots: Any, where: str) -> tuple[list[Fraction], bool]:
     return polynomial, exact
 
 
-def _place_complex(
-    root: complex, pending: list[complex], factors: list[tuple[Fraction, ...]], where: str
-) -> None:
-    """Make a factor of a complex root if it is real or its conjugate is waiting; else wait."""
-    parse_entry(root.real, where)
-    parse_entry(root.imag, where)
-    partner = root.conjugate()
-    if root.imag == 0.0:
-        factors.append((Fraction(1), -Fraction(root.real)))
-    elif partner in pending:
-        pending.remove(partner)
-        factors.append(_quadratic(root, partner))
-    else:
-        pending.append(root)
-
-
 def _paired(pending: list[complex], where: str) -> list[tuple[Fraction, ...]]:
-    """Factors of the roots whose conjugates are not exactly there: rounding noise, or an error."""
+    """Return real factors of roots given as complex numbers, each with its conjugate."""
     factors: list[tuple[Fraction, ...]] = []
     while pending:
         root = pending.pop()
-        if abs(root.imag) <= PAIRING * abs(root):
+        mirror = root.conjugate()
+        allowed = PAIRING * abs(root)
+        partner = min(pending, key=lambda other: abs(other - mirror), default=None)
+        if root.imag and partner is not None and abs(partner - mirror) <= allowed:
+            pending.remove(partner)
+            factors.append(_quadratic(root, partner))
+        elif abs(root.imag) <= allowed:
             factors.append((Fraction(1), -Fraction(root.real)))
-            continue
-        partner = min(pending, key=lambda other: abs(other - root.conjugate()), default=None)
-        if partner is None or abs(partner - root.conjugate()) > PAIRING * abs(root):
+        else:
             raise EntryError(
                 f"{where}: {root!r} comes without its conjugate, so the coefficients would not "
                 "be real; give both",
                 where=where,
                 found=repr(root),
             )
-        pending.remove(partner)
-        factors.append(_quadratic(root, partner))
     return factors
 
 

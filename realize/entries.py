@@ -296,20 +296,18 @@ def _simplest(low: int, high: int, denominator: int, closed: bool) -> Fraction:
     # Ends as n1/d1 < n2/d2; (p, q) and (p0, q0) are the last two convergents.
     n1, d1, n2, d2 = low, denominator, high, denominator
     p0, q0, p, q = 0, 1, 1, 0
-    closed1 = closed2 = closed
     while True:
         quotient, rest1 = divmod(n1, d1)
         # The smallest integer at or above the lower end.
-        candidate = quotient if rest1 == 0 and closed1 else quotient + 1
+        candidate = quotient if rest1 == 0 and closed else quotient + 1
         below_upper = candidate * d2 - n2
-        if below_upper < 0 or (below_upper == 0 and closed2):
+        if below_upper < 0 or (below_upper == 0 and closed):
             return make_fraction(candidate * p + p0, candidate * q + q0)
         # No integer between the ends, so both have the same whole part: take it off and invert,
         # which swaps the ends. An open lower end at an integer becomes an upper end at infinity,
         # kept as the ratio with denominator zero.
         p0, q0, p, q = p, q, quotient * p + p0, quotient * q + q0
         n1, d1, n2, d2 = d2, n2 - quotient * d2, d1, rest1
-        closed1, closed2 = closed2, closed1
 
 
 def description_bits(number: Fraction) -> int:

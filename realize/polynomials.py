@@ -286,7 +286,7 @@ def monic(p: Polynomial) -> Polynomial:
     EntryError
         When p is the zero polynomial.
     """
-    _refuse_zero(p, "a leading coefficient")
+    refuse_zero(p)
     lead = p[0]
     return p if lead == 1 else tuple([c / lead for c in p])
 
@@ -331,6 +331,26 @@ def evaluate(p: Polynomial, point: int | Fraction) -> Fraction:
         value = value * above + c.numerator * (common // c.denominator) * scale
         scale *= below
     return Fraction(value * below, common * scale)
+
+
+def refuse_zero(p: Polynomial) -> None:
+    """Raise where a polynomial with a leading coefficient is needed.
+
+    Parameters
+    ----------
+    p : tuple of Fraction
+        Coefficients, descending powers, without leading zeros.
+
+    Raises
+    ------
+    EntryError
+        When p is the zero polynomial.
+    """
+    if degree(p) < 0:
+        raise EntryError(
+            "found the zero polynomial, which has every number as a root and no leading"
+            " coefficient; give a polynomial with a nonzero coefficient"
+        )
 
 
 def moebius(p: Polynomial) -> Polynomial:
@@ -385,7 +405,7 @@ def factor(p: Polynomial) -> tuple[tuple[Polynomial, int], ...]:
     >>> [(text(f), m) for f, m in factor((Fraction(1), Fraction(1), Fraction(0), Fraction(0)))]
     [('s', 2), ('s + 1', 1)]
     """
-    _refuse_zero(p, "a factorisation")
+    refuse_zero(p)
     if len(p) == 1:
         return ()
     _, found = to_flint(p).factor()
@@ -597,14 +617,6 @@ def _working_precision(bits: int) -> Iterator[None]:
             yield
         finally:
             ctx.prec = before
-
-
-def _refuse_zero(p: Polynomial, wanted: str) -> None:
-    if degree(p) < 0:
-        raise EntryError(
-            f"the zero polynomial has no answer here: {wanted} was asked for; give a polynomial"
-            " with a nonzero coefficient"
-        )
 
 
 def _half_about(f: Polynomial, centre: Fraction) -> Polynomial | None:

@@ -15,7 +15,6 @@ from enum import StrEnum
 from fractions import Fraction
 from typing import TYPE_CHECKING, Protocol
 
-from realize.errors import EntryError
 from realize.polynomials import (
     Box,
     Polynomial,
@@ -27,6 +26,7 @@ from realize.polynomials import (
     gcd,
     isolate,
     moebius,
+    refuse_zero,
     root_boxes,
     root_in,
     strip,
@@ -140,7 +140,7 @@ def root_counts(p: Polynomial, sampling_period: Fraction | float | None) -> Root
     >>> root_counts((Fraction(1), Fraction(2), Fraction(1), Fraction(2)), None)
     RootCounts(inside=1, boundary=2, outside=0)
     """
-    _refuse_zero(p)
+    refuse_zero(p)
     on_axis = p if sampling_period is None else moebius(p)
     at_minus_one = degree(p) - degree(on_axis)
     real_part, imag_part = _on_the_axis(on_axis)
@@ -453,14 +453,6 @@ def _mode_text(value: complex) -> str:
 # ---------------------------------------------------------------------------------------------
 # Counting without roots
 # ---------------------------------------------------------------------------------------------
-
-
-def _refuse_zero(p: Polynomial) -> None:
-    if degree(p) < 0:
-        raise EntryError(
-            "the zero polynomial has every number as a root; give a polynomial with a nonzero"
-            " coefficient"
-        )
 
 
 def _on_the_axis(p: Polynomial) -> tuple[Polynomial, Polynomial]:

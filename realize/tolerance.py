@@ -1,4 +1,4 @@
-"""The only cutoff rule: when does the floating path call a number zero?
+"""The only cutoff rule: when the floating path calls a number zero.
 
 Every rank decision of the floating path compares singular values with one number,
 ``cutoff = tolerance * scale``, fixed before the first decision. The scale is the Frobenius norm of

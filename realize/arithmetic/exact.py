@@ -13,7 +13,7 @@ from flint import fmpq
 from realize import polynomials
 from realize.arithmetic import modular
 from realize.arithmetic.modular import Clock, Profile
-from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor
+from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor, frozen
 from realize.arithmetic.rational import RationalMatrix
 from realize.entries import Reading
 from realize.errors import InexactInputError
@@ -293,9 +293,7 @@ class OpenedExact:
         size, count = matrix.shape
         echelon, _ = matrix.T.matrix.rref()
         table = echelon.tolist()
-        pivots = []
-        for row in table[:count]:
-            pivots.append(next(j for j, value in enumerate(row) if value != 0))
+        pivots = [next(j for j, value in enumerate(row) if value != 0) for row in table[:count]]
         taken = set(pivots)
         rest = [j for j in range(size) if j not in taken]
         unit = RationalMatrix.from_entries(
@@ -334,10 +332,10 @@ class OpenedExact:
         )
 
     def transformation(self, basis: RationalMatrix) -> Array:
-        return basis.to_array()
+        return frozen(basis.to_array())
 
     def state_map(self, matrix: RationalMatrix) -> Array:
-        return matrix.to_array()
+        return frozen(matrix.to_array())
 
     def condition(self, state_map: Array) -> float | None:
         return None

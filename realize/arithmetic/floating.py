@@ -17,7 +17,8 @@ import numpy as np
 from scipy.linalg import lapack
 
 from realize import tolerance as rule
-from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor
+from realize.arithmetic.divisors import deconvolve, split
+from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor, frozen
 from realize.arithmetic.scaling import Scaling, scaling_of, unscaled
 from realize.errors import PrecisionError
 from realize.model.realization import Kind, Realization
@@ -77,11 +78,11 @@ class FloatingReach:
         pivots = np.abs(reduced.ravel(order="K")[1 :: order + 2])
         Q, _ = lapack.dorghr(reduced, tau, lwork=space)[:2]
         hessenberg = np.triu(reduced, -1)
-        small = np.flatnonzero(pivots <= self._opened.cutoff) if ranks is None else None
-        if small is None:
-            reach = sum(ranks or ())
-        else:
+        if ranks is None:
+            small = np.flatnonzero(pivots <= self._opened.cutoff)
             reach = int(small[0]) if small.size else order
+        else:
+            reach = sum(ranks)
         self.A_all = hessenberg[1:, 1:]
         self.B_all = hessenberg[1:, :1]
         if reach == 0:
@@ -271,10 +272,10 @@ class OpenedFloating:
         )
 
     def transformation(self, basis: Array) -> Array:
-        return np.ldexp(basis, self.scaling.states[:, None])
+        return frozen(np.ldexp(basis, self.scaling.states[:, None]))
 
     def state_map(self, matrix: Array) -> Array:
-        return np.ldexp(matrix, -self.scaling.states)
+        return frozen(np.ldexp(matrix, -self.scaling.states))
 
     def condition(self, state_map: Array) -> float | None:
         return float(np.linalg.cond(state_map)) if state_map.size else 1.0
@@ -415,70 +416,66 @@ class FloatingPath:
         self, multiple: tuple[float, ...], factors: tuple[float, ...]
     ) -> tuple[float, ...]:
         """Return multiple / factors, by least squares."""
-        return tuple(_deconvolve(np.asarray(multiple), np.asarray(factors)).tolist())
+        return tuple(deconvolve(np.asarray(multiple), np.asarray(factors)).tolist())
 
     def shared_factor(
         self, numerator: tuple[float, ...], denominator: tuple[float, ...], where: str
     ) -> SharedFactor:
-        """Return the common factor that the singular values of the Sylvester matrix show.
+        """Return the common factor that the companion form hides.
 
-        References
-        ----------
-        Corless, Gianni, Trager, Watt (1995), The singular value decomposition for polynomial
-        systems, ISSAC. Zeng (2011), The numerical greatest common divisor of univariate
-        polynomials, Contemporary Mathematics 556.
+        A common factor is an unobservable mode of the companion form of the fraction, so the
+        degree is decided by the same staircase, at the same cutoff, that `minimal` uses. A factor
+        that does not reproduce the coefficients to within the tolerance is not common; then one
+        degree less is tried.
         """
         above, below = np.asarray(numerator), np.asarray(denominator)
-        if not np.any(above):
-            common = below / below[0]
+        if not above[0]:
             return SharedFactor(
-                common=tuple(common.tolist()),
+                common=tuple((below / below[0]).tolist()),
                 numerator=(0.0,),
                 denominator=(float(below[0]),),
                 decisions=(),
             )
-        if below.size == 1 or above.size == 1:
-            return SharedFactor(
-                common=(1.0,), numerator=numerator, denominator=denominator, decisions=()
-            )
-        unit = _variable_unit(below)
-        f = np.ldexp(above, -unit * np.arange(above.size))
-        g = np.ldexp(below, -unit * np.arange(below.size))
-        f_norm, g_norm = np.linalg.norm(f), np.linalg.norm(g)
-        f, g = f / f_norm, g / g_norm
-        sylvester = _sylvester(f, g, 1)
-        values = np.linalg.svd(sylvester, compute_uv=False)
-        order = below.size - 1
-        scale = float(np.linalg.norm(sylvester))
-        cutoff = rule.cutoff(order, scale, self.tolerance)
-        rank = int(np.count_nonzero(values > cutoff))
-        decision = RankDecision(
-            where=where,
-            shape=(int(sylvester.shape[0]), int(sylvester.shape[1])),
-            rank=rank,
-            scale=scale,
-            cutoff=cutoff,
-            smallest_kept=float(values[rank - 1]) if rank else None,
-            largest_dropped=float(values[rank]) if rank < values.size else None,
+        opened, seen = self._companion_sight(above, below, where)
+        degree = min(opened.model.order - seen.dimension, above.size - 1, below.size - 1)
+        allowed = (
+            rule.default_tolerance(opened.model.order)
+            if self.tolerance is None
+            else self.tolerance
         )
-        degree = values.size - rank
-        if degree == 0:
-            return SharedFactor(
-                common=(1.0,), numerator=numerator, denominator=denominator, decisions=(decision,)
-            )
-        f_rest, g_rest = _cofactors(f, g, degree)
-        stacked = np.vstack([_convolution(f_rest, degree + 1), _convolution(g_rest, degree + 1)])
-        common = np.linalg.lstsq(stacked, np.concatenate([f, g]), rcond=None)[0]
-        lead = common[0]
-        common = np.ldexp(common / lead, unit * np.arange(common.size))
-        f_rest = np.ldexp(f_rest * lead * f_norm, unit * np.arange(f_rest.size))
-        g_rest = np.ldexp(g_rest * lead * g_norm, unit * np.arange(g_rest.size))
+        while degree > 0:
+            common, upper, lower, residual = split(above, below, degree)
+            if residual <= allowed:
+                return SharedFactor(
+                    common=tuple(common.tolist()),
+                    numerator=tuple(upper.tolist()),
+                    denominator=tuple(lower.tolist()),
+                    decisions=seen.decisions(),
+                )
+            degree -= 1
         return SharedFactor(
-            common=tuple(common.tolist()),
-            numerator=tuple(f_rest.tolist()),
-            denominator=tuple(g_rest.tolist()),
-            decisions=(decision,),
+            common=(1.0,),
+            numerator=numerator,
+            denominator=denominator,
+            decisions=seen.decisions(),
         )
+
+    def _companion_sight(
+        self, above: Array, below: Array, where: str
+    ) -> tuple[OpenedFloating, FloatingReach]:
+        """Return what the output of the companion form of a fraction sees."""
+        # The roles of the two do not matter for what they share; an improper fraction is turned.
+        c, a = (above, below) if above.size <= below.size else (below, above)
+        order = a.size - 1
+        A = np.eye(order, k=1)
+        A[-1:] = -(a[:0:-1] / a[0])
+        B = np.zeros((order, 1))
+        B[-1:] = 1.0
+        padded = np.concatenate([np.zeros(a.size - c.size), c / a[0]])
+        C = (padded[1:] - padded[0] * (a[1:] / a[0]))[::-1][None, :]
+        model = Realization._trusted(A, B, C, np.zeros((1, 1)), kind=Kind.FLOATING)
+        opened = OpenedFloating(model, self.tolerance, self.scaled)
+        return opened, opened.reached(opened.A.T, opened.C.T, opened.B.T, where)
 
     def factors(self, polynomial: tuple[float, ...]) -> tuple[tuple[tuple[float, ...], int], ...]:
         """Return monic factors of degree one or two, one for each computed root or pair."""
@@ -502,37 +499,3 @@ class FloatingPath:
 
         shifted = hankel_realization(parameters, self.tolerance)
         return shifted if shifted is not None else row_realization(parameters, self.tolerance)
-
-
-def _variable_unit(polynomial: Array) -> int:
-    """Return the power of two for the variable that brings the first and last coefficient level."""
-    kept = np.flatnonzero(polynomial)
-    span = int(kept[-1] - kept[0])
-    if not span:
-        return 0
-    return round(math.log2(abs(polynomial[kept[-1]] / polynomial[kept[0]])) / span)
-
-
-def _convolution(polynomial: Array, columns: int) -> Array:
-    """Return the matrix whose product with coefficients is the product of polynomials."""
-    result = np.zeros((polynomial.size + columns - 1, columns))
-    for j in range(columns):
-        result[j : j + polynomial.size, j] = polynomial
-    return result
-
-
-def _sylvester(f: Array, g: Array, degree: int) -> Array:
-    """Return [conv(f), conv(g)] with room for cofactors of a common factor of this degree."""
-    return np.hstack([_convolution(f, g.size - degree), _convolution(g, f.size - degree)])
-
-
-def _cofactors(f: Array, g: Array, degree: int) -> tuple[Array, Array]:
-    """Return f / common and g / common from the null vector of a Sylvester submatrix."""
-    null = np.linalg.svd(_sylvester(f, g, degree))[2][-1]
-    g_rest, f_rest = null[: g.size - degree], -null[g.size - degree :]
-    return f_rest, g_rest
-
-
-def _deconvolve(multiple: Array, factor: Array) -> Array:
-    columns = multiple.size - factor.size + 1
-    return np.asarray(np.linalg.lstsq(_convolution(factor, columns), multiple, rcond=None)[0])

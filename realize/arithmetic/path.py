@@ -17,9 +17,15 @@ import numpy as np
 from realize.model.realization import Realization
 from realize.results import Mode, Part, RankDecision
 
-__all__ = ["Completion", "Frame", "Matrix", "Opened", "Path", "Reach", "Sequenced", "SharedFactor"]
+__all__ = ["Completion", "Frame", "Matrix", "Opened", "Path", "Reach", "Sequenced", "SharedFactor", "frozen"]
 
 Array = np.ndarray[Any, Any]
+
+
+def frozen(values: Array) -> Array:
+    """Return the array, read-only."""
+    values.flags.writeable = False
+    return values
 
 
 class Matrix(Protocol):
@@ -52,7 +58,7 @@ class Frame:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Completion:
-    """``matrix = basis[:, :k] @ factor``: a basis whose first k columns span the matrix's columns."""
+    """A basis that begins with the span of a matrix: ``matrix = basis[:, :k] @ factor``."""
 
     basis: Any
     inverse: Any

@@ -4,7 +4,7 @@ Every state, input and output is given a power of two as its unit, and time one 
 
 1. Breadth-first potentials on the zero pattern: the entries on the tree get exponent 0. Two models
    that differ by powers of two in their units become the same model here, bit for bit.
-2. Least squares of log2|entry| over all units, rounded.
+2. Least squares of log2|entry| over all units, that of time included, rounded.
 3. Norm balancing of the states (Parlett and Reinsch 1969, Numer. Math. 13; James, Langou, Lowery
    2014 for the 2-norm), with the columns of B, the rows of C and A brought to norm 1.
 
@@ -16,7 +16,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
 from scipy.linalg import lapack
@@ -24,6 +24,9 @@ from scipy.linalg import lapack
 __all__ = ["Scaling", "scaling_of", "unscaled"]
 
 Array = np.ndarray[Any, Any]
+
+_RIDGE: Final = 2.0**-20
+"""Weight that holds the unit of time where nothing else does, far below that of one entry."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,9 +93,8 @@ def _balanced_units(graph: Array, order: int) -> Array:
     """Return the exponents of the units of states, inputs and outputs."""
     mantissas, exponents = np.frexp(graph)
     pattern = mantissas != 0.0
-    pattern.ravel(order="K")[:: graph.shape[0] + 1] = False  # no unit changes the diagonal
     units, roots = _tree_potentials(pattern, exponents)
-    units = _least_squares(pattern, mantissas, exponents, units, roots)
+    units = _least_squares(pattern, mantissas, exponents, units, roots, order)
     np.ldexp(graph, units - units[:, None], out=graph)
     # A at norm 1 while the states are balanced: its weight against B and C must not depend on
     # the unit of time.
@@ -155,24 +157,42 @@ def _tree_potentials(pattern: Array, exponents: Array) -> tuple[Array, list[int]
 
 
 def _least_squares(
-    pattern: Array, mantissas: Array, exponents: Array, units: Array, roots: list[int]
+    pattern: Array,
+    mantissas: Array,
+    exponents: Array,
+    units: Array,
+    roots: list[int],
+    order: int,
 ) -> Array:
     """Refine potentials by least squares of log2|entry|, rounded to integers.
 
-    The normal equations are those of a graph Laplacian, grounded at the root of each component.
-    The whole exponents are added to the logarithms of the mantissas, so that the sums, and their
+    One unknown for each node, and one for the unit of time, which is common to all entries of A.
+    The normal equations are those of a graph Laplacian, grounded at the root of each component,
+    bordered by time; where the pattern leaves the unit of time open, the ridge settles it. The
+    whole exponents are added to the logarithms of the mantissas, so that the sums, and their
     rounding, do not depend on the user's units.
     """
+    size = pattern.shape[0]
     weights = pattern.astype(float)
-    logs = np.log2(np.where(pattern, np.abs(mantissas), 1.0))
+    logs = np.log2(np.abs(mantissas) + (1.0 - weights))
     logs += (exponents + (units - units[:, None])) * weights
-    right = logs.sum(axis=1) - logs.sum(axis=0)
-    laplacian = -(weights + weights.T)
-    diagonal = laplacian.ravel(order="K")[:: pattern.shape[0] + 1]
-    diagonal -= laplacian.sum(axis=0)
-    for root in roots:
-        diagonal[root] += 1.0
-    solution, info = lapack.dposv(laplacian, right, lower=1, overwrite_a=1)[1:]
-    if info:  # pragma: no cover  # a grounded Laplacian is positive definite
-        raise AssertionError(f"grounded Laplacian not positive definite (info {info})")
-    return units + np.rint(solution).astype(np.int32)
+    normal = np.empty((size + 1, size + 1), order="F")
+    laplacian = normal[:size, :size]
+    np.negative(weights + weights.T, out=laplacian)
+    # The diagonal of A says nothing about nodes: its own terms cancel here and in the sums below.
+    balance = weights.sum(axis=0) + weights.sum(axis=1)
+    diagonal = np.einsum("ii->i", laplacian)
+    diagonal += balance
+    diagonal[roots] += 1.0
+    state = weights[:order, :order]
+    border = np.zeros(size)
+    border[:order] = state.sum(axis=1) - state.sum(axis=0)
+    normal[size, :size] = normal[:size, size] = border
+    normal[size, size] = state.sum() + _RIDGE
+    right = np.empty(size + 1)
+    right[:size] = logs.sum(axis=1) - logs.sum(axis=0)
+    right[size] = logs[:order, :order].sum()
+    solution, info = lapack.dposv(normal, right, lower=1, overwrite_a=1)[1:]
+    if info:  # pragma: no cover  # the ridge and the grounds make it positive definite
+        raise AssertionError(f"normal equations not positive definite (info {info})")
+    return units + np.rint(solution[:size]).astype(np.int32)

@@ -31,7 +31,7 @@ def _in_units(parameters: Array) -> tuple[Array, int, Array, Array]:
     outputs and inputs are brought to norm 1.
     """
     count = parameters.shape[0]
-    sizes = np.abs(parameters).reshape(count, -1).max(axis=1, initial=0.0)
+    sizes = np.abs(parameters).max(axis=(1, 2), initial=0.0)
     first, second = sizes[: (count + 1) // 2], sizes[count // 2 :]
     time = 0
     if first.max(initial=0.0) > 0.0 and second.max(initial=0.0) > 0.0:

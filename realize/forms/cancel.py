@@ -22,9 +22,9 @@ __all__ = ["cancel"]
 
 Array = np.ndarray[Any, Any]
 
-NEAR: Final = 1e-3
-"""Relative distance of a pole and a zero below which the pair is reported as near. A heuristic
-for what is worth a line; it decides nothing."""
+NEAR: Final = 1e-4
+"""Relative change of the coefficients below which a pair that it would make cancel is reported as
+near. A heuristic for what is worth a line; it decides nothing."""
 
 _ROOT_DOUBT: Final = 2.0**-26
 """Relative doubt about a computed root: the square root of the unit roundoff."""
@@ -134,7 +134,8 @@ def near_pairs(transfer: TransferMatrix) -> tuple[NearPair, ...]:
                 if pole.imag < 0:
                     continue
                 zero = min(zeros, key=lambda z, p=pole: abs(z - p))  # type: ignore[misc]
-                if abs(zero - pole) > NEAR * max(abs(pole), abs(zero)):
+                change = _smallest_change(f, g, pole, zero)
+                if change > NEAR:
                     continue
                 period = transfer.sampling_period
                 found.append(
@@ -143,7 +144,7 @@ def near_pairs(transfer: TransferMatrix) -> tuple[NearPair, ...]:
                         zero=zero,
                         output=i,
                         input=j,
-                        change=_smallest_change(f, g, pole, zero),
+                        change=change,
                         response_change=_response_change(f, g, pole, zero, period),
                         stability=computed_stability(
                             pole, period, _ROOT_DOUBT * max(1.0, abs(pole))

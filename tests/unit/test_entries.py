@@ -19,6 +19,8 @@ from realize.entries import (
     MAX_DIGITS,
     MAX_EXPONENT,
     Reading,
+    _rounding_interval,
+    _simplest,
     description_bits,
     int_from_digits,
     int_to_digits,
@@ -150,6 +152,34 @@ def test_intended_agrees_with_trying_denominators(value: float) -> None:
     """Where a fraction with a small denominator rounds to the double, that one is read."""
     rounded = float(f"{value:.3g}")
     assert read_float(rounded, "intended") == simplest_by_definition(rounded, 1000)
+
+
+@given((doubles | powers_of_two | subnormals).filter(lambda value: value > 0))
+@example(2.0**-1022)
+@example(2.0**-1074)
+@example(1.0)
+def test_rounding_interval_ends_halfway_to_the_neighbours(value: float) -> None:
+    """The ends are the midpoints to the neighbouring doubles, closed when these round back."""
+    low, high, denominator, closed = _rounding_interval(value)
+    below, above = math.nextafter(value, 0.0), math.nextafter(value, math.inf)
+    assert Fraction(low, denominator) == (Fraction(below) + Fraction(value)) / 2
+    assert closed is rounds_to(low, denominator, value)
+    if math.isfinite(above):
+        assert Fraction(high, denominator) == (Fraction(value) + Fraction(above)) / 2
+        assert closed is rounds_to(high, denominator, value)
+
+
+@given(st.integers(0, 300), st.integers(1, 60), st.integers(1, 40), st.booleans())
+def test_simplest_fraction_of_any_interval(low: int, width: int, whole: int, closed: bool) -> None:
+    """The simplest fraction between two others is the first when all are tried in order."""
+    lower, upper = Fraction(low, whole), Fraction(low + width, whole)
+    inside = (
+        Fraction(p, q)
+        for q in range(1, 2 * whole + 2)
+        for p in range(q * low // whole, q * (low + width) // whole + 2)
+        if lower < Fraction(p, q) < upper or (closed and Fraction(p, q) in (lower, upper))
+    )
+    assert _simplest(low, low + width, whole, closed) == next(inside)
 
 
 def test_half_even_ends_belong_to_even_doubles() -> None:
