@@ -27,7 +27,7 @@ from realize.forms import reduce
 from realize.model.files import load, save, to_document
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
-from realize.results import Mode, Reduction
+from realize.results import Mode, Reduction, spelled
 from realize.stability import Stability, hidden_cautions
 
 __all__ = ["main"]
@@ -166,7 +166,7 @@ def _report(reduction: Reduction, modes: tuple[Mode, ...]) -> dict[str, Any]:
         "source_order": reduction.source_order,
         "order": reduction.order,
         "removed": [mode.to_dict() for mode in modes],
-        "removed_polynomial": None if removed is None else [str(c) for c in removed],
+        "removed_polynomial": None if removed is None else spelled(removed),
         "decisions": [decision.to_dict() for decision in reduction.decisions],
         "model": to_document(reduction.model),
     }

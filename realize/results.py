@@ -9,11 +9,11 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from enum import StrEnum
-from fractions import Fraction
 from typing import Any, Generic, TypeVar
 
 import numpy as np
 
+from realize.entries import spell_fraction
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 from realize.polynomials import Polynomial
@@ -31,6 +31,7 @@ __all__ = [
     "RemovedModes",
     "Side",
     "Staircase",
+    "spelled",
 ]
 
 Array = np.ndarray[Any, Any]
@@ -153,6 +154,11 @@ class Mode:
         Damping ratio, 1 for a real stable mode.
     polynomial : tuple of Fraction, or None
         Monic irreducible factor it is a root of; None on the floating path.
+    why : str or None
+        For a hidden mode of an examination: "structural", when the zero pattern alone hides it,
+        or "by value", with the left or right vector in named states.
+    vector : tuple of (str, number)
+        That vector: the states it involves, the largest component 1.
     """
 
     value: complex
@@ -163,6 +169,8 @@ class Mode:
     time_constant: float | None
     damping: float | None
     polynomial: Polynomial | None = None
+    why: str | None = None
+    vector: tuple[tuple[str, Any], ...] = ()
 
     def to_dict(self) -> dict[str, Any]:
         """Return the mode as plain JSON values."""
@@ -175,7 +183,8 @@ class Mode:
             "stability": str(self.stability),
             "time_constant": self.time_constant,
             "damping": self.damping,
-            "polynomial": None if self.polynomial is None else [str(c) for c in self.polynomial],
+            "polynomial": None if self.polynomial is None else spelled(self.polynomial),
+            "why": self.why,
         }
 
 
@@ -390,6 +399,6 @@ class Cancellation:
         return f"<Cancellation: common factors of degrees {degrees}>"
 
 
-def as_fractions(values: Array) -> tuple[Fraction, ...]:
-    """Return a flat object array as a tuple of Fractions."""
-    return tuple(values.ravel().tolist())
+def spelled(polynomial: Polynomial) -> list[str]:
+    """Return exact coefficients as strings, however long."""
+    return [spell_fraction(coefficient) for coefficient in polynomial]

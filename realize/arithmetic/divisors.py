@@ -103,14 +103,10 @@ def _factor_of(f: Array, g: Array, u: Array, v: Array, degree: int) -> Array:
 
 
 def _residual(f: Array, g: Array, h: Array, u: Array, v: Array) -> float:
-    return float(
-        max(np.linalg.norm(f - np.convolve(h, u)), np.linalg.norm(g - np.convolve(h, v)))
-    )
+    return float(max(np.linalg.norm(f - np.convolve(h, u)), np.linalg.norm(g - np.convolve(h, v))))
 
 
-def _gauss_newton(
-    f: Array, g: Array, h: Array, u: Array, v: Array
-) -> tuple[Array, Array, Array]:
+def _gauss_newton(f: Array, g: Array, h: Array, u: Array, v: Array) -> tuple[Array, Array, Array]:
     """Return the change of h (leading coefficient held), u and v that lowers the residual."""
     upper = np.hstack(
         [

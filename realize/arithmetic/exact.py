@@ -29,6 +29,12 @@ Array = np.ndarray[Any, Any]
 PRODUCT_SECONDS: Final = 6e-10
 """Estimated time of one product modulo a prime, over n^3. Only used to refuse what cannot end."""
 
+POLYNOMIAL_SECONDS: Final = 1.3e-9
+"""The same for a characteristic polynomial."""
+
+_SMALL: Final = 16
+"""Up to this order no estimate is needed."""
+
 
 @dataclass(frozen=True, slots=True)
 class _Lifted:
@@ -341,7 +347,11 @@ class OpenedExact:
         return None
 
     def characteristic_polynomial(self, A: RationalMatrix) -> Polynomial:
-        self.clock.check("a characteristic polynomial")
+        order = A.shape[0]
+        if order > _SMALL:
+            # FLINT works modulo about order * bits / 62 primes, O(n^3) for each.
+            images = 1 + order * (A.bits() + order.bit_length()) / modular.PRIME_BITS
+            self.clock.afford(POLYNOMIAL_SECONDS * order**3 * images, "a characteristic polynomial")
         return A.characteristic_polynomial()
 
     def modes(self, blocks: Iterable[tuple[Part, RationalMatrix]]) -> tuple[Mode, ...]:
@@ -499,9 +509,7 @@ def _is_semisimple(A: RationalMatrix, factor: Polynomial) -> bool:
     power = RationalMatrix.identity(A.shape[0])
     value = RationalMatrix.zeros(*A.shape)
     for coefficient in reversed(factor):
-        value = value + RationalMatrix(
-            power.matrix * fmpq(coefficient.numerator, coefficient.denominator)
-        )
+        value = value + power.scaled(coefficient)
         power = power @ A
     return value.rank() == (value @ value).rank()
 

@@ -397,8 +397,10 @@ class FloatingPath:
         return np.array(values, dtype=float).reshape(shape)
 
     def common_denominator(self, denominators: Sequence[tuple[float, ...]]) -> tuple[float, ...]:
-        """Return the product of the distinct denominators, monic; floats have no common factors
-        that could be relied on."""
+        """Return the product of the distinct denominators, monic.
+
+        Floats have no common factors that could be relied on.
+        """
         distinct: list[Array] = []
         for denominator in denominators:
             monic = np.asarray(denominator) / denominator[0]
@@ -439,9 +441,7 @@ class FloatingPath:
         opened, seen = self._companion_sight(above, below, where)
         degree = min(opened.model.order - seen.dimension, above.size - 1, below.size - 1)
         allowed = (
-            rule.default_tolerance(opened.model.order)
-            if self.tolerance is None
-            else self.tolerance
+            rule.default_tolerance(opened.model.order) if self.tolerance is None else self.tolerance
         )
         while degree > 0:
             common, upper, lower, residual = split(above, below, degree)

@@ -10,14 +10,24 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
-from typing import Any, Protocol, Self
+from typing import Any, Protocol, Self, TypeVar
 
 import numpy as np
 
 from realize.model.realization import Realization
 from realize.results import Mode, Part, RankDecision
 
-__all__ = ["Completion", "Frame", "Matrix", "Opened", "Path", "Reach", "Sequenced", "SharedFactor", "frozen"]
+__all__ = [
+    "Completion",
+    "Frame",
+    "Matrix",
+    "Opened",
+    "Path",
+    "Reach",
+    "Sequenced",
+    "SharedFactor",
+    "frozen",
+]
 
 Array = np.ndarray[Any, Any]
 
@@ -122,7 +132,10 @@ class Reach(Protocol):
         ...
 
 
-class Opened(Protocol):
+R_co = TypeVar("R_co", bound=Reach, covariant=True)
+
+
+class Opened(Protocol[R_co]):
     """A model opened on a path: its matrices there, and the verbs."""
 
     @property
@@ -134,11 +147,11 @@ class Opened(Protocol):
     @property
     def C(self) -> Any: ...
 
-    def reached(self, A: Any, B: Any, C: Any, where: str) -> Reach:
+    def reached(self, A: Any, B: Any, C: Any, where: str) -> R_co:
         """Return the smallest A-invariant subspace that holds the columns of B."""
         ...
 
-    def flag(self, A: Any, B: Any, C: Any, where: str) -> Reach:
+    def flag(self, A: Any, B: Any, C: Any, where: str) -> R_co:
         """Return the same, with a frame adapted to span[B], span[B, AB], ... in turn."""
         ...
 
@@ -194,7 +207,7 @@ class Path(Protocol):
         """Whether what the path says is proved."""
         ...
 
-    def open(self, model: Realization) -> Opened:
+    def open(self, model: Realization) -> Opened[Reach]:
         """Open a model on this path."""
         ...
 

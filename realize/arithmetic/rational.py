@@ -132,6 +132,16 @@ class RationalMatrix:
 
     __hash__ = None  # type: ignore[assignment]  # compared by value, so not hashable by identity
 
+    def scaled(self, factor: Fraction) -> RationalMatrix:
+        """Return the matrix times a number."""
+        return RationalMatrix(self.matrix * fmpq(factor.numerator, factor.denominator))
+
+    def bits(self) -> int:
+        """Return the bits of the largest numerator over the common denominator, and of that."""
+        numerators, denominator = self.integers()
+        largest = max((abs(int(value)) for value in numerators.entries()), default=0)
+        return largest.bit_length() + denominator.bit_length()
+
     def is_zero(self) -> bool:
         """Whether every entry is zero."""
         return not any(self.integers()[0].entries())

@@ -103,7 +103,8 @@ def _balanced_units(graph: Array, order: int) -> Array:
     if time:
         np.ldexp(block, -time, out=block)
     factors = lapack.dgebal(graph, scale=1, permute=0, overwrite_a=1)[3]
-    return units + np.frexp(factors)[1] - 1
+    moved: Array = np.frexp(factors)[1]
+    return units + moved - 1
 
 
 def _frobenius(A: Array, B: Array, C: Array) -> float:
@@ -195,4 +196,5 @@ def _least_squares(
     solution, info = lapack.dposv(normal, right, lower=1, overwrite_a=1)[1:]
     if info:  # pragma: no cover  # the ridge and the grounds make it positive definite
         raise AssertionError(f"normal equations not positive definite (info {info})")
-    return units + np.rint(solution[:size]).astype(np.int32)
+    steps: Array = np.rint(solution[:size]).astype(np.int32)
+    return units + steps

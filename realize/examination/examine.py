@@ -6,23 +6,23 @@ import hashlib
 import json
 import os
 import time
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
 
-from realize.arithmetic.floating import FloatingPath, FloatingReach, OpenedFloating
+from realize.arithmetic.floating import FloatingPath, OpenedFloating
 from realize.arithmetic.modular import Clock
 from realize.entries import Reading, is_simple, known_word
 from realize.errors import BudgetError, NotBuiltError, UnknownWordError, UnsupportedEntryError
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
-from realize.forms.kalman import decompose
+from realize.forms.kalman import decompose, reach_and_see
 from realize.forms.sources import accept
 from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
-from realize.results import Deferred, Mode, Part, RankDecision
+from realize.results import Deferred, Mode, Part, RankDecision, spelled
 from realize.stability import Stability, hidden_cautions
 from realize.tolerance import check_tolerance, rounding_floor
 
@@ -89,6 +89,8 @@ class Examination:
         Kept for data with an uncertainty, which are not built yet. So is `witness`.
     not_done : tuple of str
         What was skipped and why.
+    hidden_parts : dict
+        Reading -> hidden part -> exact characteristic polynomial.
     seconds : dict
         Path -> wall-clock seconds.
     """
@@ -115,7 +117,8 @@ class Examination:
     _decisions: Deferred[tuple[RankDecision, ...]]
     _hidden: Deferred[tuple[Mode, ...]]
     _visible: Deferred[tuple[Mode, ...]]
-    _parts: Deferred[dict[str, dict[str, Polynomial]]]
+    _parts: Deferred[dict[str, dict[str, Polynomial | None]]]
+    hidden_parts: dict[str, dict[str, Polynomial]]
     _unsimple: Deferred[int]
 
     @property
@@ -138,8 +141,12 @@ class Examination:
         return self._hidden.get() + self._visible.get()
 
     @property
-    def parts(self) -> dict[str, dict[str, Polynomial]]:
-        """Reading -> part -> exact characteristic polynomial."""
+    def parts(self) -> dict[str, dict[str, Polynomial | None]]:
+        """Reading -> part -> exact characteristic polynomial.
+
+        The polynomial of the visible part costs more than all the rest; it is computed at first
+        access, and is None where the budget does not suffice for it.
+        """
         return self._parts.get()
 
     @property
@@ -159,7 +166,7 @@ class Examination:
             "model": self.model.digest,
             "minimal_order": self.minimal_order,
             "routes": self.routes,
-            "parts": _plain_parts(self.parts),
+            "hidden": _plain_parts(self.hidden_parts),
         }
         text = json.dumps(exact, sort_keys=True, separators=(",", ":"), ensure_ascii=True)
         return hashlib.sha256(text.encode("ascii")).hexdigest()
@@ -230,9 +237,14 @@ def _finite(value: float) -> float | None:
     return None if value == float("inf") else value
 
 
-def _plain_parts(parts: dict[str, dict[str, Polynomial]]) -> dict[str, dict[str, list[str]]]:
+def _plain_parts(
+    parts: Mapping[str, Mapping[str, Polynomial | None]],
+) -> dict[str, dict[str, list[str] | None]]:
     return {
-        reading: {part: [str(c) for c in polynomial] for part, polynomial in found.items()}
+        reading: {
+            part: None if polynomial is None else spelled(polynomial)
+            for part, polynomial in found.items()
+        }
         for reading, found in parts.items()
     }
 
@@ -347,7 +359,11 @@ def examine(
             lambda: floating.hidden_modes() if about is None else about.hidden_modes()
         ),
         _visible=Deferred(lambda: _visible_modes(about, floating, budget)),
-        _parts=Deferred(lambda: {word: found.parts for word, found in exact.items()}),
+        _parts=Deferred(lambda: {word: _parts_of(found, budget) for word, found in exact.items()}),
+        hidden_parts={
+            word: {str(part): polynomial for part, polynomial in found.hidden.items()}
+            for word, found in exact.items()
+        },
         _unsimple=Deferred(lambda: _count_unsimple(model)),
     )
 
@@ -359,10 +375,10 @@ class _Floating:
         began = time.perf_counter()
         self.path = FloatingPath(tolerance)
         self.opened: OpenedFloating = self.path.open(model)
-        self.run = _reach_and_see(self.opened)
+        self.run = reach_and_see(self.opened)
         self.order = self.run[1].dimension
         unscaled = FloatingPath(tolerance, scaled=False).open(model)
-        self.unscaled_order = _reach_and_see(unscaled)[1].dimension
+        self.unscaled_order = reach_and_see(unscaled)[1].dimension
         self.seconds = time.perf_counter() - began
 
     def decisions(self) -> tuple[RankDecision, ...]:
@@ -374,11 +390,6 @@ class _Floating:
 
     def visible_modes(self) -> tuple[Mode, ...]:
         return self.opened.modes([(Part.CONTROLLABLE_OBSERVABLE, self.run[1].A.T)])
-
-
-def _reach_and_see(opened: OpenedFloating) -> tuple[FloatingReach, FloatingReach]:
-    reach = opened.reached(opened.A, opened.B, opened.C, "reached")
-    return reach, opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen")
 
 
 def _readings_of(model: Realization, readings: Iterable[str] | None) -> tuple[Reading, ...]:
@@ -439,7 +450,9 @@ def _exact_answers(
                     found[str(word)] = other
                     break
             else:
-                found[str(word)] = ExactAnswer(rational, clock)
+                answer = ExactAnswer(rational, clock)
+                answer.find_hidden()
+                found[str(word)] = answer
         except BudgetError as error:
             not_done.append(f"the exact path did not run on the reading {word}: {error}")
     return found, tuple(not_done), time.perf_counter() - began
@@ -492,16 +505,17 @@ def _stabilities(about: ExactAnswer | None, floating: _Floating) -> tuple[str, s
     return summary(unreached), summary(unseen)
 
 
+def _parts_of(answer: ExactAnswer, budget: float | None) -> dict[str, Polynomial | None]:
+    known = {**answer.hidden, Part.CONTROLLABLE_OBSERVABLE: answer.visible_within(budget)}
+    return {str(part): known[part] for part in Part}
+
+
 def _visible_modes(
     about: ExactAnswer | None, floating: _Floating, budget: float | None
 ) -> tuple[Mode, ...]:
-    if about is None:
+    if about is None or about.visible_within(budget) is None:
         return floating.visible_modes()
-    about.opened.clock = Clock(budget)
-    try:
-        return about.visible_modes()
-    except BudgetError:
-        return floating.visible_modes()
+    return about.visible_modes()
 
 
 def _count_unsimple(model: Realization) -> int:

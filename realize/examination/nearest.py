@@ -9,9 +9,10 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
+import scipy.linalg
 
 from realize.arithmetic.floating import FloatingReach, OpenedFloating
 from realize.arithmetic.modular import Clock
@@ -19,12 +20,17 @@ from realize.arithmetic.rational import RationalMatrix
 from realize.entries import Reading
 from realize.errors import BudgetError
 from realize.examination.pairing import ExactAnswer
+from realize.examination.why import Coordinates
+from realize.forms.kalman import decompose, reach_and_see
 from realize.model.realization import Kind, Realization
 from realize.results import Deferred
 
 __all__ = ["Nearest", "nearest_of"]
 
 Array = np.ndarray[Any, Any]
+
+_STEPS: Final = 4
+"""Gauss-Newton steps at most."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -63,7 +69,8 @@ def nearest_of(
     """
     shaped, T = _shaped(opened, run)
     try:
-        answer = ExactAnswer(shaped.read(Reading.STORED), clock)
+        answer = ExactAnswer(shaped.read(Reading.STORED), clock, Coordinates(opened.model, T))
+        answer.find_hidden()
     except BudgetError:
         return None, None
     user = opened.model
@@ -110,22 +117,75 @@ def _shaped(
 ) -> tuple[Realization, Array]:
     """Return the model with exact zeros where the reduction dropped, and its coordinates T.
 
-    States: reached and seen; reached and unseen; not reached.
+    States: reached and seen; reached and unseen; not reached. What is not reached is then split
+    by what the outputs see of it, so that all four parts are exact.
     """
     reach, sight = run
     order, reached, visible = opened.model.order, reach.dimension, sight.dimension
-    inner = np.eye(order)
-    inner[:reached, :reached] = sight.Q
-    A = inner.T @ reach.A_all @ inner
-    A[:reached, :reached] = sight.A_all.T
+    Q = reach.Q
+    outer = _shear(Q.T @ opened.A @ Q, Q.T @ opened.B, reached)
+    T, T_inverse = Q @ np.linalg.inv(outer), outer @ Q.T
+    A, C = T_inverse @ opened.A @ T, opened.C @ T
+    inner, inner_inverse = np.eye(order), np.eye(order)
+    dual = A[:reached, :reached].T, C[:, :reached].T
+    turned = _shear(sight.Q.T @ dual[0] @ sight.Q, sight.Q.T @ dual[1], visible)
+    inner[:reached, :reached] = sight.Q @ turned.T
+    inner_inverse[:reached, :reached] = np.linalg.inv(turned).T @ sight.Q.T
+    T, T_inverse = T @ inner, inner_inverse @ T_inverse
+    A, B, C = T_inverse @ opened.A @ T, T_inverse @ opened.B, opened.C @ T
+    A[:visible, visible:reached] = 0.0
     A[reached:, :reached] = 0.0
-    B = np.zeros_like(reach.B_all)
-    B[:reached] = sight.C_all.T
-    C = reach.C_all.copy()
-    C[:, :reached] = sight.B_all.T
+    B[reached:] = 0.0
     C[:, visible:reached] = 0.0
-    T = opened.transformation(reach.Q @ inner)
-    return opened.close(A, B, C), T
+    if reached < order:
+        D = np.zeros((C.shape[0], B.shape[1]))
+        scaled = Realization._trusted(A, B, C, D, kind=Kind.FLOATING)
+        again = OpenedFloating(scaled, opened.tolerance, scaled=False)
+        run = reach_and_see(again)
+        if (run[0].dimension, run[1].dimension) == (reached, visible):
+            parts = decompose(again, *run)
+            A, B, C, T = parts.A, parts.B, parts.C, T @ parts.T
+    return opened.close(A, B, C), opened.transformation(T)
+
+
+def _shear(A: Array, B: Array, reached: int) -> Array:
+    """Return S = [1 0; Z 1] for which the lower left of S A S^-1 and the lower of S B are small.
+
+    A staircase drops what is small at one entry, which may be far from the nearest model that can
+    drop it. Gauss-Newton on all of them: Z A11 - A22 Z = -A21 and Z B1 = -B2 in least squares,
+    row by row in the Schur coordinates of A22. Steps that do not help are not taken.
+    """
+    order = A.shape[0]
+    best = np.eye(order)
+    if reached in (0, order):
+        return best
+    size = _dropped(A, B, reached)
+    for _ in range(_STEPS):
+        undo = np.linalg.inv(best)
+        A_now, B_now = best @ A @ undo, best @ B
+        A11, B1 = A_now[:reached, :reached], B_now[:reached]
+        triangle, U = scipy.linalg.schur(A_now[reached:, reached:], output="complex")
+        right_A, right_B = U.conj().T @ A_now[reached:, :reached], U.conj().T @ B_now[reached:]
+        Y = np.zeros((order - reached, reached), dtype=complex)
+        for i in range(order - reached - 1, -1, -1):
+            matrix = np.vstack([A11.T - triangle[i, i] * np.eye(reached), B1.T])
+            right = np.concatenate([triangle[i, i + 1 :] @ Y[i + 1 :] - right_A[i], -right_B[i]])
+            Y[i] = np.linalg.lstsq(matrix, right, rcond=None)[0]
+        step = np.eye(order)
+        step[reached:, :reached] = (U @ Y).real
+        candidate = step @ best
+        undo = np.linalg.inv(candidate)
+        dropped = _dropped(candidate @ A @ undo, candidate @ B, reached)
+        if not dropped < size / 2:
+            break
+        best, size = candidate, dropped
+    return best
+
+
+def _dropped(A: Array, B: Array, reached: int) -> float:
+    return math.hypot(
+        float(np.linalg.norm(A[reached:, :reached])), float(np.linalg.norm(B[reached:]))
+    )
 
 
 def _exact(values: Array) -> RationalMatrix:

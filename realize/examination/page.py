@@ -6,8 +6,9 @@ import textwrap
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
+from realize.polynomials import Polynomial
 from realize.polynomials import text as polynomial_text
-from realize.results import Mode
+from realize.results import Mode, Part
 from realize.stability import Stability
 from realize.tolerance import default_tolerance
 
@@ -18,6 +19,8 @@ __all__ = ["findings", "page"]
 
 WIDTH = 80
 _MARGIN = 11
+_SHORT = 12
+"""Up to this order the polynomial of the visible part is shown."""
 
 
 def page(examination: Examination) -> str:
@@ -38,6 +41,7 @@ def findings(examination: Examination) -> str:
         ("Answer", examination.verdict[0].upper() + examination.verdict[1:] + "."),
         ("Danger", _danger(examination)),
         ("Hidden", _hidden(examination)),
+        ("Why", _why(examination)),
         ("Basis", _basis(examination)),
         ("Cutoffs", _cutoffs(examination)),
         ("Removal", _removal(examination)),
@@ -135,6 +139,18 @@ def _hidden(examination: Examination) -> str:
     return shown + (f"; and {len(modes) - 6} more." if len(modes) > 6 else ".")
 
 
+def _why(examination: Examination) -> str:
+    modes = _upper(examination.hidden_modes)
+    if not modes:
+        return "every state is reached and seen."
+    if all(mode.why is None for mode in modes):
+        return "not told: the exact path did not run."
+    texts = [f"{mode_text(mode.value)}: {mode.why}" for mode in modes[:4]]
+    if len(modes) > 4:
+        texts.append(f"and {len(modes) - 4} more")
+    return "; ".join(texts) + "."
+
+
 def _basis(examination: Examination) -> str:
     if not examination.minimal_order:
         return "the exact path did not run; nothing here is proved."
@@ -208,18 +224,40 @@ def _not_done(examination: Examination) -> str:
     return "; ".join(undone) + "."
 
 
+def _shown_parts(examination: Examination) -> dict[str, dict[str, Polynomial | int | None]]:
+    """Return the polynomials, and a degree instead of a long visible one, which costs too much."""
+    shown: dict[str, dict[str, Polynomial | int | None]] = {}
+    for word, hidden in examination.hidden_parts.items():
+        visible: Polynomial | int | None = examination.minimal_order[word]
+        if examination.order <= _SHORT:
+            visible = examination.parts[word][Part.CONTROLLABLE_OBSERVABLE]
+        known = {**hidden, str(Part.CONTROLLABLE_OBSERVABLE): visible}
+        shown[word] = {str(part): known[str(part)] for part in Part}
+    return shown
+
+
+def _short(polynomial: Polynomial | int | None, variable: str) -> str:
+    if polynomial is None:
+        return "not computed within the budget"
+    if isinstance(polynomial, int):
+        return f"degree {polynomial}"
+    if all(abs(c.numerator) < 10**9 and c.denominator < 10**9 for c in polynomial):
+        text = polynomial_text(polynomial, variable)
+        if len(text) <= 44:
+            return text
+    return f"degree {len(polynomial) - 1}"
+
+
 def _tables(examination: Examination) -> list[str]:
     lines: list[str] = []
     if examination.minimal_order:
         lines.append("Parts (exact characteristic polynomials)")
         variable = "s" if examination.model.sampling_period is None else "z"
         shown: dict[str, list[str]] = {}
-        for reading, parts in examination.parts.items():
+        for reading, parts in _shown_parts(examination).items():
             block = []
             for part, polynomial in parts.items():
-                text = polynomial_text(polynomial, variable)
-                if len(text) > 44:
-                    text = f"degree {len(polynomial) - 1}"
+                text = _short(polynomial, variable)
                 block.append(f"  {part:<32}{text}")
             shown.setdefault("\n".join(block), []).append(reading)
         for block_text, words in shown.items():

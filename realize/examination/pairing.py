@@ -6,13 +6,16 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 
 from realize import polynomials
-from realize.arithmetic.exact import ExactReach, OpenedExact, modes_of
+from realize.arithmetic.exact import OpenedExact, modes_of
 from realize.arithmetic.floating import FloatingReach, OpenedFloating
 from realize.arithmetic.modular import Clock
+from realize.errors import BudgetError
 from realize.examination.routes import routes
+from realize.examination.why import Coordinates, explained
+from realize.forms.kalman import reach_and_see
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
-from realize.results import Deferred, Mode, Part, RankDecision
+from realize.results import Mode, Part, RankDecision
 from realize.stability import is_stable
 from realize.tolerance import rounding_floor
 
@@ -22,22 +25,22 @@ __all__ = ["ExactAnswer", "Replay", "with_exact_ranks"]
 class ExactAnswer:
     """What the exact path says of one rational model; costly parts at first access."""
 
-    def __init__(self, model: Realization, clock: Clock) -> None:
+    def __init__(
+        self, model: Realization, clock: Clock, coordinates: Coordinates | None = None
+    ) -> None:
         self.model = model
+        self.coordinates = coordinates
         self.opened = OpenedExact(model, clock)
         opened = self.opened
-        self.reach: ExactReach = opened.reached(opened.A, opened.B, opened.C, "reached")
-        self.sight: ExactReach = opened.reached(
-            self.reach.A.T, self.reach.C.T, self.reach.B.T, "seen"
-        )
+        self.reach, self.sight = reach_and_see(opened)
         self.order = self.sight.dimension
         self.stairs = (self.reach.stairs, self.sight.stairs)
         self.routes = routes(opened, self.order)
-        self._hidden = Deferred(self._hidden_polynomials)
-        self._visible = Deferred(lambda: opened.characteristic_polynomial(self.sight.A))
+        self.hidden: dict[Part, Polynomial] = {}
+        self._visible: Polynomial | None = None
 
-    def _hidden_polynomials(self) -> dict[Part, Polynomial]:
-        """Return the polynomials of the three hidden parts.
+    def find_hidden(self) -> None:
+        """Find the polynomials of the three hidden parts.
 
         A on the unobservable subspace N is seen to by the dual of the whole model. The part in
         both N and the reachable subspace R is known, and divides; what R leaves over is the rest
@@ -51,30 +54,32 @@ class ExactAnswer:
         else:
             whole = opened.reached(opened.A.T, opened.C.T, opened.B.T, "seen")
             neither = polynomials.divide_exact(polynomial(whole.quotient()), both)
-        return {
+        self.hidden = {
             Part.CONTROLLABLE_UNOBSERVABLE: both,
             Part.UNCONTROLLABLE_UNOBSERVABLE: neither,
             Part.UNCONTROLLABLE_OBSERVABLE: polynomials.divide_exact(unreached, neither),
         }
 
-    @property
-    def hidden(self) -> dict[Part, Polynomial]:
-        """Part -> characteristic polynomial, of the three hidden parts."""
-        return self._hidden.get()
-
-    @property
-    def parts(self) -> dict[str, Polynomial]:
-        """Part -> characteristic polynomial, of all four parts."""
-        known = {**self.hidden, Part.CONTROLLABLE_OBSERVABLE: self._visible.get()}
-        return {str(part): known[part] for part in Part}
+    def visible_within(self, budget: float | None) -> Polynomial | None:
+        """Return the polynomial of the part that shows, or None where the budget is too small."""
+        if self._visible is None:
+            self.opened.clock = Clock(budget)
+            try:
+                self._visible = self.opened.characteristic_polynomial(self.sight.A)
+            except BudgetError:
+                return None
+        return self._visible
 
     def hidden_modes(self) -> tuple[Mode, ...]:
-        """Return the hidden modes, with exact stability."""
-        return self._modes((part, self.hidden[part]) for part in Part if part.hidden)
+        """Return the hidden modes, with exact stability and the reason they are hidden."""
+        modes = self._modes((part, self.hidden[part]) for part in Part if part.hidden)
+        return explained(modes, self.opened, self.coordinates)
 
     def visible_modes(self) -> tuple[Mode, ...]:
         """Return the modes that the transfer matrix shows."""
-        return self._modes([(Part.CONTROLLABLE_OBSERVABLE, self._visible.get())])
+        if self._visible is None:
+            raise AssertionError("visible_within comes first")
+        return self._modes([(Part.CONTROLLABLE_OBSERVABLE, self._visible)])
 
     def _modes(self, blocks: Iterable[tuple[Part, Polynomial]]) -> tuple[Mode, ...]:
         return modes_of(blocks, self.opened.A, self.model.sampling_period)

@@ -76,7 +76,7 @@ def _coprime_order(A: fmpz_mat, B: fmpz_mat, C: fmpz_mat, prime: int) -> int:
     if outputs > inputs:
         table = [list(line) for line in zip(*table, strict=True)]
     size = len(table)
-    return size * order - _divisor_degree(below, table)
+    return int(size * order - _divisor_degree(below, table))
 
 
 def _divisor_degree(below: nmod_poly, table: list[list[nmod_poly]]) -> int:

@@ -11,8 +11,8 @@ import numpy as np
 from realize.arithmetic.path import Path
 from realize.entries import known_word
 from realize.errors import ImproperError, NotBuiltError
-from realize.forms.transfer import transfer_matrix
 from realize.forms.sources import accept
+from realize.forms.transfer import transfer_matrix
 from realize.model.realization import Kind, Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Side

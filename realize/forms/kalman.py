@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from itertools import pairwise
-from typing import Any
+from typing import Any, TypeVar
 
 from realize.arithmetic.path import Opened, Path, Reach
 from realize.errors import PrecisionError
@@ -12,7 +12,7 @@ from realize.forms.sources import accept
 from realize.model.realization import Realization
 from realize.results import Deferred, KalmanParts, Part
 
-__all__ = ["Decomposition", "decompose", "kalman_parts"]
+__all__ = ["Decomposition", "decompose", "kalman_parts", "reach_and_see"]
 
 # A maps each part into itself, into what is both reached and unseen, and, from the part that is
 # neither, anywhere (Kailath, Linear Systems, section 2.4).
@@ -22,6 +22,15 @@ _MAY_BE_NON_ZERO = (
     (False, False, True, True),
     (False, False, False, True),
 )
+
+
+R = TypeVar("R", bound=Reach)
+
+
+def reach_and_see(opened: Opened[R]) -> tuple[R, R]:
+    """Return what the inputs reach, and what the outputs see of it (in the dual)."""
+    reach = opened.reached(opened.A, opened.B, opened.C, "reached")
+    return reach, opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen")
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -49,8 +58,7 @@ def kalman_parts(path: Path, model: Realization) -> KalmanParts:
     """Return the four parts: controllable or not, observable or not."""
     accept(model, Realization)
     opened = path.open(model)
-    reach = opened.reached(opened.A, opened.B, opened.C, "reached")
-    sight = opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen")
+    reach, sight = reach_and_see(opened)
     parts = decompose(opened, reach, sight)
     return KalmanParts(
         model=opened.close(parts.A, parts.B, parts.C),
@@ -69,7 +77,7 @@ def kalman_parts(path: Path, model: Realization) -> KalmanParts:
     )
 
 
-def decompose(opened: Opened, reach: Reach, sight: Reach) -> Decomposition:
+def decompose(opened: Opened[Reach], reach: Reach, sight: Reach) -> Decomposition:
     """Return the four parts, from what is reached and what of that is seen.
 
     One more subspace is asked for: modulo the reachable and unseen part R n N, the rest of the
@@ -138,7 +146,7 @@ def decompose(opened: Opened, reach: Reach, sight: Reach) -> Decomposition:
     return Decomposition(T=T, A=A, B=B, C=C, spans=tuple(spans), outside=outside)
 
 
-def _beside(opened: Opened, first: Any, size: int) -> Any:
+def _beside(opened: Opened[Reach], first: Any, size: int) -> Any:
     """Return diag(first, identity)."""
     rows = first.shape[0]
     return opened.block(

@@ -41,7 +41,9 @@ def read_parameters(parameters: Any) -> tuple[list[Entry], tuple[int, int, int]]
     ShapeError
         When the items do not have one shape (outputs, inputs), or there is none.
     """
-    items = [] if np.ndim(parameters) == 0 else [np.array(item, dtype=object) for item in parameters]
+    items = (
+        [] if np.ndim(parameters) == 0 else [np.array(item, dtype=object) for item in parameters]
+    )
     if not items:
         raise ShapeError(
             "parameters is empty; wanted at least the Markov parameter 0, which is D. "

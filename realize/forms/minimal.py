@@ -6,23 +6,17 @@ import warnings
 from collections.abc import Callable
 from typing import Any
 
-from realize.arithmetic.path import Opened, Path, Reach
+from realize.arithmetic.path import Path
 from realize.errors import HiddenInstabilityWarning
 from realize.forms.companion import realize_transfer
-from realize.forms.kalman import decompose
+from realize.forms.kalman import decompose, reach_and_see
 from realize.forms.sources import accept
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Deferred, Mode, Part, Reduction, RemovedModes
 from realize.stability import Stability, hidden_warning
 
-__all__ = ["minimal", "reach_and_see", "reduce"]
-
-
-def reach_and_see(opened: Opened) -> tuple[Reach, Reach]:
-    """Return what the inputs reach, and what the outputs see of it (in the dual)."""
-    reach = opened.reached(opened.A, opened.B, opened.C, "reached")
-    return reach, opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen")
+__all__ = ["minimal", "reduce"]
 
 
 def minimal(path: Path, source: Realization | TransferMatrix) -> Reduction:

@@ -188,27 +188,27 @@ class Realization(SystemModel):
     # Numbers
 
     @property
-    def A(self) -> Matrix:  # noqa: N802  # mathematics keeps its letters
+    def A(self) -> Matrix:  # mathematics keeps its letters
         """State matrix, shape (n, n)."""
         return self._A
 
     @property
-    def B(self) -> Matrix:  # noqa: N802  # mathematics keeps its letters
+    def B(self) -> Matrix:  # mathematics keeps its letters
         """Input matrix, shape (n, m)."""
         return self._B
 
     @property
-    def C(self) -> Matrix:  # noqa: N802  # mathematics keeps its letters
+    def C(self) -> Matrix:  # mathematics keeps its letters
         """Output matrix, shape (p, n)."""
         return self._C
 
     @property
-    def D(self) -> Matrix:  # noqa: N802  # mathematics keeps its letters
+    def D(self) -> Matrix:  # mathematics keeps its letters
         """Direct feedthrough, shape (p, m)."""
         return self._D
 
     @property
-    def E(self) -> None:  # noqa: N802  # mathematics keeps its letters
+    def E(self) -> None:  # mathematics keeps its letters
         """None: the model is not generalised."""
         return None
 

@@ -112,7 +112,7 @@ def test_other_global_state_is_left_alone() -> None:
     """Random states, numpy's error state, the decimal context and warning filters stay."""
     state = (
         random.getstate(),
-        pickle.dumps(np.random.get_state()),  # noqa: NPY002  # the global state is the point
+        pickle.dumps(np.random.get_state()),  # the global state is the point
         np.geterr(),
         str(decimal.getcontext()),
         list(warnings.filters),
@@ -120,7 +120,7 @@ def test_other_global_state_is_left_alone() -> None:
     everything()
     assert state == (
         random.getstate(),
-        pickle.dumps(np.random.get_state()),  # noqa: NPY002
+        pickle.dumps(np.random.get_state()),
         np.geterr(),
         str(decimal.getcontext()),
         list(warnings.filters),

@@ -12,7 +12,8 @@ import realize
 PACKAGE = Path(realize.__file__).parent
 TESTS = Path(__file__).parent.parent
 
-#: The rooms from the ground up. A module belongs to the room of its longest listed prefix.
+#: The rooms from the ground up; a module belongs to the one that its first part names. "" is the
+#: package itself, the public names, which only what is made for people may use.
 ROOMS: tuple[tuple[str, ...], ...] = (
     ("entries", "tolerance", "errors", "polynomials"),
     ("model",),
@@ -22,8 +23,8 @@ ROOMS: tuple[tuple[str, ...], ...] = (
     ("exact", "floating", "dispatch"),
     ("convert",),
     ("examination",),
-    ("cli", "demo"),
-    ("", "__main__"),
+    ("",),
+    ("cli", "demo", "__main__"),
 )
 FLOOR = {name: floor for floor, names in enumerate(ROOMS) for name in names}
 

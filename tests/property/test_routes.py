@@ -7,7 +7,7 @@ from fractions import Fraction
 import pytest
 from hypothesis import given
 
-from realize import Realization, examine, exact
+from realize import Realization, exact, examine
 from tests.helpers import remainder
 from tests.strategies import FACTORS, RATIONAL_FACTORS, Planted, planted, unstructured
 

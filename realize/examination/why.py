@@ -1,0 +1,158 @@
+"""Why a mode is hidden: by the zero pattern, or by the values."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, replace
+from fractions import Fraction
+from typing import Any, Final
+
+import numpy as np
+
+from realize import polynomials
+from realize.arithmetic.exact import OpenedExact
+from realize.arithmetic.rational import RationalMatrix
+from realize.model.realization import Realization
+from realize.polynomials import Polynomial
+from realize.results import Mode, Part
+
+__all__ = ["Coordinates", "explained"]
+
+Array = np.ndarray[Any, Any]
+
+_NEGLIGIBLE: Final = 1e-9
+"""Components of a computed vector below this share of the largest are not shown."""
+
+
+def explained(
+    modes: Iterable[Mode], opened: OpenedExact, coordinates: Coordinates | None
+) -> tuple[Mode, ...]:
+    """Return hidden modes with their reasons.
+
+    ``coordinates``: where the model examined stands in other coordinates than the user's, the way
+    back to them.
+
+    Structural: the mode belongs to states that no path of non-zero entries joins to an input (or
+    to an output), so no change of the values would show it (Lin 1974, Structural controllability,
+    IEEE Trans. Automatic Control 19, the reachability half). By value: it comes with a left
+    vector w, w A = z w and w B = 0 (or a right vector v, A v = z v and C v = 0), in named states.
+    """
+    user = opened.model if coordinates is None else coordinates.model
+    names = user.state_names
+    A, B, C = user.A != 0, user.B != 0, user.C != 0
+    unreached = _cut_off(A, B.any(axis=1))
+    unseen = _cut_off(A.T, C.any(axis=0))
+    reasons: dict[tuple[Polynomial | None, bool], tuple[Polynomial, ...]] = {}
+    found: list[Mode] = []
+    for mode in modes:
+        by_output = mode.part is Part.CONTROLLABLE_UNOBSERVABLE
+        states = unseen if by_output else unreached
+        key = (None, by_output)
+        if key not in reasons:
+            reasons[key] = () if coordinates is not None else _factors(opened.A, states)
+        if mode.polynomial in reasons[key]:
+            found.append(replace(mode, why="structural"))
+            continue
+        # Transposed, a left vector is a right one of the dual.
+        pair = (opened.A, opened.C) if by_output else (opened.A.T, opened.B.T)
+        vector = _vector(*pair, mode)
+        if coordinates is not None:
+            vector = coordinates.back(vector, by_output)
+        shown = tuple((name, value) for name, value in zip(names, vector, strict=True) if value)
+        side = "right" if by_output else "left"
+        found.append(
+            replace(mode, why=f"by value, {side} vector {_combination(shown)}", vector=shown)
+        )
+    return tuple(found)
+
+
+@dataclass(frozen=True, slots=True)
+class Coordinates:
+    """The user's model, and T with the user's state = T @ state of the model examined."""
+
+    model: Realization
+    T: Array
+
+    def back(self, vector: Sequence[Any], by_output: bool) -> Sequence[Any]:
+        """Return a right vector (by output) or a left one in the user's states."""
+        floats = np.array([complex(value) for value in vector])
+        moved = self.T @ floats if by_output else np.linalg.solve(self.T.T, floats)
+        moved = _levelled(moved)
+        return list((moved.real if not moved.imag.any() else moved).tolist())
+
+
+def _levelled(vector: Array) -> Array:
+    """Return the vector with its largest component 1 and what is rounding noise left out."""
+    vector = vector / vector[np.argmax(np.abs(vector))]
+    vector[np.abs(vector) < _NEGLIGIBLE] = 0.0
+    return vector
+
+
+def _factors(A: RationalMatrix, states: list[int]) -> tuple[Polynomial, ...]:
+    """Return the irreducible factors of the characteristic polynomial of some states alone."""
+    if not states:
+        return ()
+    block = A.take(states, states).characteristic_polynomial()
+    return tuple(factor for factor, _ in polynomials.factor(block))
+
+
+def _cut_off(pattern: Array, first: Array) -> list[int]:
+    """Return the states that no path of non-zero entries reaches from the first ones."""
+    reached = np.array(first, dtype=bool)
+    frontier = reached
+    while frontier.any():
+        frontier = pattern[:, frontier].any(axis=1) & ~reached
+        reached = reached | frontier
+    return list(np.flatnonzero(~reached).tolist())
+
+
+def _vector(A: RationalMatrix, C: RationalMatrix, mode: Mode) -> Sequence[Any]:
+    """Return v with A v = z v and C v = 0, its largest component 1.
+
+    Exact where z is rational; else computed in doubles, from the least singular value.
+    """
+    order = A.shape[0]
+    factor = mode.polynomial
+    if factor is not None and len(factor) == 2:
+        value = RationalMatrix.identity(order).scaled(-factor[1])
+        stacked = RationalMatrix.block([[A - value], [C]])
+        exact = _null_vector(stacked)
+        largest = max(exact, key=abs)
+        return [component / largest for component in exact]
+    floats = [_rounded(M) for M in (A, C)]
+    pencil = np.vstack([floats[0] - mode.value * np.eye(order), floats[1]])
+    return list(_levelled(np.linalg.svd(pencil)[2][-1].conj()).tolist())
+
+
+def _null_vector(matrix: RationalMatrix) -> list[Fraction]:
+    """Return one non-zero vector that the matrix takes to zero."""
+    reduced, rank = matrix.matrix.rref()
+    table = RationalMatrix(reduced).to_array()
+    width = matrix.shape[1]
+    pivots = [next(j for j in range(width) if table[i, j] != 0) for i in range(rank)]
+    free = next(j for j in range(width) if j not in pivots)
+    vector = [Fraction(0)] * width
+    vector[free] = Fraction(1)
+    for i, pivot in enumerate(pivots):
+        vector[pivot] = -table[i, free]
+    return vector
+
+
+def _rounded(matrix: RationalMatrix) -> Array:
+    flat = [q.numerator / q.denominator for q in matrix.to_array().ravel().tolist()]
+    return np.array(flat, dtype=float).reshape(matrix.shape)
+
+
+def _combination(shown: Sequence[tuple[str, Any]]) -> str:
+    """Return a combination of named states, the larger components first, in few words."""
+    ordered = sorted(shown, key=lambda item: -abs(item[1]))
+    terms = [f"{_number(value)} {name}" for name, value in ordered[:4]]
+    rest = len(ordered) - 4
+    return ", ".join(terms) + (f" and {rest} more" if rest > 0 else "")
+
+
+def _number(value: Any) -> str:
+    if isinstance(value, complex):
+        return f"({value.real:.3g}{value.imag:+.3g}j)"
+    text = str(value) if isinstance(value, Fraction) else ""
+    return text if text and len(text) <= 9 else f"{float(value):.4g}"
