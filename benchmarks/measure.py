@@ -83,6 +83,7 @@ def save(name: str, content: dict[str, Any]) -> Path:
 
     today = datetime.datetime.now(datetime.UTC).date().isoformat()
     record = {"date": today, "realize": realize.__version__, "environment": environment()}
+    RESULTS.mkdir(exist_ok=True)
     target = RESULTS / f"{today}-{name}.json"
     target.write_text(json.dumps(record | content, indent=2, allow_nan=False) + "\n", "ascii")
     return target

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from itertools import islice
 from typing import Any, Final
 
 import numpy as np
@@ -33,7 +34,10 @@ POLYNOMIAL_SECONDS: Final = 1.3e-9
 """The same for a characteristic polynomial."""
 
 _SMALL: Final = 16
-"""Up to this order no estimate is needed."""
+"""Up to this order no estimate is needed, and stairs are always lifted."""
+
+_STAIR_PRIMES: Final = 3
+"""How many primes the stairs of a large model are taken from where their shape leaves doubt."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,12 +69,20 @@ class ExactReach:
         self._A, self._B, self._C = A, B, C
         self._lifted = opened.lift_reached(A, B)
         self.dimension = len(self._lifted.pivots)
-        self._stairs: tuple[int, ...] | None = None
+        self._stairs: tuple[tuple[int, ...], bool] | None = None
 
     @property
     def stairs(self) -> tuple[int, ...]:
+        return self._stairs_and_proof()[0]
+
+    @property
+    def stairs_proved(self) -> bool:
+        """Whether every stair is proved, and not only their sum."""
+        return self._stairs_and_proof()[1]
+
+    def _stairs_and_proof(self) -> tuple[tuple[int, ...], bool]:
         if self._stairs is None:
-            self._stairs = self._opened.stairs(self._A, self._B, self.dimension)
+            self._stairs = self._opened.stairs(self._A, self._B, self._lifted)
         return self._stairs
 
     @property
@@ -180,7 +192,8 @@ class ExactFlag(ExactReach):
         where: str,
     ) -> None:
         super().__init__(opened, A, B, C, where)
-        self._stairs, self._frame = opened.lift_flag(A, B, C, self._lifted)
+        stairs, self._frame = opened.lift_flag(A, B, C, self._lifted)
+        self._stairs = stairs, True
 
     def frame(self) -> Frame:
         return self._frame
@@ -215,11 +228,12 @@ class OpenedExact:
         whole = _Lifted(tuple(range(order)), (), RationalMatrix.zeros(0, order), A)
         if order == 0:
             return whole
-        # A common denominator of A changes no subspace, and columns of B span the same.
-        A_integer, B_integer = A.integers()[0], B.integers()[0]
 
-        def compute(prime: int) -> tuple[tuple[Any, ...], list[int]]:
-            profile = modular.reached_rows(A_integer, B_integer, prime, self.clock)
+        def compute(prime: int) -> tuple[tuple[Any, ...], list[int]] | None:
+            A_image, B_image = A.modulo(prime), B.modulo(prime)
+            if A_image is None or B_image is None:
+                return None
+            profile = modular.reached_rows(A_image, B_image, self.clock)
             if len(profile.pivots) == order:
                 return profile.pivots, []
             return profile.pivots, _below(profile, order)
@@ -244,10 +258,12 @@ class OpenedExact:
         if rank == 0:
             one = RationalMatrix.identity(order)
             return (), Frame(basis=one, inverse=one, A=A, B=B, C=C)
-        A_integer, B_integer = A.integers()[0], B.integers()[0]
 
-        def compute(prime: int) -> tuple[tuple[Any, ...], list[int]]:
-            steps = modular.krylov_steps(A_integer, B_integer, prime, self.clock)
+        def compute(prime: int) -> tuple[tuple[Any, ...], list[int]] | None:
+            A_image, B_image = A.modulo(prime), B.modulo(prime)
+            if A_image is None or B_image is None:
+                return None
+            steps = modular.krylov_steps(A_image, B_image, self.clock)
             residues = [int(value) for step in steps for value in step.rows.entries()]
             return tuple(step.pivots for step in steps), residues
 
@@ -277,22 +293,27 @@ class OpenedExact:
         flag: tuple[tuple[int, ...], Frame] = modular.lift(compute, better, verify, self.clock)
         return flag
 
-    def stairs(self, A: RationalMatrix, B: RationalMatrix, dimension: int) -> tuple[int, ...]:
-        """Return the rank increments of [B, AB, ...], proved.
+    def stairs(
+        self, A: RationalMatrix, B: RationalMatrix, lifted: _Lifted
+    ) -> tuple[tuple[int, ...], bool]:
+        """Return the rank increments of [B, AB, ...], and whether each of them is proved.
 
         Every partial rank modulo a prime is a lower bound, and the total is proved. Where the
-        lower bounds meet what the shape allows nothing is left to prove; otherwise the stages are
-        lifted and verified.
+        lower bounds meet what the shape allows nothing is left to prove. Otherwise the stages of a
+        small model are lifted and verified; those of a large one are taken from several primes.
         """
-        inputs = B.shape[1]
-        if inputs == 1:
-            return (1,) * dimension
-        A_integer, B_integer = A.integers()[0], B.integers()[0]
-        prime = next(modular.primes())
-        stairs = modular.krylov_stairs(A_integer, B_integer, prime, self.clock)
-        if sum(stairs) == dimension and _pinned(stairs, inputs, dimension, B.rank):
-            return stairs
-        return self.lift_flag(A, B, RationalMatrix.zeros(0, A.shape[0]), self.lift_reached(A, B))[0]
+        dimension, inputs = len(lifted.pivots), B.shape[1]
+        if inputs == 1 or not dimension:
+            return (1,) * dimension, True
+        best: tuple[int, ...] = ()
+        for A_image, B_image in islice(modular.images(A, B), _STAIR_PRIMES):
+            found = modular.krylov_stairs(A_image, B_image, dimension, self.clock)
+            best = max(best, found)
+            if sum(best) == dimension and _pinned(best, inputs, dimension, B.rank):
+                return best, True
+            if A.shape[0] <= _SMALL:
+                return self.lift_flag(A, B, RationalMatrix.zeros(0, A.shape[0]), lifted)[0], True
+        return best, False
 
     def complete(self, matrix: RationalMatrix) -> Completion:
         """Complete independent columns to a basis, the columns in reduced echelon form first."""

@@ -20,15 +20,27 @@ import time
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from functools import cache
-from typing import Any
+from typing import Any, Final, Protocol
 
 from flint import fmpq, fmpz, fmpz_mat, nmod_mat
 
-from realize.errors import BudgetError
+from realize.errors import BudgetError, VerificationError
 
-__all__ = ["Clock", "Profile", "krylov_stairs", "krylov_steps", "lift", "primes", "reached_rows"]
+__all__ = [
+    "Clock",
+    "Profile",
+    "images",
+    "krylov_stairs",
+    "krylov_steps",
+    "lift",
+    "primes",
+    "reached_rows",
+]
 
-PRIME_BITS = 62
+PRIME_BITS: Final = 62
+
+_REFUSALS: Final = 8
+"""How often a lifted subspace may fail its verification; unlucky primes are far rarer."""
 
 
 @cache
@@ -45,6 +57,20 @@ def primes() -> Iterator[int]:
     while True:
         prime = _prime_below(prime)
         yield prime
+
+
+class Reducible(Protocol):
+    """A rational matrix that can be taken modulo a prime."""
+
+    def modulo(self, prime: int) -> nmod_mat | None: ...
+
+
+def images(*matrices: Reducible) -> Iterator[tuple[nmod_mat, ...]]:
+    """Yield the matrices modulo one prime after the other, primes in denominators left out."""
+    for prime in primes():
+        found = [matrix.modulo(prime) for matrix in matrices]
+        if all(image is not None for image in found):
+            yield tuple(found)
 
 
 class Clock:
@@ -144,7 +170,7 @@ def _stack(upper: nmod_mat, lower: nmod_mat) -> nmod_mat:
     )
 
 
-def reached_rows(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> Profile:
+def reached_rows(A: nmod_mat, B: nmod_mat, clock: Clock) -> Profile:
     """Return the row space of [B, AB, A^2 B, ...] transposed, modulo a prime.
 
     ``K_2t = span(K_t, A^t K_t)`` by repeated squaring of A. K_t lies in K_(t+1) lies in K_2t, so
@@ -152,12 +178,12 @@ def reached_rows(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> Profile:
 
     Parameters
     ----------
-    A : fmpz_mat (n, n)
-    B : fmpz_mat (n, m)
+    A : nmod_mat (n, n)
+    B : nmod_mat (n, m)
     """
     order = A.nrows()
-    rows, rank = _echelon(nmod_mat(B.transpose(), prime))
-    power = nmod_mat(A.transpose(), prime) if rank else None
+    rows, rank = _echelon(B.transpose())
+    power = A.transpose() if rank else None
     while power is not None and 0 < rank < order:
         clock.check("the reachable subspace modulo a prime")
         grown, grown_rank = _echelon(_stack(rows, rows * power))
@@ -169,7 +195,7 @@ def reached_rows(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> Profile:
     return Profile(rows, _pivots(rows, rank))
 
 
-def krylov_steps(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> list[Profile]:
+def krylov_steps(A: nmod_mat, B: nmod_mat, clock: Clock) -> list[Profile]:
     """Return, for each stage, a canonical basis of what the stage adds, modulo a prime.
 
     Stage t adds span[B, ..., A^t B] over span[B, ..., A^(t-1) B]. Its basis vectors vanish in
@@ -177,21 +203,25 @@ def krylov_steps(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> list[Pro
     that they can be lifted.
     """
     order = A.nrows()
-    power = nmod_mat(A.transpose(), prime)
+    power = A.transpose()
     steps: list[Profile] = []
-    pending = nmod_mat(B.transpose(), prime)
-    found = 0
+    pending = B.transpose()
+    # All stages so far, each pivot cleared from all rows but its own.
+    known: Profile | None = None
     while True:
         clock.check("the staircase modulo a prime")
-        for step in steps:
-            pending = _clear(pending, step)
+        if known is not None:
+            pending = _clear(pending, known)
         rows, rank = _echelon(pending)
         if rank == 0:
             return steps
         step = Profile(rows, _pivots(rows, rank))
         steps.append(step)
-        found += rank
-        if found == order:
+        if known is None:
+            known = step
+        else:
+            known = Profile(_stack(_clear(known.rows, step), rows), known.pivots + step.pivots)
+        if len(known.pivots) == order:
             return steps
         pending = rows * power
 
@@ -204,9 +234,31 @@ def _clear(matrix: nmod_mat, step: Profile) -> nmod_mat:
     return matrix - factors * step.rows
 
 
-def krylov_stairs(A: fmpz_mat, B: fmpz_mat, prime: int, clock: Clock) -> tuple[int, ...]:
-    """Return the rank increments of [B, AB, ...] modulo a prime, without the closing zero."""
-    return tuple(len(step.pivots) for step in krylov_steps(A, B, prime, clock))
+def krylov_stairs(A: nmod_mat, B: nmod_mat, dimension: int, clock: Clock) -> tuple[int, ...]:
+    """Return the rank increments of [B, AB, ...] modulo a prime, without the closing zero.
+
+    The pivot columns of one echelon form of [B, AB, ..., A^k B] tell how many each block adds.
+    ``dimension`` is the rank to be reached; the increments sum to less when the prime is unlucky.
+    """
+    order, inputs = B.nrows(), B.ncols()
+    if not dimension:
+        return ()
+    block = B
+    table: list[list[Any]] = [[] for _ in range(order)]
+    count, wanted = 0, -(-dimension // inputs)
+    while True:
+        clock.check("the stairs modulo a prime")
+        while count < wanted:
+            for row, values in zip(table, block.tolist(), strict=True):
+                row.extend(values)
+            block = A * block
+            count += 1
+        flat = [value for row in table for value in row]
+        echelon, rank = nmod_mat(order, count * inputs, flat, A.modulus()).rref()
+        if rank == dimension or count >= dimension:
+            blocks = [column // inputs for column in _pivots(echelon, rank)]
+            return tuple(blocks.count(k) for k in range(blocks[-1] + 1)) if blocks else ()
+        wanted = min(dimension, 2 * count)
 
 
 def _reconstruct(residue: int, modulus: int, bound: int) -> tuple[int, int] | None:
@@ -257,7 +309,7 @@ def _to_rationals(residues: list[int], modulus: int) -> list[fmpq] | None:
 
 
 def lift(
-    compute: Callable[[int], tuple[tuple[Any, ...], list[int]]],
+    compute: Callable[[int], tuple[tuple[Any, ...], list[int]] | None],
     better: Callable[[tuple[Any, ...], tuple[Any, ...]], bool],
     verify: Callable[[tuple[Any, ...], list[fmpq]], Any | None],
     clock: Clock,
@@ -267,12 +319,19 @@ def lift(
     Parameters
     ----------
     compute : callable
-        prime -> (profile, residues). Residues of different primes belong together only when the
-        profiles are equal.
+        prime -> (profile, residues), or None when the prime divides a denominator. Residues of
+        different primes belong together only when the profiles are equal.
     better : callable
         Whether the first profile is nearer the truth than the second.
     verify : callable
         (profile, rationals) -> the answer when they hold over the rationals, else None.
+
+    Raises
+    ------
+    VerificationError
+        When the verification keeps refusing what several primes agree on, which is a bug.
+    BudgetError
+        When the time is up.
 
     Notes
     -----
@@ -285,9 +344,13 @@ def lift(
     moduli: list[int] = []
     probe: list[int] = []
     expected: tuple[int, int] | None = None
+    refused = 0
     for prime in primes():
         clock.check("lifting a subspace to the rationals")
-        found, residues = compute(prime)
+        image = compute(prime)
+        if image is None:
+            continue
+        found, residues = image
         if profile is None or better(found, profile):
             profile, images, moduli, probe, expected = found, [], [], [], None
         elif found != profile:
@@ -309,4 +372,10 @@ def lift(
         answer = verify(profile, rationals)
         if answer is not None:
             return answer
+        refused += 1
+        if refused > _REFUSALS:
+            raise VerificationError(
+                f"a subspace on which several primes agree was refused {refused} times by the "
+                "verification over the rationals. This is a bug in realize; please report the model"
+            )
     raise AssertionError("the primes never end")

@@ -6,12 +6,13 @@ multiplies and adds like an array. FLINT objects stay behind it.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Sequence
 from fractions import Fraction
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
-from flint import fmpq, fmpq_mat, fmpz_mat
+from flint import fmpq, fmpq_mat, fmpz_mat, nmod_mat
 
 from realize.entries import make_fraction
 from realize.polynomials import Polynomial, from_flint
@@ -19,6 +20,9 @@ from realize.polynomials import Polynomial, from_flint
 __all__ = ["RationalMatrix"]
 
 Array = np.ndarray[Any, Any]
+
+_COMMON_BITS: Final = 4096
+"""Longest common denominator that is multiplied out; above, entries are reduced one by one."""
 
 
 def _fraction(value: fmpq) -> Fraction:
@@ -28,12 +32,13 @@ def _fraction(value: fmpq) -> Fraction:
 class RationalMatrix:
     """A matrix over the rationals, (rows, columns), immutable."""
 
-    __slots__ = ("_integer", "matrix", "shape")
+    __slots__ = ("_common", "_integer", "matrix", "shape")
 
     def __init__(self, matrix: fmpq_mat) -> None:
         self.matrix = matrix
         self.shape: tuple[int, int] = (matrix.nrows(), matrix.ncols())
-        self._integer: tuple[fmpz_mat, int] | None = None
+        self._integer: fmpz_mat | None = None
+        self._common: int | None = None
 
     @classmethod
     def from_array(cls, values: Array) -> RationalMatrix:
@@ -43,7 +48,7 @@ class RationalMatrix:
         if all(q.denominator == 1 for q in flat):
             integers = fmpz_mat(rows, columns, [q.numerator for q in flat])
             result = cls(fmpq_mat(integers))
-            result._integer = (integers, 1)
+            result._integer, result._common = integers, 1
             return result
         return cls(fmpq_mat(rows, columns, [fmpq(q.numerator, q.denominator) for q in flat]))
 
@@ -89,12 +94,40 @@ class RationalMatrix:
         result[:] = [_fraction(value) for value in self.matrix.entries()]
         return result.reshape(self.shape)
 
-    def integers(self) -> tuple[fmpz_mat, int]:
-        """Return an integer matrix and the common denominator to divide it by."""
+    def _common_denominator(self) -> int | None:
+        """Return the common denominator, or None when it is too long to multiply out.
+
+        Thousands of unrelated denominators have a common one of as many words, in every entry.
+        """
+        if self._common is None:
+            common = 1
+            for value in self.matrix.entries():
+                denominator = int(value.q)
+                if common % denominator:
+                    common = math.lcm(common, denominator)
+                    if common.bit_length() > _COMMON_BITS:
+                        common = 0
+                        break
+            self._common = common
+        return self._common or None
+
+    def modulo(self, prime: int) -> nmod_mat | None:
+        """Return the matrix modulo a prime, or None when the prime divides a denominator."""
+        common = self._common_denominator()
+        if common is None:
+            residues = []
+            for value in self.matrix.entries():
+                denominator = int(value.q) % prime
+                if not denominator:
+                    return None
+                residues.append(int(value.p) * pow(denominator, -1, prime) % prime)
+            return nmod_mat(*self.shape, residues, prime)
+        if common % prime == 0:
+            return None
         if self._integer is None:
-            numerator, denominator = self.matrix.numer_denom()
-            self._integer = (numerator, int(denominator))
-        return self._integer
+            self._integer = self.matrix.numer_denom()[0]
+        image = nmod_mat(self._integer, prime)
+        return image if common == 1 else image * pow(common, -1, prime)
 
     def take(self, rows: Iterable[int], columns: Iterable[int]) -> RationalMatrix:
         """Return the submatrix of the rows and columns named, in that order."""
@@ -114,8 +147,9 @@ class RationalMatrix:
     @property
     def T(self) -> RationalMatrix:
         result = RationalMatrix(self.matrix.transpose())
+        result._common = self._common
         if self._integer is not None:
-            result._integer = (self._integer[0].transpose(), self._integer[1])
+            result._integer = self._integer.transpose()
         return result
 
     def __matmul__(self, other: RationalMatrix) -> RationalMatrix:
@@ -137,14 +171,17 @@ class RationalMatrix:
         return RationalMatrix(self.matrix * fmpq(factor.numerator, factor.denominator))
 
     def bits(self) -> int:
-        """Return the bits of the largest numerator over the common denominator, and of that."""
-        numerators, denominator = self.integers()
-        largest = max((abs(int(value)) for value in numerators.entries()), default=0)
-        return largest.bit_length() + denominator.bit_length()
+        """Return about how long the integers are when denominators are cleared."""
+        entries = self.matrix.entries()
+        longest = max((int(value.p).bit_length() for value in entries), default=0)
+        common = self._common_denominator()
+        if common is None:
+            return longest + sum(int(value.q).bit_length() for value in entries)
+        return longest + common.bit_length()
 
     def is_zero(self) -> bool:
         """Whether every entry is zero."""
-        return not any(self.integers()[0].entries())
+        return not any(self.matrix.entries())
 
     def rank(self) -> int:
         """Return the rank."""

@@ -178,14 +178,17 @@ def _cutoffs(examination: Examination) -> str:
         return "no exact ranks to compare with."
     scale = next((d.scale for d in examination.decisions), 0.0)
     cutoff = next((d.cutoff for d in examination.decisions), 0.0)
-    texts: list[str] = []
+    grouped: dict[str, list[str]] = {}
     for reading, span in examination.cutoff_ranges.items():
         if span is None:
             conflict = "; ".join(examination.conflicts[reading])
-            texts.append(f"{reading}: no single cutoff gives the exact ranks ({conflict})")
+            text = f"no single cutoff gives the exact ranks ({conflict})"
         else:
             inside = "inside" if span[0] <= cutoff < span[1] else "OUTSIDE"
-            texts.append(f"{reading}: {span[0]:.2g} to {span[1]:.2g}, the one used is {inside}")
+            upper = "any size" if span[1] == float("inf") else f"{span[1]:.2g}"
+            text = f"{span[0]:.2g} to {upper}, the one used is {inside}"
+        grouped.setdefault(text, []).append(reading)
+    texts = [f"{', '.join(words)}: {text}" for text, words in grouped.items()]
     used = f"used {cutoff:.2g} (scale {scale:.3g}"
     used += f", default tolerance {default_tolerance(examination.order):.2g})"
     return "; ".join(texts) + f"; {used}."

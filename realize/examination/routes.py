@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from itertools import islice
 
-from flint import fmpz_mat, nmod_mat, nmod_poly
+from flint import nmod_mat, nmod_poly
 
 from realize.arithmetic import modular
 from realize.arithmetic.exact import OpenedExact
@@ -37,13 +37,11 @@ def routes(opened: OpenedExact, order: int) -> dict[str, int]:
     DisagreementError
         When the routes differ, which is a bug.
     """
-    # A common denominator of A, B or C scales time, inputs or outputs, and changes no order.
-    A, B, C = (matrix.integers()[0] for matrix in (opened.A, opened.B, opened.C))
     found = {"state": order, "polynomial": -1, "hankel": -1}
-    for prime in islice(modular.primes(), _PRIMES):
+    for A, B, C in islice(modular.images(opened.A, opened.B, opened.C), _PRIMES):
         opened.clock.check("the polynomial and Hankel routes")
-        found["polynomial"] = max(found["polynomial"], _coprime_order(A, B, C, prime))
-        found["hankel"] = max(found["hankel"], _hankel_rank(A, B, C, prime, opened.clock))
+        found["polynomial"] = max(found["polynomial"], _coprime_order(A, B, C))
+        found["hankel"] = max(found["hankel"], _hankel_rank(A, B, C, opened.clock))
         if found["polynomial"] == found["hankel"] == order:
             return found
         if max(found.values()) > order:
@@ -56,7 +54,7 @@ def routes(opened: OpenedExact, order: int) -> dict[str, int]:
     )
 
 
-def _coprime_order(A: fmpz_mat, B: fmpz_mat, C: fmpz_mat, prime: int) -> int:
+def _coprime_order(A: nmod_mat, B: nmod_mat, C: nmod_mat) -> int:
     """Return the degree of the denominator of a coprime matrix fraction, modulo a prime.
 
     Numerators come from det(s - A + b c) - det(s - A), entry by entry. The fraction
@@ -68,11 +66,11 @@ def _coprime_order(A: fmpz_mat, B: fmpz_mat, C: fmpz_mat, prime: int) -> int:
     outputs = C.nrows()
     if not order or not inputs or not outputs:
         return 0
-    state = nmod_mat(A, prime)
-    below = state.charpoly()
+    prime = A.modulus()
+    below = A.charpoly()
     columns = [nmod_mat(order, 1, [B[i, j] for i in range(order)], prime) for j in range(inputs)]
     rows = [nmod_mat(1, order, [C[i, j] for j in range(order)], prime) for i in range(outputs)]
-    table = [[(state - column * row).charpoly() - below for column in columns] for row in rows]
+    table = [[(A - column * row).charpoly() - below for column in columns] for row in rows]
     if outputs > inputs:
         table = [list(line) for line in zip(*table, strict=True)]
     size = len(table)
@@ -117,7 +115,7 @@ def _minus(
     ]
 
 
-def _hankel_rank(A: fmpz_mat, B: fmpz_mat, C: fmpz_mat, prime: int, clock: Clock) -> int:
+def _hankel_rank(A: nmod_mat, B: nmod_mat, C: nmod_mat, clock: Clock) -> int:
     """Return the rank of the block Hankel matrix of the Markov parameters, modulo a prime.
 
     n block rows and columns suffice for an order of at most n (Kalman, Falb, Arbib 1969, Topics
@@ -127,18 +125,16 @@ def _hankel_rank(A: fmpz_mat, B: fmpz_mat, C: fmpz_mat, prime: int, clock: Clock
     order, inputs, outputs = A.nrows(), B.ncols(), C.nrows()
     if not order or not inputs or not outputs:
         return 0
-    state = nmod_mat(A, prime)
-    power = nmod_mat(B, prime)
-    row = nmod_mat(C, prime)
+    power = B
     parameters: list[list[list[int]]] = []
     blocks = max(1, -(-order // min(inputs, outputs)))
     rank = -1
     while True:
         clock.check("the Hankel route")
         while len(parameters) < 2 * blocks - 1:
-            parameters.append((row * power).tolist())
-            power = state * power
-        rank = _rank_of(parameters, blocks, prime, outputs, inputs)
+            parameters.append((C * power).tolist())
+            power = A * power
+        rank = _rank_of(parameters, blocks, A.modulus(), outputs, inputs)
         if rank == order or blocks == order:
             return rank
         blocks = min(order, 2 * blocks)

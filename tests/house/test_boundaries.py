@@ -42,7 +42,7 @@ def assert_plain(thing: Any, name: str, *, rational: bool) -> int:
         if rational and isinstance(value, np.ndarray) and value.size:
             assert value.dtype == object, f"{where} holds {value.dtype}"
         if isinstance(value, Fraction):
-            assert type(value.numerator) is int and type(value.denominator) is int, where
+            assert {type(value.numerator), type(value.denominator)} == {int}, where
     return count
 
 

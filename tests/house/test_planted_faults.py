@@ -17,26 +17,39 @@ from realize.arithmetic import modular
 from realize.arithmetic.exact import ExactPath, verified
 from realize.arithmetic.modular import Profile
 from realize.arithmetic.rational import RationalMatrix
+from realize.examination import routes
 from tests.helpers import PARTS
 from tests.strategies import FACTORS, plant
 
 pytestmark = pytest.mark.filterwarnings("ignore::realize.HiddenInstabilityWarning")
 
 
-def model() -> Realization:
-    """A seeded planted model in general coordinates: six states, four reached, three visible."""
-    chain = dict(zip(PARTS, ([FACTORS[0]], FACTORS[1:4], [], [FACTORS[8]]), strict=True))
-    planted = plant(
-        [{part: tuple(factors) for part, factors in chain.items()}],
+def planted_model(sizes: tuple[tuple[int, ...], ...], channels: int) -> Realization:
+    """A seeded model in general coordinates; `sizes` picks the factors of each of the parts."""
+    chain = {
+        part: tuple(FACTORS[k] for k in picked) for part, picked in zip(PARTS, sizes, strict=True)
+    }
+    return plant(
+        [chain],
         rng=np.random.default_rng(7),
-        more_inputs=1,
-        more_outputs=1,
+        more_inputs=channels - 1,
+        more_outputs=channels - 1,
         steps=20,
         largest=2,
         scales=(Fraction(1, 7), Fraction(3)),
-    )
-    assert (planted.model.order, planted.reachable, planted.order) == (6, 4, 3)
-    return planted.model
+    ).model
+
+
+def model(channels: int = 2) -> Realization:
+    """Six states, four of them reached and three of those seen."""
+    return planted_model(((0,), (1, 2, 3), (), (8,)), channels)
+
+
+def test_the_model_is_what_it_should_be() -> None:
+    """The planted faults below meet a subspace that must be lifted, and hidden modes."""
+    found = exact.minimal(model())
+    assert (found.source_order, found.order) == (6, 3)
+    assert exact.staircase(model()).dimension == 4
 
 
 def within(seconds: float, form: Callable[..., Any], *arguments: Any) -> Any:
@@ -57,7 +70,7 @@ def spoiled(function: Callable[..., Any], spoil: Callable[[Any], Any], calls: in
 
 def test_the_verification_refuses_a_wrong_basis() -> None:
     """One entry changed anywhere in the lifted basis, and the subspace is not accepted."""
-    A, B, C, _ = model().matrices()
+    A, B, _C, _ = model().matrices()
     arrays = RationalMatrix.from_array(A), RationalMatrix.from_array(B)
     right = ExactPath().open(model()).lift_reached(*arrays)
     below = right.below.matrix
@@ -135,16 +148,67 @@ def test_a_common_factor_that_is_none_is_an_error(monkeypatch: pytest.MonkeyPatc
         exact.cancel(realize.TransferMatrix([1, 1], [1, 3, 2]))
 
 
-def test_contradicting_rank_decisions_are_an_error() -> None:
-    """With a tolerance that no model can meet the floating path never returns nonsense shapes.
-
-    Either the parts add up, or the contradiction is named.
-    """
+@pytest.mark.parametrize("tolerance", [0.0, 1e-3, 0.03, 0.1, 0.3, 1.0])
+def test_parts_add_up_or_the_contradiction_is_named(tolerance: float) -> None:
+    """At a tolerance far too coarse the floating path returns no nonsense."""
     doubles = model().to_float()
-    for tolerance in (0.0, 1e-3, 0.03, 0.1, 0.3, 1.0):
-        try:
-            found = floating.kalman_parts(doubles, tolerance=tolerance)
-        except errors.PrecisionError as error:
-            assert "tolerance" in str(error)
-            continue
-        assert sum(found.dimensions.values()) == doubles.order
+    try:
+        found = floating.kalman_parts(doubles, tolerance=tolerance)
+    except errors.PrecisionError as error:
+        said = str(error)
+    else:
+        said = f"{sum(found.dimensions.values())} states in all"
+    assert said == "6 states in all" or "contradict" in said
+
+
+@pytest.mark.parametrize("route", ["_coprime_order", "_hankel_rank"])
+@pytest.mark.parametrize("lie", [1, -1])
+def test_a_route_that_lies_is_caught(route: str, lie: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    """One route off by one, always: the examination refuses to answer and shows all three."""
+    honest = getattr(routes, route)
+    monkeypatch.setattr(routes, route, lambda *arguments: honest(*arguments) + lie)
+    with pytest.raises(errors.DisagreementError, match="bug") as caught:
+        realize.examine(model())
+    assert caught.value.answers["state"] == 3
+    assert sorted(set(caught.value.answers.values())) == sorted({3, 3 + lie})
+
+
+@pytest.mark.parametrize("route", ["_coprime_order", "_hankel_rank"])
+def test_a_route_that_falls_short_once_does_no_harm(
+    route: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """An order modulo a prime is a lower bound: one unlucky prime is made good by the next."""
+    honest = getattr(routes, route)
+    monkeypatch.setattr(routes, route, spoiled(honest, lambda order: order - 1, 1))
+    assert set(realize.examine(model()).routes["given"].values()) == {3}
+
+
+def test_a_rank_that_lies_upwards_is_caught(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A subspace claimed to be everything needs no lifting; the other routes contradict it."""
+
+    def everything(profile: Profile) -> Profile:
+        width, prime = profile.rows.ncols(), profile.rows.modulus()
+        unit = [int(i == j) for i in range(width) for j in range(width)]
+        return Profile(flint.nmod_mat(width, width, unit, prime), tuple(range(width)))
+
+    monkeypatch.setattr(modular, "reached_rows", spoiled(modular.reached_rows, everything, None))
+    with pytest.raises(errors.DisagreementError):
+        realize.examine(model(channels=1))
+
+
+def test_a_hidden_polynomial_that_does_not_divide_is_caught(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """A wrong characteristic polynomial of a hidden block does not get past the division."""
+    honest = RationalMatrix.characteristic_polynomial
+
+    def wrong(self: RationalMatrix) -> tuple[Fraction, ...]:
+        found = honest(self)
+        return (*found[:-1], found[-1] + 1) if len(found) == 4 else found
+
+    # One hidden state in each part, and one more that is not reached: three are not reached.
+    subject = planted_model(((0,), (1,), (3,), (8,)), 1)
+    realize.examine(subject)
+    monkeypatch.setattr(RationalMatrix, "characteristic_polynomial", wrong)
+    with pytest.raises(errors.VerificationError):
+        realize.examine(subject)

@@ -173,7 +173,7 @@ def test_output_feedback_of_a_coprime_fraction_hides_nothing(
 
 @given(fractions, fractions)
 def test_side_by_side_nothing_is_lost(first: PlantedFraction, second: PlantedFraction) -> None:
-    """With inputs and outputs of their own, two minimal models stay minimal, common poles or not."""
+    """With inputs and outputs of their own minimal models stay minimal, whatever their poles."""
     (A1, B1, C1, D1), (A2, B2, C2, D2) = by_hand(first), by_hand(second)
 
     def beside(left: np.ndarray, right: np.ndarray) -> np.ndarray:

@@ -7,6 +7,7 @@ to a small multiple of the rounding unit.
 
 from __future__ import annotations
 
+import itertools
 from fractions import Fraction
 
 import numpy as np
@@ -23,6 +24,7 @@ from tests.strategies import (
     fractions_with_common_factor,
     generators,
     permutation,
+    plant,
     planted_mild,
 )
 
@@ -107,12 +109,14 @@ def test_what_must_be_zero_in_the_decomposition_is_zero(case: Planted) -> None:
     """Blocks that vanish in the Kalman decomposition are exactly zero."""
     form = floating.kalman_parts(case.model.to_float())
     ends = np.cumsum([0, *(form.dimensions[part] for part in PARTS)])
-    at = [slice(a, b) for a, b in zip(ends[:-1], ends[1:], strict=True)]
+    at = [slice(a, b) for a, b in itertools.pairwise(ends)]
     A, B, C, _ = form.model.matrices()
     for row, column in ((1, 0), (1, 2), (2, 0), (2, 1), (3, 0), (3, 1), (3, 2)):
         assert not A[at[row], at[column]].any(), f"block {PARTS[row]} from {PARTS[column]}"
-    assert not B[at[2]].any() and not B[at[3]].any()
-    assert not C[:, at[0]].any() and not C[:, at[2]].any()
+    assert not B[at[2]].any()
+    assert not B[at[3]].any()
+    assert not C[:, at[0]].any()
+    assert not C[:, at[2]].any()
 
 
 @given(planted_mild())
@@ -225,6 +229,56 @@ def test_a_planted_common_factor_is_found(case: PlantedFraction) -> None:
     assert len(found.common) == len(case.common)
     assert_close(found.common, case.common, relative=1e-5)
     assert len(found.transfer.denominators[0][0]) - 1 == case.coprime_order
+
+
+#: Factors whose coefficients are decimals: their products are rounded when they become doubles.
+DECIMAL_FACTORS = tuple(
+    tuple(Fraction(c) for c in p)
+    for p in (("1", "0.5"), ("1", "-0.3"), ("1", "1.2"), ("1", "-0.6", "0.25"), ("1", "0.2", "1.3"))
+)
+
+
+@given(fractions_with_common_factor(factors=DECIMAL_FACTORS, most_common=1))
+def test_a_common_factor_is_found_through_rounded_coefficients(case: PlantedFraction) -> None:
+    """Coefficients rounded to doubles share the planted factor to rounding, and cancel it.
+
+    Also when all that is left is a gain, so that what should be zero is rounding noise.
+    """
+    source = TransferMatrix(case.numerator, case.denominator).to_float()
+    found = floating.cancel(source)
+    assert len(found.common) == len(case.common)
+    assert len(found.transfer.denominators[0][0]) - 1 == case.coprime_order
+    assert floating.minimal(source).order == case.coprime_order
+
+
+def test_noise_in_entries_that_should_be_zero_hides_no_mode() -> None:
+    """A minimal model with rounding noise where it had zeros stays minimal.
+
+    The noise is what an orthogonal reduction leaves behind. The singular values of its
+    controllability and observability matrices lie between 1/2 and 5/2: no mode is near being lost.
+    """
+    A = [
+        [-0.5, -0.7071067811865475, -0.5],
+        [-0.7071067811865470, 2.0e-16, 0.7071067811865474],
+        [1.5, -0.7071067811865476, -0.5],
+    ]
+    B = [[1.1e-16, 0.0], [1.0, 0.0], [-1.4142135623730951, 0.0]]
+    C = [[1.414213562373095, -1.6e-16, 0.0], [0.0, 0.0, 0.0], [-2.2e-16, -1.0, 0.0]]
+    assert floating.minimal(Realization(A, B, C)).order == 3
+
+
+@pytest.mark.parametrize("seed", range(40))
+def test_what_a_reduction_returns_is_minimal(seed: int) -> None:
+    """Larger seeded models: reducing what was reduced removes nothing more."""
+    rng = np.random.default_rng(seed)
+    parts = [
+        {part: tuple(FACTORS[k] for k in rng.integers(0, 9, rng.integers(0, 3))) for part in PARTS}
+        for _ in range(2)
+    ]
+    case = plant(parts, rng=rng, more_inputs=1, more_outputs=1, steps=4, largest=1)
+    first = floating.minimal(case.model.to_float())
+    assert first.order == case.order
+    assert floating.minimal(first.model).order == case.order
 
 
 @given(planted_mild())
