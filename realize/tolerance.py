@@ -24,6 +24,7 @@ __all__ = [
     "check_tolerance",
     "cutoff",
     "default_tolerance",
+    "difference",
     "rounding_floor",
 ]
 
@@ -79,6 +80,16 @@ def cutoff(order: int, scale: float, tolerance: float | None) -> float:
         The caller's tolerance; None for the default.
     """
     return (default_tolerance(order) if tolerance is None else tolerance) * scale
+
+
+def difference(first: float, second: float) -> float:
+    """Return first - second, and zero where that is within the rounding of the two numbers.
+
+    The rest of such a difference has no digit in common with what was meant, and a scaling would
+    lift it to full size.
+    """
+    value = first - second
+    return value if abs(value) > 4.0 * UNIT_ROUNDOFF * max(abs(first), abs(second)) else 0.0
 
 
 def rounding_floor(order: int, scale: float) -> float:

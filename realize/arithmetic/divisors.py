@@ -14,7 +14,7 @@ from typing import Any, Final
 
 import numpy as np
 
-__all__ = ["deconvolve", "split"]
+__all__ = ["split"]
 
 Array = np.ndarray[Any, Any]
 
@@ -62,12 +62,6 @@ def split(f: Array, g: Array, degree: int) -> tuple[Array, Array, Array, float]:
     u = np.ldexp(u * f_norm, unit * np.arange(u.size))
     v = np.ldexp(v * g_norm, unit * np.arange(v.size))
     return h, u, v, best
-
-
-def deconvolve(multiple: Array, factor: Array) -> Array:
-    """Return multiple / factor, by least squares."""
-    columns = multiple.size - factor.size + 1
-    return np.asarray(np.linalg.lstsq(_convolution(factor, columns), multiple, rcond=None)[0])
 
 
 def _variable_unit(polynomial: Array) -> int:

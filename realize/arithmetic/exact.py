@@ -354,8 +354,8 @@ class OpenedExact:
             model.D,
             kind=Kind.RATIONAL,
             sampling_period=model.sampling_period,
-            input_names=model.input_names,
-            output_names=model.output_names,
+            input_names=model._input_names,
+            output_names=model._output_names,
         )
 
     def transformation(self, basis: RationalMatrix) -> Array:
@@ -568,18 +568,22 @@ class ExactPath:
                 result[i, j] = Fraction(value)
         return result
 
-    def common_denominator(self, denominators: Sequence[Polynomial]) -> Polynomial:
+    def common_denominator(
+        self, denominators: Sequence[Polynomial]
+    ) -> tuple[Polynomial, tuple[Polynomial, ...]]:
+        """Return the least common multiple."""
+        monic = [polynomials.monic(denominator) for denominator in denominators]
         common: Polynomial = polynomials.ONE
-        for denominator in denominators:
+        for denominator in monic:
             shared = polynomials.gcd(common, denominator)
             common = polynomials.multiply(common, polynomials.divide_exact(denominator, shared))
-        return polynomials.monic(common)
+        return common, tuple(polynomials.divide_exact(common, denominator) for denominator in monic)
 
     def multiply(self, first: Polynomial, second: Polynomial) -> Polynomial:
         return polynomials.multiply(first, second)
 
-    def cofactor(self, multiple: Polynomial, factors: Polynomial) -> Polynomial:
-        return polynomials.divide_exact(multiple, factors)
+    def difference(self, first: Fraction, second: Fraction) -> Fraction:
+        return first - second
 
     def shared_factor(
         self, numerator: Polynomial, denominator: Polynomial, where: str

@@ -11,13 +11,14 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Sequence
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
 from scipy.linalg import lapack
 
 from realize import tolerance as rule
-from realize.arithmetic.divisors import deconvolve, split
+from realize.arithmetic.divisors import split
 from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor, frozen
 from realize.arithmetic.scaling import Scaling, scaling_of, unscaled
 from realize.errors import PrecisionError
@@ -31,6 +32,12 @@ Array = np.ndarray[Any, Any]
 
 _BLOCK = 32
 """Columns LAPACK works on at once, for workspace sizes."""
+
+
+@lru_cache(maxsize=32)
+def _hessenberg_mask(size: int) -> Array:
+    """Return ones where an upper Hessenberg matrix may be non-zero; cheaper than finding them."""
+    return np.asfortranarray(np.tri(size, k=1).T)
 
 
 class FloatingReach:
@@ -56,7 +63,7 @@ class FloatingReach:
         order, inputs = B.shape
         self.C_all = C
         if order == 0 or inputs == 0:
-            self.A_all, self.B_all, self.Q = A, B, np.eye(order)
+            self.A_all, self.B_all, self.Q = A.copy(), B, np.eye(order)
             self.stairs: tuple[int, ...] = ()
             self._stages: Any = []
         elif inputs == 1:
@@ -77,9 +84,9 @@ class FloatingReach:
         reduced, tau, _ = lapack.dgehrd(bordered, lwork=space, overwrite_a=1)
         pivots = np.abs(reduced.ravel(order="K")[1 :: order + 2])
         Q, _ = lapack.dorghr(reduced, tau, lwork=space)[:2]
-        hessenberg = np.triu(reduced, -1)
+        hessenberg = reduced * _hessenberg_mask(order + 1)
         if ranks is None:
-            small = np.flatnonzero(pivots <= self._opened.cutoff)
+            small = (pivots <= self._opened.cutoff).nonzero()[0]
             reach = int(small[0]) if small.size else order
         else:
             reach = sum(ranks)
@@ -267,8 +274,8 @@ class OpenedFloating:
             model.D,
             kind=Kind.FLOATING,
             sampling_period=model.sampling_period,
-            input_names=model.input_names,
-            output_names=model.output_names,
+            input_names=model._input_names,
+            output_names=model._output_names,
         )
 
     def transformation(self, basis: Array) -> Array:
@@ -396,29 +403,23 @@ class FloatingPath:
     def array(self, values: Sequence[Sequence[Any]], shape: tuple[int, int]) -> Array:
         return np.array(values, dtype=float).reshape(shape)
 
-    def common_denominator(self, denominators: Sequence[tuple[float, ...]]) -> tuple[float, ...]:
-        """Return the product of the distinct denominators, monic.
+    def common_denominator(
+        self, denominators: Sequence[tuple[float, ...]]
+    ) -> tuple[tuple[float, ...], tuple[tuple[float, ...], ...]]:
+        """Return the product of the distinct denominators.
 
         Floats have no common factors that could be relied on.
         """
-        distinct: list[Array] = []
-        for denominator in denominators:
-            monic = np.asarray(denominator) / denominator[0]
-            if not any(np.array_equal(monic, other) for other in distinct):
-                distinct.append(monic)
-        product = np.ones(1)
-        for factor in distinct:
-            product = np.convolve(product, factor)
-        return tuple(product.tolist())
+        monic = [tuple((np.asarray(d) / d[0]).tolist()) for d in denominators]
+        distinct = list(dict.fromkeys(monic))
+        cofactors = {own: _product(other for other in distinct if other != own) for own in distinct}
+        return _product(distinct), tuple(cofactors[own] for own in monic)
 
     def multiply(self, first: tuple[float, ...], second: tuple[float, ...]) -> tuple[float, ...]:
         return tuple(np.convolve(first, second).tolist())
 
-    def cofactor(
-        self, multiple: tuple[float, ...], factors: tuple[float, ...]
-    ) -> tuple[float, ...]:
-        """Return multiple / factors, by least squares."""
-        return tuple(deconvolve(np.asarray(multiple), np.asarray(factors)).tolist())
+    def difference(self, first: float, second: float) -> float:
+        return rule.difference(first, second)
 
     def shared_factor(
         self, numerator: tuple[float, ...], denominator: tuple[float, ...], where: str
@@ -472,7 +473,10 @@ class FloatingPath:
         B = np.zeros((order, 1))
         B[-1:] = 1.0
         padded = np.concatenate([np.zeros(a.size - c.size), c / a[0]])
-        C = (padded[1:] - padded[0] * (a[1:] / a[0]))[::-1][None, :]
+        strict = [
+            rule.difference(p, padded[0] * q) for p, q in zip(padded[1:], a[1:] / a[0], strict=True)
+        ]
+        C = np.array(strict)[::-1].reshape(1, order)
         model = Realization._trusted(A, B, C, np.zeros((1, 1)), kind=Kind.FLOATING)
         opened = OpenedFloating(model, self.tolerance, self.scaled)
         return opened, opened.reached(opened.A.T, opened.C.T, opened.B.T, where)
@@ -499,3 +503,10 @@ class FloatingPath:
 
         shifted = hankel_realization(parameters, self.tolerance)
         return shifted if shifted is not None else row_realization(parameters, self.tolerance)
+
+
+def _product(factors: Iterable[tuple[float, ...]]) -> tuple[float, ...]:
+    product = np.ones(1)
+    for factor in factors:
+        product = np.convolve(product, factor)
+    return tuple(product.tolist())

@@ -219,12 +219,20 @@ class Path(Protocol):
         """Return rows of entries as a model's array of this path's kind."""
         ...
 
-    def common_denominator(self, denominators: Sequence[tuple[Any, ...]]) -> tuple[Any, ...]:
-        """Return a monic polynomial that every denominator divides."""
+    def common_denominator(
+        self, denominators: Sequence[tuple[Any, ...]]
+    ) -> tuple[tuple[Any, ...], tuple[tuple[Any, ...], ...]]:
+        """Return a monic polynomial that every denominator divides, and each one's cofactor.
+
+        ``denominator * cofactor = leading coefficient * common``.
+        """
         ...
 
     def multiply(self, first: tuple[Any, ...], second: tuple[Any, ...]) -> tuple[Any, ...]: ...
-    def cofactor(self, multiple: tuple[Any, ...], factors: tuple[Any, ...]) -> tuple[Any, ...]: ...
+
+    def difference(self, first: Any, second: Any) -> Any:
+        """Return first - second; zero where that is nothing but rounding."""
+        ...
 
     def shared_factor(
         self, numerator: tuple[Any, ...], denominator: tuple[Any, ...], where: str

@@ -4,7 +4,8 @@ Every state, input and output is given a power of two as its unit, and time one 
 
 1. Breadth-first potentials on the zero pattern: the entries on the tree get exponent 0. Two models
    that differ by powers of two in their units become the same model here, bit for bit.
-2. Least squares of log2|entry| over all units, that of time included, rounded.
+2. Least squares of log2|entry| over all units, that of time included, rounded; where entries
+   differ so much that some may be rounding noise, those far below the largest are left out.
 3. Norm balancing of the states (Parlett and Reinsch 1969, Numer. Math. 13; James, Langou, Lowery
    2014 for the 2-norm), with the columns of B, the rows of C and A brought to norm 1.
 
@@ -27,6 +28,18 @@ Array = np.ndarray[Any, Any]
 
 _RIDGE: Final = 2.0**-20
 """Weight that holds the unit of time where nothing else does, far below that of one entry."""
+
+_SPREAD: Final = 26
+"""Binades within which entries are taken as they are; beyond, outliers are looked for."""
+
+_NOISE: Final = 36.0
+"""Binades below the largest entry from which an entry takes no part in the scaling."""
+
+_TRACE: Final = 1e-6
+"""Weight of an entry that is left out."""
+
+_REFITS: Final = 12
+"""Fits at most."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -69,19 +82,18 @@ def scaling_of(A: Array, B: Array, C: Array) -> Scaling:
     graph[:order, :order] = A
     graph[:order, order:first_output] = B
     graph[first_output:, :order] = C
-    units = _balanced_units(graph, order)
-    states = units[:order]
-    scaled_A = np.ldexp(A, states - states[:, None])
-    time = _exponent(scaled_A)
-    if time:
-        scaled_A = np.ldexp(scaled_A, -time)
-    scaled_B, by_input = _normalised(np.ldexp(B, units[order:first_output] - states[:, None]), 0)
-    scaled_C, by_output = _normalised(np.ldexp(C, states - units[first_output:, None]), 1)
+    units, time = _balance(graph, order)
+    scaled_A = graph[:order, :order]
+    shift = _exponent(scaled_A)
+    if shift:
+        np.ldexp(scaled_A, -shift, out=scaled_A)
+    scaled_B, by_input = _normalised(graph[:order, order:first_output], 0)
+    scaled_C, by_output = _normalised(graph[first_output:, :order], 1)
     return Scaling(
-        states,
+        units[:order],
         units[order:first_output] - by_input,
         units[first_output:] + by_output,
-        time,
+        time + shift,
         scaled_A,
         scaled_B,
         scaled_C,
@@ -89,12 +101,30 @@ def scaling_of(A: Array, B: Array, C: Array) -> Scaling:
     )
 
 
-def _balanced_units(graph: Array, order: int) -> Array:
-    """Return the exponents of the units of states, inputs and outputs."""
+def _balance(graph: Array, order: int) -> tuple[Array, int]:
+    """Scale the graph in place; return the exponents of its units, and of that of time."""
+    size = graph.shape[0]
+    # One row and column more than the graph has: the unit of time will be an unknown as well.
+    work = np.empty((size + 1, size + 1), order="F")
     mantissas, exponents = np.frexp(graph)
     pattern = mantissas != 0.0
     units, roots = _tree_potentials(pattern, exponents)
-    units = _least_squares(pattern, mantissas, exponents, units, roots, order)
+    logs = work[:size, :size]
+    np.abs(mantissas, out=logs)
+    logs[~pattern] = 1.0
+    np.log2(logs, out=logs)
+    # Whole exponents are added to the logarithms of the mantissas, so that the sums, and their
+    # rounding, do not depend on the user's units.
+    logs += exponents
+    logs += units
+    logs -= units[:, None]
+    logs *= pattern
+    noise = None
+    if max(-np.minimum.reduce(logs, None), np.maximum.reduce(logs, None)) > _SPREAD:
+        moved, noise = _robust(logs, pattern, roots, order)
+    else:
+        moved = _least_squares(work, logs, pattern, roots, order)
+    units = units + np.rint(moved[:size]).astype(np.int32)
     np.ldexp(graph, units - units[:, None], out=graph)
     # A at norm 1 while the states are balanced: its weight against B and C must not depend on
     # the unit of time.
@@ -102,23 +132,34 @@ def _balanced_units(graph: Array, order: int) -> Array:
     time = _exponent(block)
     if time:
         np.ldexp(block, -time, out=block)
-    factors = lapack.dgebal(graph, scale=1, permute=0, overwrite_a=1)[3]
-    moved: Array = np.frexp(factors)[1]
-    return units + moved - 1
+    if noise is None:
+        factors = lapack.dgebal(graph, scale=1, permute=0, overwrite_a=1)[3]
+        steps: Array = np.frexp(factors)[1] - 1
+    else:
+        clean = graph.copy(order="F")
+        clean[noise] = 0.0
+        factors = lapack.dgebal(clean, scale=1, permute=0, overwrite_a=1)[3]
+        steps = np.frexp(factors)[1] - 1
+        np.ldexp(graph, steps - steps[:, None], out=graph)
+    return units + steps, time
+
+
+def _squares(M: Array) -> float:
+    return float(np.einsum("ij,ij->", M, M))
 
 
 def _frobenius(A: Array, B: Array, C: Array) -> float:
-    return math.sqrt(np.vdot(A, A) + np.vdot(B, B) + np.vdot(C, C))
+    return math.sqrt(_squares(A) + _squares(B) + _squares(C))
 
 
 def _exponent(A: Array) -> int:
     """Return the power of two next above the Frobenius norm; 0 for a zero matrix."""
-    return math.frexp(math.sqrt(np.vdot(A, A)))[1]
+    return math.frexp(math.sqrt(_squares(A)))[1]
 
 
 def _normalised(M: Array, axis: int) -> tuple[Array, Array]:
     """Bring columns (axis 0) or rows (axis 1) to norms from 1/2 to 1, by powers of two."""
-    exponents = np.frexp(np.sqrt((M * M).sum(axis=axis)))[1]
+    exponents = np.frexp(np.sqrt(np.add.reduce(M * M, axis)))[1]
     return np.ldexp(M, -exponents if axis == 0 else -exponents[:, None]), exponents
 
 
@@ -157,44 +198,62 @@ def _tree_potentials(pattern: Array, exponents: Array) -> tuple[Array, list[int]
     return units, roots
 
 
-def _least_squares(
-    pattern: Array,
-    mantissas: Array,
-    exponents: Array,
-    units: Array,
-    roots: list[int],
-    order: int,
-) -> Array:
-    """Refine potentials by least squares of log2|entry|, rounded to integers.
+def _least_squares(work: Array, logs: Array, weights: Array, roots: list[int], order: int) -> Array:
+    """Return the changes of potentials, and of the unit of time, that bring logs nearest to 0.
 
     One unknown for each node, and one for the unit of time, which is common to all entries of A.
-    The normal equations are those of a graph Laplacian, grounded at the root of each component,
-    bordered by time; where the pattern leaves the unit of time open, the ridge settles it. The
-    whole exponents are added to the logarithms of the mantissas, so that the sums, and their
-    rounding, do not depend on the user's units.
+    The normal equations are those of a weighted graph Laplacian, grounded at the root of each
+    component, bordered by time; where the pattern leaves the unit of time open, the ridge settles
+    it.
+
+    ``logs`` are already weighted. They may lie in ``work``, which is overwritten by the normal
+    equations: for a large model, fresh memory costs more than the arithmetic.
     """
-    size = pattern.shape[0]
-    weights = pattern.astype(float)
-    logs = np.log2(np.abs(mantissas) + (1.0 - weights))
-    logs += (exponents + (units - units[:, None])) * weights
-    normal = np.empty((size + 1, size + 1), order="F")
-    laplacian = normal[:size, :size]
-    np.negative(weights + weights.T, out=laplacian)
-    # The diagonal of A says nothing about nodes: its own terms cancel here and in the sums below.
-    balance = weights.sum(axis=0) + weights.sum(axis=1)
-    diagonal = np.einsum("ii->i", laplacian)
-    diagonal += balance
-    diagonal[roots] += 1.0
-    state = weights[:order, :order]
-    border = np.zeros(size)
-    border[:order] = state.sum(axis=1) - state.sum(axis=0)
-    normal[size, :size] = normal[:size, size] = border
-    normal[size, size] = state.sum() + _RIDGE
+    size = weights.shape[0]
+    total = np.add.reduce
     right = np.empty(size + 1)
-    right[:size] = logs.sum(axis=1) - logs.sum(axis=0)
-    right[size] = logs[:order, :order].sum()
-    solution, info = lapack.dposv(normal, right, lower=1, overwrite_a=1)[1:]
+    np.subtract(total(logs, 1), total(logs, 0), out=right[:size])
+    right[size] = total(total(logs[:order, :order], 0))
+    laplacian = work[:size, :size]
+    np.add(weights, weights.T, out=laplacian, dtype=float)
+    degrees = total(laplacian, 0)
+    np.negative(laplacian, out=laplacian)
+    # The diagonal of A says nothing about nodes: its own terms cancel here and in the sums above.
+    diagonal = work.ravel(order="K")[:: size + 2]
+    diagonal[:size] += degrees
+    for root in roots:
+        diagonal[root] += 1.0
+    state = weights[:order, :order]
+    to_state = total(state, 1, dtype=float)
+    work[size] = 0.0
+    work[size, :order] = to_state - total(state, 0, dtype=float)
+    work[:, size] = work[size]
+    work[size, size] = total(to_state) + _RIDGE
+    solution, info = lapack.dposv(work, right, lower=1, overwrite_a=1)[1:]
     if info:  # pragma: no cover  # the ridge and the grounds make it positive definite
         raise AssertionError(f"normal equations not positive definite (info {info})")
-    steps: Array = np.rint(solution[:size]).astype(np.int32)
-    return units + steps
+    return np.asarray(solution)
+
+
+def _robust(logs: Array, pattern: Array, roots: list[int], order: int) -> tuple[Array, Array]:
+    """Return the same changes with noise left out, and which entries are noise.
+
+    Rounding leaves entries of 1e-16 where zeros were meant. As terms of least squares they would
+    bend every unit. Entries that come out far below the largest are left out and the rest is
+    fitted again, until nothing more changes; that does not depend on the user's units either.
+    """
+    size = logs.shape[0]
+    work = np.empty((size + 1, size + 1), order="F")
+    noise = np.zeros(pattern.shape, dtype=bool)
+    moved = np.zeros(size + 1)
+    for _ in range(_REFITS):
+        # What is left out keeps a trace of weight, so that every unit stays determined.
+        weights = np.where(noise, _TRACE, 1.0) * pattern
+        moved = _least_squares(work, logs * weights, weights, roots, order)
+        residual = logs + moved[:size] - moved[:size, None]
+        residual[:order, :order] -= moved[size]
+        found = (residual < residual[pattern].max() - _NOISE) & pattern
+        if np.array_equal(found, noise):
+            break
+        noise = found
+    return moved, noise

@@ -15,7 +15,13 @@ import numpy as np
 from realize.arithmetic.floating import FloatingPath, OpenedFloating
 from realize.arithmetic.modular import Clock
 from realize.entries import Reading, is_simple, known_word
-from realize.errors import BudgetError, NotBuiltError, UnknownWordError, UnsupportedEntryError
+from realize.errors import (
+    BudgetError,
+    NotBuiltError,
+    PrecisionError,
+    UnknownWordError,
+    UnsupportedEntryError,
+)
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
 from realize.forms.kalman import decompose, reach_and_see
@@ -336,7 +342,7 @@ def examine(
         word: Replay.of(floating.opened, found.stairs, floating.run)
         for word, found in exact.items()
     }
-    answer, about, nearest = _answer(model, exact, orders, floating, budget)
+    answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
     stabilizable, detectable = _stabilities(about, floating)
     stairs = {word: found.stairs for word, found in exact.items()}
     return Examination(
@@ -355,7 +361,7 @@ def examine(
         cutoff_ranges={word: replay.interval for word, replay in replays.items()},
         conflicts={word: replay.conflicts for word, replay in replays.items()},
         routes={word: found.routes for word, found in exact.items()},
-        not_done=not_done,
+        not_done=tuple(not_done),
         seconds={"floating": floating.seconds, "exact": exact_seconds},
         _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
         _hidden=Deferred(
@@ -388,8 +394,16 @@ class _Floating:
         return self.run[0].decisions() + self.run[1].decisions()
 
     def hidden_modes(self) -> tuple[Mode, ...]:
-        parts = decompose(self.opened, *self.run)
-        return self.opened.modes(parts.hidden_blocks())
+        reach, sight = self.run
+        try:
+            blocks = decompose(self.opened, reach, sight).hidden_blocks()
+        except PrecisionError:
+            # At this tolerance what is not reached cannot be split by what is seen of it.
+            blocks = [
+                (Part.CONTROLLABLE_UNOBSERVABLE, sight.quotient()),
+                (Part.UNCONTROLLABLE_UNOBSERVABLE, reach.quotient()),
+            ]
+        return self.opened.modes(blocks)
 
     def visible_modes(self) -> tuple[Mode, ...]:
         return self.opened.modes([(Part.CONTROLLABLE_OBSERVABLE, self.run[1].A.T)])
@@ -439,7 +453,7 @@ def _check_budget(budget: float | None) -> None:
 
 def _exact_answers(
     model: Realization, words: Sequence[Reading], budget: float | None
-) -> tuple[dict[str, ExactAnswer], tuple[str, ...], float]:
+) -> tuple[dict[str, ExactAnswer], list[str], float]:
     """Return reading -> exact answer; readings that give one model share one answer."""
     began = time.perf_counter()
     clock = Clock(budget)
@@ -464,7 +478,7 @@ def _exact_answers(
                     )
         except BudgetError as error:
             not_done.append(f"the exact path did not run on the reading {word}: {error}")
-    return found, tuple(not_done), time.perf_counter() - began
+    return found, not_done, time.perf_counter() - began
 
 
 def _answer(
@@ -473,6 +487,7 @@ def _answer(
     orders: dict[str, int],
     floating: _Floating,
     budget: float | None,
+    not_done: list[str],
 ) -> tuple[Answer, ExactAnswer | None, Nearest | None]:
     """Return the answer, the exact answer it rests on, and the nearest model of lower order."""
     if not exact:
@@ -485,8 +500,10 @@ def _answer(
     answer, about = Answer(order=orders[best], basis=best), exact[best]
     if floating.order >= answer.order:
         return answer, about, None
-    nearest, near = nearest_of(floating.opened, floating.run, Clock(budget))
-    if nearest is None or near is None:
+    try:
+        nearest, near = nearest_of(floating.opened, floating.run, Clock(budget))
+    except (BudgetError, PrecisionError) as error:
+        not_done.append(f"the nearest model of lower order was not formed: {error}")
         return answer, about, None
     floor = rounding_floor(model.order, 1.0)
     if model.kind == Kind.FLOATING and nearest.relative_distance <= floor:

@@ -18,7 +18,6 @@ from realize.arithmetic.floating import FloatingReach, OpenedFloating
 from realize.arithmetic.modular import Clock
 from realize.arithmetic.rational import RationalMatrix
 from realize.entries import Reading
-from realize.errors import BudgetError
 from realize.examination.pairing import ExactAnswer
 from realize.examination.why import Coordinates
 from realize.forms.kalman import decompose, reach_and_see
@@ -62,17 +61,19 @@ class Nearest:
 
 def nearest_of(
     opened: OpenedFloating, run: tuple[FloatingReach, FloatingReach], clock: Clock
-) -> tuple[Nearest | None, ExactAnswer | None]:
+) -> tuple[Nearest, ExactAnswer]:
     """Return the nearby model that the floating reduction reduces exactly, and what it hides.
 
-    None where the exact path has no time left for it.
+    Raises
+    ------
+    BudgetError
+        When the exact path has no time left for it.
+    PrecisionError
+        When the rank decisions of the floating path contradict each other.
     """
     shaped, T = _shaped(opened, run)
-    try:
-        answer = ExactAnswer(shaped.read(Reading.STORED), clock, Coordinates(opened.model, T))
-        answer.find_hidden()
-    except BudgetError:
-        return None, None
+    answer = ExactAnswer(shaped.read(Reading.STORED), clock, Coordinates(opened.model, T))
+    answer.find_hidden()
     user = opened.model
     exact_T = _exact(T)
     # With R = A T - T A', the change of A is R T^-1; R is formed exactly, because it is all

@@ -37,20 +37,14 @@ def explained(
     IEEE Trans. Automatic Control 19, the reachability half). By value: it comes with a left
     vector w, w A = z w and w B = 0 (or a right vector v, A v = z v and C v = 0), in named states.
     """
+    modes = tuple(modes)
     user = opened.model if coordinates is None else coordinates.model
     names = user.state_names
-    A, B, C = user.A != 0, user.B != 0, user.C != 0
-    unreached = _cut_off(A, B.any(axis=1))
-    unseen = _cut_off(A.T, C.any(axis=0))
-    reasons: dict[tuple[Polynomial | None, bool], tuple[Polynomial, ...]] = {}
+    structural = () if coordinates is not None else _structural(modes, opened)
     found: list[Mode] = []
     for mode in modes:
         by_output = mode.part is Part.CONTROLLABLE_UNOBSERVABLE
-        states = unseen if by_output else unreached
-        key = (None, by_output)
-        if key not in reasons:
-            reasons[key] = () if coordinates is not None else _factors(opened.A, states)
-        if mode.polynomial in reasons[key]:
+        if (mode.part, mode.polynomial) in structural:
             found.append(replace(mode, why="structural"))
             continue
         # Transposed, a left vector is a right one of the dual.
@@ -88,12 +82,36 @@ def _levelled(vector: Array) -> Array:
     return vector
 
 
-def _factors(A: RationalMatrix, states: list[int]) -> tuple[Polynomial, ...]:
-    """Return the irreducible factors of the characteristic polynomial of some states alone."""
-    if not states:
-        return ()
-    block = A.take(states, states).characteristic_polynomial()
-    return tuple(factor for factor, _ in polynomials.factor(block))
+def _structural(modes: Sequence[Mode], opened: OpenedExact) -> set[tuple[Part, Polynomial | None]]:
+    """Return the parts and factors whose modes the zero pattern alone hides.
+
+    The states cut off from the inputs (the outputs; both) hold some copies of a factor. When those
+    are all the copies that are not controllable (not observable; neither), no other copy could be
+    meant.
+    """
+    model = opened.model
+    A, B, C = model.A != 0, model.B != 0, model.C != 0
+    unreached, unseen = _cut_off(A, B.any(axis=1)), _cut_off(A.T, C.any(axis=0))
+    neither = Part.UNCONTROLLABLE_UNOBSERVABLE
+    found: set[tuple[Part, Polynomial | None]] = set()
+    for states, parts in (
+        (unreached, (Part.UNCONTROLLABLE_OBSERVABLE, neither)),
+        (unseen, (Part.CONTROLLABLE_UNOBSERVABLE, neither)),
+        ([i for i in unreached if i in set(unseen)], (neither,)),
+    ):
+        if not states:
+            continue
+        block = opened.A.take(states, states).characteristic_polynomial()
+        for factor, copies in polynomials.factor(block):
+            # Every root of a factor is a mode of its own; one root of each part tells how many.
+            hidden = {
+                mode.part: mode.multiplicity
+                for mode in modes
+                if mode.part in parts and mode.polynomial == factor
+            }
+            if sum(hidden.values()) <= copies:
+                found |= {(part, factor) for part in hidden}
+    return found
 
 
 def _cut_off(pattern: Array, first: Array) -> list[int]:

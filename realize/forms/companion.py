@@ -48,16 +48,20 @@ def realize_transfer(path: Path, transfer: TransferMatrix) -> Realization:
     """
     transfer = path.admit(transfer)
     turned = transfer.dual()
-    columns = sum(len(d) - 1 for d in _column_denominators(path, transfer))
-    rows = sum(len(d) - 1 for d in _column_denominators(path, turned))
+    columns = sum(len(below) - 1 for below, _ in _column_denominators(path, transfer))
+    rows = sum(len(below) - 1 for below, _ in _column_denominators(path, turned))
     if rows < columns:
         return _by_columns(path, turned).dual()
     return _by_columns(path, transfer)
 
 
-def _column_denominators(path: Path, transfer: TransferMatrix) -> list[tuple[Any, ...]]:
+def _column_denominators(
+    path: Path, transfer: TransferMatrix
+) -> list[tuple[tuple[Any, ...], tuple[tuple[Any, ...], ...]]]:
+    """Return, for each input, the common denominator and the cofactor of each entry's own."""
+    outputs = range(transfer.output_count)
     return [
-        path.common_denominator([transfer.denominators[i][j] for i in range(transfer.output_count)])
+        path.common_denominator([transfer.denominators[i][j] for i in outputs])
         for j in range(transfer.input_count)
     ]
 
@@ -65,15 +69,15 @@ def _column_denominators(path: Path, transfer: TransferMatrix) -> list[tuple[Any
 def _by_columns(path: Path, transfer: TransferMatrix) -> Realization:
     """Realize every column in controllable companion form over its common denominator."""
     inputs, outputs = transfer.input_count, transfer.output_count
-    denominators = _column_denominators(path, transfer)
-    sizes = [len(d) - 1 for d in denominators]
+    columns = _column_denominators(path, transfer)
+    sizes = [len(below) - 1 for below, _ in columns]
     order = sum(sizes)
     starts = [0, *accumulate(sizes)]
     A: list[list[Any]] = [[0] * order for _ in range(order)]
     B: list[list[Any]] = [[0] * inputs for _ in range(order)]
     C: list[list[Any]] = [[0] * order for _ in range(outputs)]
     D: list[list[Any]] = [[0] * inputs for _ in range(outputs)]
-    for j, below in enumerate(denominators):
+    for j, (below, cofactors) in enumerate(columns):
         size, start = sizes[j], starts[j]
         for k in range(size - 1):
             A[start + k][start + k + 1] = 1
@@ -82,11 +86,11 @@ def _by_columns(path: Path, transfer: TransferMatrix) -> Realization:
         if size:
             B[start + size - 1][j] = 1
         for i in range(outputs):
-            above = _over(path, transfer, i, j, below)
+            above = _over(path, transfer, i, j, cofactors[i], len(below))
             D[i][j] = above[0]
             for k in range(size):
                 # The feedthrough times the denominator leaves the strictly proper part.
-                C[i][start + k] = above[size - k] - above[0] * below[size - k]
+                C[i][start + k] = path.difference(above[size - k], above[0] * below[size - k])
     return Realization._trusted(
         path.array(A, (order, order)),
         path.array(B, (order, inputs)),
@@ -100,7 +104,7 @@ def _by_columns(path: Path, transfer: TransferMatrix) -> Realization:
 
 
 def _over(
-    path: Path, transfer: TransferMatrix, i: int, j: int, below: tuple[Any, ...]
+    path: Path, transfer: TransferMatrix, i: int, j: int, cofactor: tuple[Any, ...], length: int
 ) -> Sequence[Any]:
     """Return an entry's numerator over the common denominator, padded to its length."""
     own = transfer.denominators[i][j]
@@ -111,10 +115,5 @@ def _over(
             f"{len(above) - 1} over a denominator of degree {len(own) - 1}. A realization has no "
             "such transfer function; divide out the polynomial part first"
         )
-    lead = own[0]
-    if len(own) == len(below):
-        widened = tuple(value / lead for value in above)
-    else:
-        monic = tuple(value / lead for value in own)
-        widened = path.multiply(tuple(value / lead for value in above), path.cofactor(below, monic))
-    return [0] * (len(below) - len(widened)) + list(widened)
+    widened = path.multiply(tuple(value / own[0] for value in above), cofactor)
+    return [0] * (length - len(widened)) + list(widened)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 
 import realize
@@ -132,6 +132,7 @@ def test_companion_forms_agree(case: PlantedFraction, side: str) -> None:
 
 
 @given(transfer_matrices().filter(lambda t: t.input_count == 1 or t.output_count == 1))
+@example(TransferMatrix([[[1, 0, 1], ["2/7", "6/7"]]], [[[1, 0, 1], [1, 4, 2, -5, -8, -6]]]))
 def test_companion_forms_of_rows_and_columns_agree(source: TransferMatrix) -> None:
     """For a row or a column both faces have the Markov parameters of the source.
 

@@ -187,7 +187,8 @@ def test_parts_of_a_rational_model() -> None:
     assert found.minimal_order == {"given": 1}
     assert (found.floating_order, found.unscaled_order) == (1, 1)
     assert (found.answer.order, found.answer.basis) == (1, "given")
-    assert found.paths_agree and found.readings_agree
+    assert found.paths_agree
+    assert found.readings_agree
     planted = {
         CONTROLLABLE_UNOBSERVABLE: (F(1), F(1)),
         CONTROLLABLE_OBSERVABLE: (F(1), F(2)),
@@ -417,7 +418,8 @@ def test_conflicting_stages_are_named() -> None:
     keep, drop = found.conflicts["given"]
     kept = re.fullmatch(r"reached, stage 2: must keep (\S+)", keep)
     dropped = re.fullmatch(r"reached, stage 3: must drop (\S+)", drop)
-    assert kept and dropped
+    assert kept is not None
+    assert dropped is not None
     assert 0 < float(kept[1]) < float(dropped[1])
     words = " ".join(str(found).split())
     assert f"no single cutoff gives the exact ranks ({keep}; {drop})" in words
