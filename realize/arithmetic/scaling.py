@@ -35,6 +35,12 @@ _SPREAD: Final = 26
 _NOISE: Final = 36.0
 """Binades below the largest entry from which an entry takes no part in the scaling."""
 
+_TYPICAL: Final = 8.0
+"""Binades by which entries of a well scaled model may differ; a misfit counts no more than this."""
+
+_CLEARLY: Final = 0.5
+"""Share of the other misfit at which a misfit is clearly the smaller one."""
+
 _TRACE: Final = 1e-6
 """Weight of an entry that is left out."""
 
@@ -121,7 +127,7 @@ def _balance(graph: Array, order: int) -> tuple[Array, int]:
     logs *= pattern
     noise = None
     if max(-np.minimum.reduce(logs, None), np.maximum.reduce(logs, None)) > _SPREAD:
-        moved, noise = _robust(logs, pattern, roots, order)
+        moved, noise = _robust(logs, units, pattern, roots, order)
     else:
         moved = _least_squares(work, logs, pattern, roots, order)
     units = units + np.rint(moved[:size]).astype(np.int32)
@@ -235,17 +241,38 @@ def _least_squares(work: Array, logs: Array, weights: Array, roots: list[int], o
     return np.asarray(solution)
 
 
-def _robust(logs: Array, pattern: Array, roots: list[int], order: int) -> tuple[Array, Array]:
+def _robust(
+    logs: Array, units: Array, pattern: Array, roots: list[int], order: int
+) -> tuple[Array, Array]:
     """Return the same changes with noise left out, and which entries are noise.
 
     Rounding leaves entries of 1e-16 where zeros were meant. As terms of least squares they would
     bend every unit. Entries that come out far below the largest are left out and the rest is
-    fitted again, until nothing more changes; that does not depend on the user's units either.
+    fitted again, until nothing more changes. There are two starts: nothing left out, which does
+    not depend on the user's units; and what is far below its neighbours in the user's units, which
+    finds the noise where it outnumbers the rest. The pattern alone cannot always tell which of two
+    entries is noise, so the second is taken unless the first leaves the entries clearly nearer
+    each other.
     """
     size = logs.shape[0]
+    given = logs + units[:, None] - units
+    given[~pattern] = -np.inf
+    far = given < given.max(axis=0) - _NOISE
+    far[order:] = given[order:] < given[order:].max(axis=1, initial=-np.inf)[:, None] - _NOISE
+    far[:order, :order] = (
+        given[:order, :order] < given[:order, :order].max(initial=-np.inf) - _NOISE
+    )
+    free = _refitted(logs, pattern, np.zeros((size, size), dtype=bool), roots, order)
+    near = _refitted(logs, pattern, far & pattern, roots, order)
+    return (free if free[2] < _CLEARLY * near[2] else near)[:2]
+
+
+def _refitted(
+    logs: Array, pattern: Array, noise: Array, roots: list[int], order: int
+) -> tuple[Array, Array, float]:
+    """Return changes, noise and misfit, from a first guess at the noise."""
+    size = logs.shape[0]
     work = np.empty((size + 1, size + 1), order="F")
-    noise = np.zeros(pattern.shape, dtype=bool)
-    moved = np.zeros(size + 1)
     for _ in range(_REFITS):
         # What is left out keeps a trace of weight, so that every unit stays determined.
         weights = np.where(noise, _TRACE, 1.0) * pattern
@@ -256,4 +283,5 @@ def _robust(logs: Array, pattern: Array, roots: list[int], order: int) -> tuple[
         if np.array_equal(found, noise):
             break
         noise = found
-    return moved, noise
+    misfit = float(np.minimum(np.abs(residual[pattern]), _TYPICAL).sum())
+    return moved, noise, misfit

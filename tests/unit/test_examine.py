@@ -112,7 +112,7 @@ def rotated() -> Realization:
     """-1, -2, -3 and a growing 1/2 that is not reached, in orthogonal coordinates in doubles."""
     Q = np.linalg.qr(np.random.default_rng(7).standard_normal((4, 4)))[0]
     A, B, C = np.diag([-1.0, -2.0, -3.0, 0.5]), np.array([[1.0], [1], [1], [0]]), np.ones((1, 4))
-    return Realization(Q.T @ A @ Q, Q.T @ B, C @ Q)
+    return Realization(Q.T @ A @ Q, Q.T @ B, C @ Q, [[0.3]])
 
 
 def lone_gain() -> Realization:
@@ -399,7 +399,7 @@ def test_the_range_comes_from_a_replay() -> None:
     span = found.cutoff_ranges["given"]
     assert span is not None
     assert found.conflicts == {"given": ()}
-    assert span[1] == pytest.approx(second.largest_dropped)
+    assert span[1] == pytest.approx(second.largest_dropped, rel=1e-9, abs=0)
     assert not span[0] <= second.cutoff < span[1]
     assert floating.minimal(model, tolerance=0.5 * span[1] / second.scale).order == 2
     assert "OUTSIDE" in str(found)
@@ -486,6 +486,7 @@ def distance(first: Realization, second: Realization) -> float:
     ("model", "reading", "order"),
     [
         pytest.param(rotated(), "stored", 3, id="rotated"),
+        pytest.param(rotated().dual(), "stored", 3, id="rotated, not seen"),
         pytest.param(diagonal(-0.3, -(0.1 + 0.2)), "stored", 1, id="one unit of rounding"),
         pytest.param(diagonal(-1, -1 - F(1, 10**11)), "given", 1, id="rational"),
         pytest.param(two_by_two().to_float(), "stored", 3, id="two inputs"),
@@ -502,7 +503,7 @@ def test_the_nearest_model_is_what_it_says(model: Realization, reading: str, ord
     rational = model.read(reading)
     assert exact.minimal(rational).order > order
     measured = distance(rational, witness)
-    assert nearest.relative_distance == pytest.approx(measured, rel=1e-6)
+    assert nearest.relative_distance == pytest.approx(measured, rel=1e-6, abs=0)
     assert 0 < measured < 1e-10
     assert (witness.D == rational.D).all()
     assert witness.state_names == model.state_names
@@ -528,6 +529,22 @@ def test_an_unstable_mode_hidden_within_rounding_is_named() -> None:
     vector = np.array([dict(mode.vector)[f"x{i}"] for i in range(1, 5)])
     row = Q[3] / Q[3][np.argmax(np.abs(Q[3]))]
     assert vector == pytest.approx(row, abs=1e-9)
+
+
+def test_the_distance_of_a_rational_model_is_its_own() -> None:
+    """Modes 1e-16 apart are one double: the distance is that of the fractions, and not zero.
+
+    However small it is, a model that is given exactly is what it says, and its order leads.
+    """
+    model = diagonal(-1, -1 - F(1, 10**16), D=[["1/3"]])
+    found = examine(model)
+    assert (found.answer.order, found.answer.basis) == (2, "given")
+    assert found.nearest is not None
+    assert found.nearest.order == 1
+    assert found.nearest.witness.D == model.D
+    measured = distance(model, found.nearest.witness)
+    assert measured > 0
+    assert found.nearest.relative_distance == pytest.approx(measured, rel=1e-6, abs=0)
 
 
 def test_a_distant_model_does_not_lead() -> None:
@@ -884,6 +901,8 @@ def test_the_digest() -> None:
     assert re.fullmatch(r"[0-9a-f]{64}", digest)
     assert digest == examine(four_parts()).digest
     assert digest != examine(four_parts().dual()).digest
+    A, B, C, D = four_parts().matrices()
+    assert digest != examine(Realization(A, B, 2 * C, D)).digest
     assert digest != examine(four_parts().to_float()).digest
 
 
