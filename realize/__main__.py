@@ -7,7 +7,8 @@ try:
 except ModuleNotFoundError as error:
     if error.name not in ("click", "rich"):
         raise
-    sys.exit(f"realize: the command line needs {error.name}; install realize[cli]")
+    print(f"realize: the command line needs {error.name}; install realize[cli]", file=sys.stderr)
+    sys.exit(2)
 
 if __name__ == "__main__":
     main(prog_name="realize")

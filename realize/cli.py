@@ -7,6 +7,7 @@ Data go to stdout, messages to stderr. Exit statuses: 0 clean; 1 findings; 2 usa
 from __future__ import annotations
 
 import json
+import os
 import sys
 from typing import Any, NoReturn
 
@@ -47,6 +48,10 @@ class _Commands(click.Group):
     def invoke(self, ctx: click.Context) -> Any:
         try:
             return super().invoke(ctx)
+        except BrokenPipeError:
+            # Whoever read the output has had enough; that is no error, and nothing is left to say.
+            sys.stdout = open(os.devnull, "w")  # noqa: SIM115  # closed when the process ends
+            sys.exit(0)
         except (RealizeError, OSError) as error:
             _fail(str(error))
 

@@ -501,7 +501,7 @@ def _answer(
     if floating.order >= answer.order:
         return answer, about, None
     try:
-        nearest, near = nearest_of(floating.opened, floating.run, Clock(budget))
+        nearest, near = nearest_of(model, floating.opened, floating.run, Clock(budget))
     except (BudgetError, PrecisionError) as error:
         not_done.append(f"the nearest model of lower order was not formed: {error}")
         return answer, about, None

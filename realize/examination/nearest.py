@@ -60,9 +60,14 @@ class Nearest:
 
 
 def nearest_of(
-    opened: OpenedFloating, run: tuple[FloatingReach, FloatingReach], clock: Clock
+    user: Realization,
+    opened: OpenedFloating,
+    run: tuple[FloatingReach, FloatingReach],
+    clock: Clock,
 ) -> tuple[Nearest, ExactAnswer]:
     """Return the nearby model that the floating reduction reduces exactly, and what it hides.
+
+    The distance is from the user's model as stored, or as given; ``opened`` is its rounded copy.
 
     Raises
     ------
@@ -74,20 +79,23 @@ def nearest_of(
     shaped, T = _shaped(opened, run)
     answer = ExactAnswer(shaped.read(Reading.STORED), clock, Coordinates(opened.model, T))
     answer.find_hidden()
-    user = opened.model
+    rational = user if user.kind == Kind.RATIONAL else user.read(Reading.STORED)
+    own_A, own_B, own_C = (
+        RationalMatrix.from_array(M) for M in (rational.A, rational.B, rational.C)
+    )
     exact_T = _exact(T)
     # With R = A T - T A', the change of A is R T^-1; R is formed exactly, because it is all
     # cancellation, and a double is enough for the rest.
-    residual_A = _rounded(_exact(user.A) @ exact_T - exact_T @ _exact(shaped.A))
-    residual_B = _rounded(_exact(user.B) - exact_T @ _exact(shaped.B))
-    residual_C = _rounded(_exact(user.C) @ exact_T - _exact(shaped.C))
+    residual_A = _rounded(own_A @ exact_T - exact_T @ _exact(shaped.A))
+    residual_B = _rounded(own_B - exact_T @ _exact(shaped.B))
+    residual_C = _rounded(own_C @ exact_T - _exact(shaped.C))
     T_inverse = np.linalg.inv(T)
     change = math.hypot(
         float(np.linalg.norm(residual_A @ T_inverse)),
         float(np.linalg.norm(residual_B)),
         float(np.linalg.norm(residual_C @ T_inverse)),
     )
-    size = math.hypot(*(float(np.linalg.norm(M)) for M in (user.A, user.B, user.C)))
+    size = math.hypot(*(float(np.linalg.norm(M)) for M in opened.model.matrices()[:3]))
 
     def witness() -> Realization:
         inverse = RationalMatrix(exact_T.matrix.inv())
@@ -95,9 +103,9 @@ def nearest_of(
             (exact_T @ _exact(shaped.A) @ inverse).to_array(),
             (exact_T @ _exact(shaped.B)).to_array(),
             (_exact(shaped.C) @ inverse).to_array(),
-            user.read(Reading.STORED).D,
+            rational.D,
             kind=Kind.RATIONAL,
-            sampling_period=answer.model.sampling_period,
+            sampling_period=rational.sampling_period,
             state_names=user.state_names,
             input_names=user.input_names,
             output_names=user.output_names,

@@ -58,7 +58,6 @@ def _field(label: str, text: str) -> list[str]:
         WIDTH,
         initial_indent=f"{label:<{_MARGIN}}",
         subsequent_indent=" " * _MARGIN,
-        break_long_words=False,
         break_on_hyphens=False,
     )
 
