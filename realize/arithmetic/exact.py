@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from itertools import islice
 from typing import Any, Final
@@ -48,6 +48,7 @@ class _Lifted:
     others: tuple[int, ...]
     below: RationalMatrix  # the non-pivot rows of the basis, (n - r, r)
     A: RationalMatrix
+    stairs: tuple[int, ...] = ()  # rank increments, the largest of all primes
 
 
 class ExactReach:
@@ -222,9 +223,7 @@ class OpenedExact:
     def lift_reached(self, A: RationalMatrix, B: RationalMatrix) -> _Lifted:
         """Return the reachable subspace, verified over the rationals."""
         order = A.shape[0]
-        self.clock.afford(
-            PRODUCT_SECONDS * order**3 * 2 * max(order.bit_length(), 1), "the reachable subspace"
-        )
+        self.clock.afford(4 * PRODUCT_SECONDS * order**3, "the reachable subspace")
         whole = _Lifted(tuple(range(order)), (), RationalMatrix.zeros(0, order), A)
         if order == 0:
             return whole
@@ -234,6 +233,7 @@ class OpenedExact:
             if A_image is None or B_image is None:
                 return None
             profile = modular.reached_rows(A_image, B_image, self.clock)
+            stairs.append(profile.stairs)
             if len(profile.pivots) == order:
                 return profile.pivots, []
             return profile.pivots, _below(profile, order)
@@ -241,12 +241,14 @@ class OpenedExact:
         def verify(pivots: tuple[Any, ...], values: list[fmpq]) -> _Lifted | None:
             rank = len(pivots)
             if rank == order:
-                return whole
+                return replace(whole, stairs=max(stairs))
             kept = set(pivots)
             others = tuple(i for i in range(order) if i not in kept)
             below = RationalMatrix.from_entries(order - rank, rank, values)
-            return verified(A, B, pivots, others, below)
+            found = verified(A, B, pivots, others, below)
+            return None if found is None else replace(found, stairs=max(stairs))
 
+        stairs: list[tuple[int, ...]] = []
         lifted: _Lifted = modular.lift(compute, _better, verify, self.clock)
         return lifted
 
@@ -305,15 +307,13 @@ class OpenedExact:
         dimension, inputs = len(lifted.pivots), B.shape[1]
         if inputs == 1 or not dimension:
             return (1,) * dimension, True
-        best: tuple[int, ...] = ()
-        for A_image, B_image in islice(modular.images(A, B), _STAIR_PRIMES):
-            found = modular.krylov_stairs(A_image, B_image, dimension, self.clock)
-            best = max(best, found)
-            if sum(best) == dimension and _pinned(best, inputs, dimension, B.rank):
-                return best, True
-            if A.shape[0] <= _SMALL:
-                return self.lift_flag(A, B, RationalMatrix.zeros(0, A.shape[0]), lifted)[0], True
-        return best, False
+        if sum(lifted.stairs) == dimension and _pinned(lifted.stairs, inputs, dimension, B.rank):
+            return lifted.stairs, True
+        if A.shape[0] <= _SMALL:
+            return self.lift_flag(A, B, RationalMatrix.zeros(0, A.shape[0]), lifted)[0], True
+        images = islice(modular.images(A, B), _STAIR_PRIMES)
+        found = max(modular.reached_rows(a, b, self.clock).stairs for a, b in images)
+        return found, False
 
     def complete(self, matrix: RationalMatrix) -> Completion:
         """Complete independent columns to a basis, the columns in reduced echelon form first."""

@@ -30,7 +30,6 @@ __all__ = [
     "Clock",
     "Profile",
     "images",
-    "krylov_stairs",
     "krylov_steps",
     "lift",
     "primes",
@@ -124,11 +123,13 @@ class Clock:
 class Profile:
     """A row space modulo a prime in reduced echelon form.
 
-    ``rows`` has ``len(pivots)`` rows; row i has a 1 in column ``pivots[i]``.
+    ``rows`` has ``len(pivots)`` rows; row i has a 1 in column ``pivots[i]``. ``stairs`` are the
+    rank increments of [B, AB, ...] where the space was reached from B.
     """
 
     rows: nmod_mat
     pivots: tuple[int, ...]
+    stairs: tuple[int, ...] = ()
 
     def beats(self, other: Profile) -> bool:
         """Whether this profile is nearer the true one: larger rank, then earlier pivots.
@@ -171,28 +172,43 @@ def _stack(upper: nmod_mat, lower: nmod_mat) -> nmod_mat:
 
 
 def reached_rows(A: nmod_mat, B: nmod_mat, clock: Clock) -> Profile:
-    """Return the row space of [B, AB, A^2 B, ...] transposed, modulo a prime.
+    """Return the row space of [B, AB, A^2 B, ...] transposed, modulo a prime, and its stairs.
 
-    ``K_2t = span(K_t, A^t K_t)`` by repeated squaring of A. K_t lies in K_(t+1) lies in K_2t, so
-    equal dimensions mean invariance.
+    Blocks are added until one of them adds nothing (then none after it does) or everything is
+    reached. The pivot columns of one echelon form tell how many each block adds; those columns
+    alone are then reduced by rows.
 
     Parameters
     ----------
     A : nmod_mat (n, n)
     B : nmod_mat (n, m)
     """
-    order = A.nrows()
-    rows, rank = _echelon(B.transpose())
-    power = A.transpose() if rank else None
-    while power is not None and 0 < rank < order:
-        clock.check("the reachable subspace modulo a prime")
-        grown, grown_rank = _echelon(_stack(rows, rows * power))
-        if grown_rank == rank:
+    order, inputs = B.nrows(), B.ncols()
+    prime = B.modulus()
+    if not order or not inputs:
+        return Profile(nmod_mat(0, order, [], prime), ())
+    block = B
+    table: list[list[Any]] = [[] for _ in range(order)]
+    count, wanted = 0, -(-order // inputs) + 1
+    while True:
+        while count < wanted:
+            clock.check("the reachable subspace modulo a prime")
+            for row, values in zip(table, block.tolist(), strict=True):
+                row.extend(values)
+            count += 1
+            block = A * block
+        flat = [value for row in table for value in row]
+        echelon, rank = nmod_mat(order, count * inputs, flat, prime).rref()
+        columns = _pivots(echelon, rank)
+        stairs = [0] * count
+        for column in columns:
+            stairs[column // inputs] += 1
+        if rank == order or stairs[-1] == 0:
             break
-        rows, rank = grown, grown_rank
-        if rank < order:
-            power = power * power
-    return Profile(rows, _pivots(rows, rank))
+        wanted = min(order + 1, 2 * count)
+    basis = [row[column] for column in columns for row in table]
+    rows, _ = nmod_mat(rank, order, basis, prime).rref()
+    return Profile(rows, _pivots(rows, rank), tuple(step for step in stairs if step))
 
 
 def krylov_steps(A: nmod_mat, B: nmod_mat, clock: Clock) -> list[Profile]:
@@ -232,33 +248,6 @@ def _clear(matrix: nmod_mat, step: Profile) -> nmod_mat:
     chosen = [entries[i * width + j] for i in range(matrix.nrows()) for j in step.pivots]
     factors = nmod_mat(matrix.nrows(), len(step.pivots), chosen, matrix.modulus())
     return matrix - factors * step.rows
-
-
-def krylov_stairs(A: nmod_mat, B: nmod_mat, dimension: int, clock: Clock) -> tuple[int, ...]:
-    """Return the rank increments of [B, AB, ...] modulo a prime, without the closing zero.
-
-    The pivot columns of one echelon form of [B, AB, ..., A^k B] tell how many each block adds.
-    ``dimension`` is the rank to be reached; the increments sum to less when the prime is unlucky.
-    """
-    order, inputs = B.nrows(), B.ncols()
-    if not dimension:
-        return ()
-    block = B
-    table: list[list[Any]] = [[] for _ in range(order)]
-    count, wanted = 0, -(-dimension // inputs)
-    while True:
-        clock.check("the stairs modulo a prime")
-        while count < wanted:
-            for row, values in zip(table, block.tolist(), strict=True):
-                row.extend(values)
-            block = A * block
-            count += 1
-        flat = [value for row in table for value in row]
-        echelon, rank = nmod_mat(order, count * inputs, flat, A.modulus()).rref()
-        if rank == dimension or count >= dimension:
-            blocks = [column // inputs for column in _pivots(echelon, rank)]
-            return tuple(blocks.count(k) for k in range(blocks[-1] + 1)) if blocks else ()
-        wanted = min(dimension, 2 * count)
 
 
 def _reconstruct(residue: int, modulus: int, bound: int) -> tuple[int, int] | None:

@@ -70,7 +70,11 @@ class Scaling:
 def unscaled(A: Array, B: Array, C: Array) -> Scaling:
     """Return the model in the user's own units."""
     states, inputs, outputs = (np.zeros(k, dtype=np.int32) for k in (*B.shape, C.shape[0]))
-    return Scaling(states, inputs, outputs, 0, A, B, C, _frobenius(A, B, C))
+    # One power of two for all, so that squares neither overflow nor vanish.
+    largest = max(float(np.abs(M).max(initial=0.0)) for M in (A, B, C))
+    shift = math.frexp(largest)[1]
+    norm = _frobenius(*(np.ldexp(M, -shift) for M in (A, B, C)))
+    return Scaling(states, inputs, outputs, 0, A, B, C, math.ldexp(norm, shift))
 
 
 def scaling_of(A: Array, B: Array, C: Array) -> Scaling:
@@ -130,14 +134,18 @@ def _balance(graph: Array, order: int) -> tuple[Array, int]:
         moved, noise = _robust(logs, units, pattern, roots, order)
     else:
         moved = _least_squares(work, logs, pattern, roots, order)
-    units = units + np.rint(moved[:size]).astype(np.int32)
-    np.ldexp(graph, units - units[:, None], out=graph)
+    whole = np.rint(moved).astype(np.int32)
+    units = units + whole[:size]
+    powers = units - units[:, None]
+    powers[:order, :order] -= whole[size]
+    np.ldexp(graph, powers, out=graph)
     # A at norm 1 while the states are balanced: its weight against B and C must not depend on
     # the unit of time.
     block = graph[:order, :order]
     time = _exponent(block)
     if time:
         np.ldexp(block, -time, out=block)
+    time += int(whole[size])
     if noise is None:
         factors = lapack.dgebal(graph, scale=1, permute=0, overwrite_a=1)[3]
         steps: Array = np.frexp(factors)[1] - 1

@@ -459,6 +459,7 @@ def _exact_answers(
     clock = Clock(budget)
     found: dict[str, ExactAnswer] = {}
     not_done: list[str] = []
+    late: dict[str, list[str]] = {}
     for word in words:
         try:
             clock.afford(_READING_SECONDS * model.order**2, f"reading the entries as {word}")
@@ -477,7 +478,9 @@ def _exact_answers(
                         "their sum is proved"
                     )
         except BudgetError as error:
-            not_done.append(f"the exact path did not run on the reading {word}: {error}")
+            late.setdefault(str(error), []).append(str(word))
+    for error_text, missed in late.items():
+        not_done.append(f"the exact path did not run as {', '.join(missed)}: {error_text}")
     return found, not_done, time.perf_counter() - began
 
 
@@ -566,7 +569,13 @@ def _verdict(order: int, answer: Answer, orders: dict[str, int], floating_order:
         "floating": "by the floating path alone, nothing is proved",
     }[answer.basis]
     if answer.order == order:
-        text = f"minimal: all {order} states show" if order else "minimal: it has no states"
+        text = "minimal: it has no states"
+        if order:
+            text = (
+                "minimal: its one state shows"
+                if order == 1
+                else f"minimal: all {order} states show"
+            )
     else:
         hidden = order - answer.order
         text = (

@@ -119,10 +119,12 @@ def _danger(examination: Examination) -> str:
     if not hidden:
         return "no mode is hidden, so none can be unstable unseen."
     slowest = max((mode.time_constant or 0.0 for mode in hidden), default=0.0)
+    settles = f"the slowest has a time constant of {number_text(slowest)}"
+    if not slowest:
+        settles = "all of them are delays, which die out in as many steps"
     return (
-        "every hidden mode is stable; the slowest has a time constant of "
-        f"{number_text(slowest)}. Stabilizable: {examination.stabilizable}. Detectable: "
-        f"{examination.detectable}."
+        f"every hidden mode is stable; {settles}. Stabilizable: {examination.stabilizable}. "
+        f"Detectable: {examination.detectable}."
     )
 
 
@@ -131,11 +133,16 @@ def _hidden(examination: Examination) -> str:
     if not modes:
         return "nothing."
     shown = "; ".join(
-        f"{mode_text(mode.value)}{f' (x{mode.multiplicity})' if mode.multiplicity > 1 else ''}, "
+        f"{mode_text(mode.value)}{f' (x{mode.multiplicity})' if mode.multiplicity > 1 else ''}"
+        f"{' (a delay)' if _is_delay(examination, mode) else ''}, "
         f"{mode.part}"
         for mode in modes[:6]
     )
     return shown + (f"; and {len(modes) - 6} more." if len(modes) > 6 else ".")
+
+
+def _is_delay(examination: Examination, mode: Mode) -> bool:
+    return examination.model.sampling_period is not None and mode.value == 0
 
 
 def _why(examination: Examination) -> str:
@@ -214,10 +221,21 @@ def _next(examination: Examination) -> str:
     if status == 3:
         return "give the exact path a larger budget, or treat the order as a guess."
     if examination.answer.order < examination.order:
-        return "reduce with `realize minimal`, and keep the list of what was removed."
+        return _how_to_reduce(examination)
     if not examination.paths_agree or not examination.readings_agree:
         return "say which reading is meant before a routine with a tolerance decides for you."
     return "use the model as it is."
+
+
+def _how_to_reduce(examination: Examination) -> str:
+    """Say which reduction gives the answer, and not another one."""
+    basis = examination.answer.basis
+    kept = "and keep the list of what was removed"
+    if basis in ("stored", "written"):
+        return f"reduce with `realize minimal --reading {basis}`, {kept}."
+    if basis == "nearest":
+        return f"reduce with `realize minimal`, whose floating path gives this order, {kept}."
+    return f"reduce with `realize minimal`, {kept}."
 
 
 def _not_done(examination: Examination) -> str:
