@@ -47,7 +47,8 @@ if TYPE_CHECKING:
         VerificationError,
         ZeroDenominatorError,
     )
-    from realize.examination.examine import Examination, examine
+    from realize.examination.examine import examine
+    from realize.examination.record import Examination
     from realize.model.files import load, save
     from realize.model.realization import Realization
     from realize.model.transfer import TransferMatrix
@@ -153,7 +154,8 @@ _HOMES = {
         "VerificationError",
         "ZeroDenominatorError",
     ),
-    "realize.examination.examine": ("Examination", "examine"),
+    "realize.examination.examine": ("examine",),
+    "realize.examination.record": ("Examination",),
     "realize.model.files": ("load", "save"),
     "realize.model.realization": ("Realization",),
     "realize.model.transfer": ("TransferMatrix",),

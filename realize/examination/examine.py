@@ -2,15 +2,9 @@
 
 from __future__ import annotations
 
-import hashlib
-import json
-import os
 import time
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
-from typing import Any, Final
-
-import numpy as np
+from collections.abc import Iterable, Sequence
+from typing import Final
 
 from realize.arithmetic.floating import FloatingPath, OpenedFloating
 from realize.arithmetic.modular import Clock
@@ -24,15 +18,16 @@ from realize.errors import (
 )
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
+from realize.examination.record import Answer, Examination
 from realize.forms.kalman import decompose, reach_and_see
 from realize.forms.sources import accept
 from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
-from realize.results import Deferred, Mode, Part, RankDecision, spelled
-from realize.stability import Stability, hidden_cautions
+from realize.results import Deferred, Mode, Part, RankDecision
+from realize.stability import Stability
 from realize.tolerance import check_tolerance, rounding_floor
 
-__all__ = ["DEFAULT_BUDGET", "Answer", "Examination", "Nearest", "examine"]
+__all__ = ["DEFAULT_BUDGET", "examine"]
 
 DEFAULT_BUDGET: Final = 10.0
 """Seconds that the exact path may take in one examination, unless another budget is given."""
@@ -43,234 +38,6 @@ _READING_SECONDS: Final = 6e-6
 _READINGS: Final = (Reading.STORED, Reading.WRITTEN, Reading.INTENDED)
 _LEADING: Final = (Reading.STORED, Reading.WRITTEN)
 """Readings that may lead an answer; `intended` is a hypothesis and never does."""
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Answer:
-    """The order that the examination stands by.
-
-    Attributes
-    ----------
-    order : int
-    basis : str
-        "given", "stored", "written": the reading it is proved for; "nearest": proved for an exact
-        model within the rounding floor of the one examined; "floating": the exact path did not
-        run, and nothing is proved.
-    """
-
-    order: int
-    basis: str
-
-
-@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
-class Examination:
-    """What both paths say of one model.
-
-    Attributes
-    ----------
-    model : Realization
-    order : int
-        Number of states.
-    minimal_order : dict
-        Reading -> minimal order, proved.
-    floating_order, unscaled_order : int
-        What the floating path takes at the cutoff, on the scaled model and in the user's units.
-    paths_agree : bool
-        Whether for some reading the floating order is the exact one.
-    readings_agree : bool
-        Whether all readings examined have one minimal order.
-    answer : Answer
-    verdict : str
-        The answer in one sentence.
-    stabilizable, detectable : str
-        "yes", "no" or "cannot tell", about the answer.
-    nearest : Nearest or None
-        The nearest model of lower order that the floating reduction shows.
-    cutoff_ranges : dict
-        Reading -> (low, high): every cutoff from low up to high gives the floating path the exact
-        ranks at every stage; None when no single cutoff does. In the units of the decisions'
-        cutoffs; divide by their scale for a tolerance.
-    conflicts : dict
-        Reading -> the stages that leave no cutoff, in words; empty where there is a range.
-    routes : dict
-        Reading -> {"state": order, "polynomial": order, "hankel": order}.
-    within_uncertainty : None
-        Kept for data with an uncertainty, which are not built yet. So is `witness`.
-    not_done : tuple of str
-        What was skipped and why.
-    hidden_parts : dict
-        Reading -> hidden part -> exact characteristic polynomial.
-    seconds : dict
-        Path -> wall-clock seconds.
-    """
-
-    model: Realization
-    order: int
-    minimal_order: dict[str, int]
-    floating_order: int
-    unscaled_order: int
-    paths_agree: bool
-    readings_agree: bool
-    answer: Answer
-    verdict: str
-    stabilizable: str
-    detectable: str
-    nearest: Nearest | None
-    cutoff_ranges: dict[str, tuple[float, float] | None]
-    conflicts: dict[str, tuple[str, ...]]
-    routes: dict[str, dict[str, int]]
-    not_done: tuple[str, ...]
-    seconds: dict[str, float]
-    within_uncertainty: str | None = None
-    witness: Realization | None = None
-    _decisions: Deferred[tuple[RankDecision, ...]]
-    _hidden: Deferred[tuple[Mode, ...]]
-    _visible: Deferred[tuple[Mode, ...]]
-    _parts: Deferred[dict[str, dict[str, Polynomial | None]]]
-    hidden_parts: dict[str, dict[str, Polynomial]]
-    _unsimple: Deferred[int]
-
-    @property
-    def decisions(self) -> tuple[RankDecision, ...]:
-        """Every rank decision of the floating path, with the exact ranks beside it."""
-        return self._decisions.get()
-
-    @property
-    def hidden_modes(self) -> tuple[Mode, ...]:
-        """The modes of the answer that the transfer matrix does not show."""
-        return self._hidden.get()
-
-    @property
-    def modes(self) -> tuple[Mode, ...]:
-        """All modes of the answer, the hidden ones first.
-
-        The visible ones come from the exact path within its budget, and otherwise from the
-        floating path, with infinite radius.
-        """
-        return self._hidden.get() + self._visible.get()
-
-    @property
-    def parts(self) -> dict[str, dict[str, Polynomial | None]]:
-        """Reading -> part -> exact characteristic polynomial.
-
-        The polynomial of the visible part costs more than all the rest; it is computed at first
-        access, and is None where the budget does not suffice for it.
-        """
-        return self._parts.get()
-
-    @property
-    def cautions(self) -> tuple[str, ...]:
-        """What must be said of the hidden modes of the answer."""
-        return hidden_cautions(self.hidden_modes)
-
-    @property
-    def entries_without_simple_fraction(self) -> int:
-        """How many floats have no simple fraction near; says how far to trust `intended`."""
-        return self._unsimple.get()
-
-    @property
-    def digest(self) -> str:
-        """SHA-256 of what the exact path says; the same on every machine."""
-        exact = {
-            "model": self.model.digest,
-            "minimal_order": self.minimal_order,
-            "routes": self.routes,
-            "hidden": _plain_parts(self.hidden_parts),
-        }
-        text = json.dumps(exact, sort_keys=True, separators=(",", ":"), ensure_ascii=True)
-        return hashlib.sha256(text.encode("ascii")).hexdigest()
-
-    @property
-    def status(self) -> int:
-        """Exit status of the command line.
-
-        0: nothing hidden, and nothing in doubt. 1: hidden modes, or paths or readings that
-        disagree. 3: undecided, the exact path did not run. 4: a hidden mode is not known to be
-        stable.
-        """
-        if any(mode.stability is not Stability.STABLE for mode in self.hidden_modes):
-            return 4
-        if self.answer.basis == "floating":
-            return 3
-        clean = self.answer.order == self.order and self.paths_agree and self.readings_agree
-        return 0 if clean else 1
-
-    def to_dict(self) -> dict[str, Any]:
-        """Return the examination as plain JSON values."""
-        return {
-            "format": "realize-examination",
-            "version": 1,
-            "model": self.model.digest,
-            "order": self.order,
-            "inputs": self.model.input_count,
-            "outputs": self.model.output_count,
-            "minimal_order": dict(self.minimal_order),
-            "floating_order": self.floating_order,
-            "unscaled_order": self.unscaled_order,
-            "paths_agree": self.paths_agree,
-            "readings_agree": self.readings_agree,
-            "answer": {"order": self.answer.order, "basis": self.answer.basis},
-            "verdict": self.verdict,
-            "stabilizable": self.stabilizable,
-            "detectable": self.detectable,
-            "nearest": None if self.nearest is None else self.nearest.to_dict(),
-            "parts": _plain_parts(self.parts),
-            "modes": [mode.to_dict() for mode in self.modes],
-            "decisions": [decision.to_dict() for decision in self.decisions],
-            "cutoff_ranges": {
-                reading: None if span is None else [_finite(value) for value in span]
-                for reading, span in self.cutoff_ranges.items()
-            },
-            "conflicts": {reading: list(text) for reading, text in self.conflicts.items()},
-            "routes": {reading: dict(found) for reading, found in self.routes.items()},
-            "within_uncertainty": self.within_uncertainty,
-            "witness": None,
-            "cautions": list(self.cautions),
-            "not_done": list(self.not_done),
-            "seconds": dict(self.seconds),
-            "environment": environment(),
-            "digest": self.digest,
-        }
-
-    def __str__(self) -> str:
-        from realize.examination.page import page
-
-        return page(self)
-
-    def __repr__(self) -> str:
-        return f"<Examination: {self.verdict}>"
-
-
-def _finite(value: float) -> float | None:
-    """Return None for infinity, which JSON cannot hold."""
-    return None if value == float("inf") else value
-
-
-def _plain_parts(
-    parts: Mapping[str, Mapping[str, Polynomial | None]],
-) -> dict[str, dict[str, list[str] | None]]:
-    return {
-        reading: {
-            part: None if polynomial is None else spelled(polynomial)
-            for part, polynomial in found.items()
-        }
-        for reading, found in parts.items()
-    }
-
-
-def environment() -> dict[str, str]:
-    """Return what the floating path ran on: one numpy on one machine can round in several ways."""
-    import scipy
-
-    config: dict[str, Any] = np.show_config(mode="dicts")  # type: ignore[assignment,unused-ignore]
-    blas = config.get("Build Dependencies", {}).get("blas", {})
-    return {
-        "numpy": np.__version__,
-        "scipy": scipy.__version__,
-        "blas": f"{blas.get('name', 'unknown')} {blas.get('version', '')}".strip(),
-        "blas_kernel": str(blas.get("openblas configuration", "unknown")),
-        "threads": os.environ.get("OPENBLAS_NUM_THREADS", "not set"),
-    }
 
 
 def examine(

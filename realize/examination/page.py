@@ -13,7 +13,7 @@ from realize.stability import Stability
 from realize.tolerance import default_tolerance
 
 if TYPE_CHECKING:
-    from realize.examination.examine import Examination
+    from realize.examination.record import Examination
 
 __all__ = ["findings", "page"]
 
