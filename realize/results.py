@@ -29,6 +29,7 @@ __all__ = [
     "RankDecision",
     "Reduction",
     "RemovedModes",
+    "ResponseChange",
     "Side",
     "Staircase",
     "spelled",
@@ -244,6 +245,29 @@ class Staircase:
         return f"<Staircase: {part} {self.dimension} of {self.model.order}, stairs {self.stairs}>"
 
 
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ResponseChange:
+    """The largest change of a frequency response.
+
+    Attributes
+    ----------
+    size : float
+        2-norm of the change of the transfer matrix where it is largest.
+    relative : float
+        The same over the largest 2-norm of the transfer matrix.
+    frequency : float
+        Where: radians per unit of time.
+    """
+
+    size: float
+    relative: float
+    frequency: float
+
+    def to_dict(self) -> dict[str, float]:
+        """Return the record as plain JSON values."""
+        return {"size": self.size, "relative": self.relative, "frequency": self.frequency}
+
+
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class Reduction:
     """A minimal realization and what was removed to reach it.
@@ -265,6 +289,24 @@ class Reduction:
     _state_map: Deferred[Array | None]
     _decisions: Deferred[tuple[RankDecision, ...]]
     _condition: Deferred[float | None]
+    _backward_error: Deferred[float | None] = field(default_factory=lambda: Deferred.known(None))
+    _response_change: Deferred[ResponseChange | None] = field(
+        default_factory=lambda: Deferred.known(None)
+    )
+
+    @property
+    def backward_error(self) -> float | None:
+        """Relative size of the change of the model that makes the reduction exact.
+
+        Frobenius norm over that of [A B; C 0], in the user's units, for all hidden modes at once.
+        0.0 when nothing was removed. Computed at first access; None off the floating path.
+        """
+        return self._backward_error.get()
+
+    @property
+    def response_change(self) -> ResponseChange | None:
+        """The largest change of the frequency response; None off the floating path."""
+        return self._response_change.get()
 
     @property
     def removed(self) -> RemovedModes:

@@ -53,11 +53,10 @@ class RationalMatrix:
         return cls(fmpq_mat(rows, columns, [fmpq(q.numerator, q.denominator) for q in flat]))
 
     @classmethod
-    def from_ratios(
-        cls, shape: tuple[int, ...], ratios: Sequence[tuple[int, int]]
-    ) -> RationalMatrix:
-        """Take pairs (numerator, denominator), row by row."""
-        return cls(fmpq_mat(shape[0], shape[1], [fmpq(*pair) for pair in ratios]))
+    def from_floats(cls, values: Array) -> RationalMatrix:
+        """Take doubles as the dyadic rationals that they are, (rows, columns)."""
+        flat = [fmpq(*value.as_integer_ratio()) for value in values.ravel().tolist()]
+        return cls(fmpq_mat(values.shape[0], values.shape[1], flat))
 
     @classmethod
     def from_entries(cls, rows: int, columns: int, entries: Sequence[Any]) -> RationalMatrix:
@@ -93,6 +92,11 @@ class RationalMatrix:
         result = np.empty(self.shape[0] * self.shape[1], dtype=object)
         result[:] = [_fraction(value) for value in self.matrix.entries()]
         return result.reshape(self.shape)
+
+    def rounded(self) -> Array:
+        """Return an array of doubles, each correctly rounded."""
+        flat = [int(value.p) / int(value.q) for value in self.matrix.entries()]
+        return np.array(flat, dtype=float).reshape(self.shape)
 
     def _common_denominator(self) -> int | None:
         """Return the common denominator, or None when it is too long to multiply out.

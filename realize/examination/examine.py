@@ -20,6 +20,7 @@ from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
 from realize.examination.record import Answer, Examination
 from realize.forms.kalman import decompose, reach_and_see
+from realize.forms.minimal import reduce
 from realize.forms.sources import accept
 from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
@@ -141,6 +142,13 @@ def examine(
             for word, found in exact.items()
         },
         _unsimple=Deferred(lambda: _count_unsimple(model)),
+        _reduction=Deferred(
+            lambda: (
+                reduce(floating.path, model)
+                if floating.order == answer.order < model.order
+                else None
+            )
+        ),
     )
 
 

@@ -204,10 +204,16 @@ def _removal(examination: Examination) -> str:
     if not examination.hidden_modes:
         return "nothing to remove."
     removed = examination.order - examination.answer.order
+    text = (
+        f"the minimal realization has {_count(examination.answer.order, 'state')}, {removed} "
+        "fewer; what is removed stays in the plant."
+    )
+    change = examination.response_change
+    if change is None:
+        return text + " The floating path does not give this order, so its reduction is another."
     return (
-        f"the minimal realization has {_count(examination.answer.order, 'state')}, "
-        f"{removed} fewer; its transfer matrix is that of the model the answer rests on. What is "
-        "removed stays in the plant."
+        f"{text} In doubles it moves the frequency response by {change.relative:.2g} of its "
+        f"largest value, at {number_text(change.frequency)} rad per unit of time."
     )
 
 

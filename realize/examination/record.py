@@ -14,7 +14,7 @@ import numpy as np
 from realize.examination.nearest import Nearest
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
-from realize.results import Deferred, Mode, RankDecision, spelled
+from realize.results import Deferred, Mode, RankDecision, Reduction, ResponseChange, spelled
 from realize.stability import Stability, hidden_cautions
 
 __all__ = ["Answer", "Examination", "environment"]
@@ -104,6 +104,7 @@ class Examination:
     _parts: Deferred[dict[str, dict[str, Polynomial | None]]]
     hidden_parts: dict[str, dict[str, Polynomial]]
     _unsimple: Deferred[int]
+    _reduction: Deferred[Reduction | None]
 
     @property
     def decisions(self) -> tuple[RankDecision, ...]:
@@ -132,6 +133,15 @@ class Examination:
         access, and is None where the budget does not suffice for it.
         """
         return self._parts.get()
+
+    @property
+    def response_change(self) -> ResponseChange | None:
+        """What removing the hidden modes changes, by the floating reduction.
+
+        None when nothing is hidden, or when the floating path has another order than the answer.
+        """
+        reduction = self._reduction.get()
+        return None if reduction is None else reduction.response_change
 
     @property
     def cautions(self) -> tuple[str, ...]:
@@ -189,6 +199,9 @@ class Examination:
             "stabilizable": self.stabilizable,
             "detectable": self.detectable,
             "nearest": None if self.nearest is None else self.nearest.to_dict(),
+            "response_change": (
+                None if self.response_change is None else self.response_change.to_dict()
+            ),
             "parts": _plain_parts(self.parts),
             "modes": [mode.to_dict() for mode in self.modes],
             "decisions": [decision.to_dict() for decision in self.decisions],

@@ -137,7 +137,7 @@ def _vector(A: RationalMatrix, C: RationalMatrix, mode: Mode) -> Sequence[Any]:
         exact = _null_vector(stacked)
         largest = max(exact, key=abs)
         return [component / largest for component in exact]
-    floats = [_rounded(M) for M in (A, C)]
+    floats = [M.rounded() for M in (A, C)]
     pencil = np.vstack([floats[0] - mode.value * np.eye(order), floats[1]])
     return list(_levelled(np.linalg.svd(pencil)[2][-1].conj()).tolist())
 
@@ -154,11 +154,6 @@ def _null_vector(matrix: RationalMatrix) -> list[Fraction]:
     for i, pivot in enumerate(pivots):
         vector[pivot] = -table[i, free]
     return vector
-
-
-def _rounded(matrix: RationalMatrix) -> Array:
-    flat = [q.numerator / q.denominator for q in matrix.to_array().ravel().tolist()]
-    return np.array(flat, dtype=float).reshape(matrix.shape)
 
 
 def _combination(shown: Sequence[tuple[str, Any]]) -> str:

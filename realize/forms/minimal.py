@@ -6,10 +6,14 @@ import warnings
 from collections.abc import Callable
 from typing import Any
 
+from realize.arithmetic.floating import OpenedFloating
 from realize.arithmetic.path import Path
+from realize.entries import Reading
 from realize.errors import HiddenInstabilityWarning
 from realize.forms.companion import realize_transfer
 from realize.forms.kalman import decompose, reach_and_see
+from realize.forms.nearby import nearby
+from realize.forms.response import response_change
 from realize.forms.sources import accept
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
@@ -67,8 +71,9 @@ def _reduce(
     state_map = Deferred(
         lambda: None if from_transfer else opened.state_map(sight.basis.T @ reach.coordinates)
     )
+    reduced = opened.close(sight.A.T, sight.C.T, sight.B.T)
     reduction = Reduction(
-        model=opened.close(sight.A.T, sight.C.T, sight.B.T),
+        model=reduced,
         order=order,
         source_order=model.order,
         _removed=Deferred(removed),
@@ -77,5 +82,23 @@ def _reduce(
         _condition=Deferred(
             lambda: None if (map_ := state_map.get()) is None else opened.condition(map_)
         ),
+        **_changes(opened, (reach, sight), reduced),
     )
     return reduction, lambda: opened.modes(blocks())
+
+
+def _changes(opened: Any, run: tuple[Any, Any], reduced: Realization) -> dict[str, Deferred[Any]]:
+    """Return what a floating reduction changes; an exact one changes nothing."""
+    if not isinstance(opened, OpenedFloating):
+        return {}
+    model = opened.model
+
+    def backward_error() -> float:
+        if reduced.order == model.order:
+            return 0.0
+        return nearby(opened, run).distance(model.read(Reading.STORED))
+
+    return {
+        "_backward_error": Deferred(backward_error),
+        "_response_change": Deferred(lambda: response_change(model, reduced)),
+    }
