@@ -160,6 +160,9 @@ class Mode:
         or "by value", with the left or right vector in named states.
     vector : tuple of (str, number)
         That vector: the states it involves, the largest component 1.
+    inputs, outputs : tuple of str, or None
+        Names of the inputs that reach the mode and of the outputs that see it, each taken alone;
+        None where that was not computed.
     """
 
     value: complex
@@ -172,6 +175,8 @@ class Mode:
     polynomial: Polynomial | None = None
     why: str | None = None
     vector: tuple[tuple[str, Any], ...] = ()
+    inputs: tuple[str, ...] | None = None
+    outputs: tuple[str, ...] | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """Return the mode as plain JSON values."""
@@ -186,6 +191,8 @@ class Mode:
             "damping": self.damping,
             "polynomial": None if self.polynomial is None else spelled(self.polynomial),
             "why": self.why,
+            "inputs": None if self.inputs is None else list(self.inputs),
+            "outputs": None if self.outputs is None else list(self.outputs),
         }
 
 

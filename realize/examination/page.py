@@ -274,6 +274,27 @@ def _short(polynomial: Polynomial | int | None, variable: str) -> str:
     return f"degree {len(polynomial) - 1}"
 
 
+def _channel_table(examination: Examination, modes: tuple[Mode, ...]) -> list[str]:
+    """Return which channel reaches or sees which mode, where there is more than one of a kind."""
+    model = examination.model
+    shown = [mode for mode in _upper(modes) if mode.inputs is not None][:40]
+    if not shown or max(model.input_count, model.output_count) < 2:
+        return []
+    lines = ["Modes by channel"]
+    for mode in shown:
+        reached = ", ".join(mode.inputs or ()) or "nothing"
+        seen = ", ".join(mode.outputs or ()) or "nothing"
+        lines.extend(
+            textwrap.wrap(
+                f"  {mode_text(mode.value):<26}reached by {reached}; seen in {seen}",
+                WIDTH,
+                subsequent_indent=" " * 28,
+                break_on_hyphens=False,
+            )
+        )
+    return [*lines, ""]
+
+
 def _tables(examination: Examination) -> list[str]:
     lines: list[str] = []
     if examination.minimal_order:
@@ -300,6 +321,7 @@ def _tables(examination: Examination) -> list[str]:
     if len(_upper(modes)) > 40:
         lines.append(f"  and {len(_upper(modes)) - 40} more")
     lines.append("")
+    lines.extend(_channel_table(examination, modes))
     lines.append("Rank decisions of the floating path")
     readings = list(examination.minimal_order)
     head = "".join(f"{word:>10}" for word in readings)

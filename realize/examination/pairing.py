@@ -10,6 +10,7 @@ from realize.arithmetic.exact import OpenedExact, modes_of
 from realize.arithmetic.floating import FloatingReach, OpenedFloating
 from realize.arithmetic.modular import Clock
 from realize.errors import BudgetError
+from realize.examination.channels import with_channels
 from realize.examination.routes import routes
 from realize.examination.why import Coordinates, explained
 from realize.forms.kalman import reach_and_see
@@ -83,7 +84,8 @@ class ExactAnswer:
         return self._modes([(Part.CONTROLLABLE_OBSERVABLE, self._visible)])
 
     def _modes(self, blocks: Iterable[tuple[Part, Polynomial]]) -> tuple[Mode, ...]:
-        return modes_of(blocks, self.opened.A, self.model.sampling_period)
+        modes = modes_of(blocks, self.opened.A, self.model.sampling_period)
+        return with_channels(modes, self.opened)
 
     def is_stable_outside(self, *parts: Part) -> bool:
         """Whether every mode of the parts named decays, by the exact stability test."""

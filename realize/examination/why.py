@@ -20,6 +20,9 @@ __all__ = ["Coordinates", "explained"]
 
 Array = np.ndarray[Any, Any]
 
+_EXACT_VECTORS: Final = 32
+"""Up to this order vectors of rational modes are exact; beyond, they are computed in doubles."""
+
 _NEGLIGIBLE: Final = 1e-9
 """Components of a computed vector below this share of the largest are not shown."""
 
@@ -131,7 +134,7 @@ def _vector(A: RationalMatrix, C: RationalMatrix, mode: Mode) -> Sequence[Any]:
     """
     order = A.shape[0]
     factor = mode.polynomial
-    if factor is not None and len(factor) == 2:
+    if factor is not None and len(factor) == 2 and order <= _EXACT_VECTORS:
         value = RationalMatrix.identity(order).scaled(-factor[1])
         stacked = RationalMatrix.block([[A - value], [C]])
         exact = _null_vector(stacked)
