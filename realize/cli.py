@@ -9,6 +9,7 @@ from __future__ import annotations
 import json
 import os
 import sys
+from dataclasses import asdict
 from typing import Any, NoReturn
 
 import click
@@ -22,6 +23,7 @@ from realize.dispatch import path_for
 from realize.entries import Reading
 from realize.errors import RealizeError
 from realize.examination import Examination
+from realize.examination.against import differences, read_record
 from realize.examination.examine import DEFAULT_BUDGET, examine
 from realize.examination.page import findings
 from realize.forms import reduce
@@ -106,18 +108,48 @@ def _print_page(text: str) -> None:
     show_default=True,
     help="Seconds that the exact path may take.",
 )
+@click.option(
+    "--against",
+    metavar="RECORD",
+    help="Compare with a recorded examination (what --json printed) and tell what moved.",
+)
 @click.option("--json", "as_json", is_flag=True, help="Print the stable form.")
 def examine_command(
-    file: str, readings: tuple[str, ...], tolerance: float | None, budget: float, as_json: bool
+    file: str,
+    readings: tuple[str, ...],
+    tolerance: float | None,
+    budget: float,
+    against: str | None,
+    as_json: bool,
 ) -> None:
     """Examine the model in FILE on both paths."""
+    recorded = None
+    if against is not None:
+        with open(against, encoding="utf-8") as stream:
+            recorded = read_record(stream)
     model = as_realization(_read(file))
     examination = examine(model, readings=readings or None, tolerance=tolerance, budget=budget)
+    if recorded is not None:
+        sys.exit(_compare(recorded, examination, as_json))
     if as_json:
         click.echo(json.dumps(examination.to_dict(), indent=2))
     else:
         _print_page(str(examination))
     sys.exit(examination.status)
+
+
+def _compare(recorded: dict[str, Any], examination: Examination, as_json: bool) -> int:
+    """Print what moved since the record; return the exit status."""
+    found = differences(recorded, examination.to_dict())
+    if as_json:
+        click.echo(json.dumps([asdict(each) for each in found], indent=2))
+    elif not found:
+        click.echo("As recorded.")
+    for each in () if as_json else found:
+        click.echo(str(each))
+    if examination.status == NOT_STABLE and found:
+        return NOT_STABLE
+    return FINDINGS if found else 0
 
 
 @main.command("minimal", epilog=_EXIT_TEXT)

@@ -16,6 +16,7 @@ from realize.errors import (
     UnknownWordError,
     UnsupportedEntryError,
 )
+from realize.examination.doubt import with_doubt
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
 from realize.examination.record import Answer, Examination
@@ -25,7 +26,6 @@ from realize.forms.sources import accept
 from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
 from realize.results import Deferred, Mode, Part, RankDecision
-from realize.stability import Stability
 from realize.tolerance import check_tolerance, rounding_floor
 
 __all__ = ["DEFAULT_BUDGET", "examine"]
@@ -111,7 +111,13 @@ def examine(
         for word, found in exact.items()
     }
     answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
-    stabilizable, detectable = _stabilities(about, floating)
+    hidden = Deferred(
+        lambda: (
+            floating.hidden_modes()
+            if about is None
+            else with_doubt(about.hidden_modes(), model, answer.basis)
+        )
+    )
     stairs = {word: found.stairs for word, found in exact.items()}
     return Examination(
         model=model,
@@ -123,8 +129,6 @@ def examine(
         readings_agree=len(set(orders.values())) == 1,
         answer=answer,
         verdict=_verdict(model.order, answer, orders, floating.order),
-        stabilizable=stabilizable,
-        detectable=detectable,
         nearest=nearest,
         cutoff_ranges={word: replay.interval for word, replay in replays.items()},
         conflicts={word: replay.conflicts for word, replay in replays.items()},
@@ -132,10 +136,8 @@ def examine(
         not_done=tuple(not_done),
         seconds={"floating": floating.seconds, "exact": exact_seconds},
         _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
-        _hidden=Deferred(
-            lambda: floating.hidden_modes() if about is None else about.hidden_modes()
-        ),
-        _visible=Deferred(lambda: _visible_modes(about, floating, budget)),
+        _hidden=hidden,
+        _visible=Deferred(lambda: _visible_modes(about, floating, budget, model, answer.basis)),
         _parts=Deferred(lambda: {word: _parts_of(found, budget) for word, found in exact.items()}),
         hidden_parts={
             word: {str(part): polynomial for part, polynomial in found.hidden.items()}
@@ -289,37 +291,21 @@ def _answer(
     return answer, about, nearest
 
 
-def _stabilities(about: ExactAnswer | None, floating: _Floating) -> tuple[str, str]:
-    """Return whether the answer is stabilizable, and detectable."""
-    unreached = (Part.UNCONTROLLABLE_OBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
-    unseen = (Part.CONTROLLABLE_UNOBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
-    if about is not None:
-        return (
-            "yes" if about.is_stable_outside(*unreached) else "no",
-            "yes" if about.is_stable_outside(*unseen) else "no",
-        )
-    modes = floating.hidden_modes()
-
-    def summary(parts: tuple[Part, ...]) -> str:
-        found = {mode.stability for mode in modes if mode.part in parts}
-        if Stability.UNSTABLE in found:
-            return "no"
-        return "cannot tell" if Stability.CANNOT_TELL in found else "yes"
-
-    return summary(unreached), summary(unseen)
-
-
 def _parts_of(answer: ExactAnswer, budget: float | None) -> dict[str, Polynomial | None]:
     known = {**answer.hidden, Part.CONTROLLABLE_OBSERVABLE: answer.visible_within(budget)}
     return {str(part): known[part] for part in Part}
 
 
 def _visible_modes(
-    about: ExactAnswer | None, floating: _Floating, budget: float | None
+    about: ExactAnswer | None,
+    floating: _Floating,
+    budget: float | None,
+    model: Realization,
+    basis: str,
 ) -> tuple[Mode, ...]:
     if about is None or about.visible_within(budget) is None:
         return floating.visible_modes()
-    return about.visible_modes()
+    return with_doubt(about.visible_modes(), model, basis)
 
 
 def _count_unsimple(model: Realization) -> int:

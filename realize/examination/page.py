@@ -6,6 +6,8 @@ import textwrap
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from realize.polynomials import Polynomial
 from realize.polynomials import text as polynomial_text
 from realize.results import Mode, Part
@@ -19,6 +21,12 @@ __all__ = ["findings", "page"]
 
 WIDTH = 80
 _MARGIN = 11
+_BLUR = 1e-6
+"""Share of the norm of A below which a doubtful mode's distance from the axis is noise."""
+
+_ROUNDING = 1e-12
+"""Relative change of a response below which a size and a place would be those of rounding."""
+
 _SHORT = 12
 """Up to this order the polynomial of the visible part is shown."""
 
@@ -79,6 +87,34 @@ def mode_text(value: complex) -> str:
     return f"{number_text(value.real)} {sign} {number_text(abs(value.imag))}j"
 
 
+def _named(examination: Examination, modes: Iterable[Mode]) -> list[tuple[str, Mode, int]]:
+    """Return each mode's text, the mode, and how often it occurs in its part.
+
+    A mode of which it cannot be told whether it decays is named by the place on the boundary that
+    it cannot be told from; its other digits are noise.
+    """
+    blur = _BLUR * float(np.linalg.norm(examination.model.to_float().A)) if modes else 0.0
+    found: dict[tuple[str, Part], tuple[str, Mode, int]] = {}
+    for mode in modes:
+        doubtful = mode.stability is Stability.CANNOT_TELL
+        value = mode.value
+        if doubtful and examination.model.sampling_period is None:
+            value = complex(0.0, value.imag if abs(value.imag) > blur else 0.0)
+        elif doubtful:
+            value = value / abs(value)
+            value = complex(value.real, value.imag if abs(value.imag) > _BLUR else 0.0)
+        if value.imag < 0.0:
+            continue
+        text = f"{'about ' if doubtful else ''}{mode_text(value)}"
+        _, first, times = found.get((text, mode.part), (text, mode, 0))
+        found[text, mode.part] = (text, first, times + mode.multiplicity)
+    return list(found.values())
+
+
+def _times(count: int) -> str:
+    return f" (x{count})" if count > 1 else ""
+
+
 def _model(examination: Examination) -> str:
     model = examination.model
     period = model.sampling_period
@@ -97,11 +133,6 @@ def _names(names: tuple[str, ...]) -> str:
     return shown if len(names) <= 4 else f"{shown} and {len(names) - 4} more"
 
 
-def _upper(modes: Iterable[Mode]) -> list[Mode]:
-    """Return modes with each complex pair named once."""
-    return [mode for mode in modes if mode.value.imag >= 0.0]
-
-
 def _danger(examination: Examination) -> str:
     hidden = examination.hidden_modes
     for stability, text in (
@@ -109,9 +140,9 @@ def _danger(examination: Examination) -> str:
         (Stability.MARGINAL, "a hidden mode does not decay"),
         (Stability.CANNOT_TELL, "it cannot be told whether a hidden mode decays"),
     ):
-        found = [mode for mode in _upper(hidden) if mode.stability is stability]
+        found = _named(examination, [mode for mode in hidden if mode.stability is stability])
         if found:
-            named = ", ".join(f"{mode_text(mode.value)} ({mode.part})" for mode in found[:4])
+            named = ", ".join(f"{value} ({mode.part})" for value, mode, _ in found[:4])
             return (
                 f"{text}: {named}. The transfer function does not show it, the plant has it. "
                 f"Stabilizable: {examination.stabilizable}. Detectable: {examination.detectable}."
@@ -129,14 +160,12 @@ def _danger(examination: Examination) -> str:
 
 
 def _hidden(examination: Examination) -> str:
-    modes = _upper(examination.hidden_modes)
+    modes = _named(examination, examination.hidden_modes)
     if not modes:
         return "nothing."
     shown = "; ".join(
-        f"{mode_text(mode.value)}{f' (x{mode.multiplicity})' if mode.multiplicity > 1 else ''}"
-        f"{' (a delay)' if _is_delay(examination, mode) else ''}, "
-        f"{mode.part}"
-        for mode in modes[:6]
+        f"{value}{_times(times)}{' (a delay)' if _is_delay(examination, mode) else ''}, {mode.part}"
+        for value, mode, times in modes[:6]
     )
     return shown + (f"; and {len(modes) - 6} more." if len(modes) > 6 else ".")
 
@@ -146,12 +175,12 @@ def _is_delay(examination: Examination, mode: Mode) -> bool:
 
 
 def _why(examination: Examination) -> str:
-    modes = _upper(examination.hidden_modes)
+    modes = _named(examination, examination.hidden_modes)
     if not modes:
         return "every state is reached and seen."
-    if all(mode.why is None for mode in modes):
+    if all(mode.why is None for _, mode, _ in modes):
         return "not told: the exact path did not run."
-    texts = [f"{mode_text(mode.value)}: {mode.why}" for mode in modes[:4]]
+    texts = [f"{value}: {mode.why}" for value, mode, _ in modes[:4]]
     if len(modes) > 4:
         texts.append(f"and {len(modes) - 4} more")
     return "; ".join(texts) + "."
@@ -211,6 +240,8 @@ def _removal(examination: Examination) -> str:
     change = examination.response_change
     if change is None:
         return text + " The floating path does not give this order, so its reduction is another."
+    if change.relative < _ROUNDING:
+        return text + " In doubles the frequency response stays what it was, to rounding."
     return (
         f"{text} In doubles it moves the frequency response by {change.relative:.2g} of its "
         f"largest value, at {number_text(change.frequency)} rad per unit of time."
@@ -219,6 +250,12 @@ def _removal(examination: Examination) -> str:
 
 def _next(examination: Examination) -> str:
     status = examination.status
+    told = {mode.stability for mode in examination.hidden_modes}
+    if status == 4 and not told & {Stability.UNSTABLE, Stability.MARGINAL}:
+        return (
+            "go back for better data, or give the entries exactly: these numbers do not tell "
+            "whether the hidden mode decays. Until then treat it as one that does not."
+        )
     if status == 4:
         return (
             "do not ship the reduced model as a model of the plant. Move a sensor or an actuator, "
@@ -277,16 +314,16 @@ def _short(polynomial: Polynomial | int | None, variable: str) -> str:
 def _channel_table(examination: Examination, modes: tuple[Mode, ...]) -> list[str]:
     """Return which channel reaches or sees which mode, where there is more than one of a kind."""
     model = examination.model
-    shown = [mode for mode in _upper(modes) if mode.inputs is not None][:40]
+    shown = [each for each in _named(examination, modes) if each[1].inputs is not None][:40]
     if not shown or max(model.input_count, model.output_count) < 2:
         return []
     lines = ["Modes by channel"]
-    for mode in shown:
+    for value, mode, _ in shown:
         reached = ", ".join(mode.inputs or ()) or "nothing"
         seen = ", ".join(mode.outputs or ()) or "nothing"
         lines.extend(
             textwrap.wrap(
-                f"  {mode_text(mode.value):<26}reached by {reached}; seen in {seen}",
+                f"  {value:<26}reached by {reached}; seen in {seen}",
                 WIDTH,
                 subsequent_indent=" " * 28,
                 break_on_hyphens=False,
@@ -314,12 +351,11 @@ def _tables(examination: Examination) -> list[str]:
     modes = examination.modes
     lines.append("Modes of the answer")
     lines.append(f"  {'value':<26}{'times':<7}{'stability':<13}part")
-    for mode in _upper(modes)[:40]:
-        lines.append(
-            f"  {mode_text(mode.value):<26}{mode.multiplicity:<7}{mode.stability:<13}{mode.part}"
-        )
-    if len(_upper(modes)) > 40:
-        lines.append(f"  and {len(_upper(modes)) - 40} more")
+    named = _named(examination, modes)
+    for value, mode, times in named[:40]:
+        lines.append(f"  {value:<26}{times:<7}{mode.stability:<13}{mode.part}")
+    if len(named) > 40:
+        lines.append(f"  and {len(named) - 40} more")
     lines.append("")
     lines.extend(_channel_table(examination, modes))
     lines.append("Rank decisions of the floating path")

@@ -17,7 +17,6 @@ from realize.forms.kalman import reach_and_see
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
 from realize.results import Mode, Part, RankDecision
-from realize.stability import is_stable
 from realize.tolerance import rounding_floor
 
 __all__ = ["ExactAnswer", "Replay", "with_exact_ranks"]
@@ -86,10 +85,6 @@ class ExactAnswer:
     def _modes(self, blocks: Iterable[tuple[Part, Polynomial]]) -> tuple[Mode, ...]:
         modes = modes_of(blocks, self.opened.A, self.model.sampling_period)
         return with_channels(modes, self.opened)
-
-    def is_stable_outside(self, *parts: Part) -> bool:
-        """Whether every mode of the parts named decays, by the exact stability test."""
-        return all(is_stable(self.hidden[part], self.model.sampling_period) for part in parts)
 
 
 @dataclass(frozen=True, slots=True)

@@ -14,7 +14,7 @@ import numpy as np
 from realize.examination.nearest import Nearest
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
-from realize.results import Deferred, Mode, RankDecision, Reduction, ResponseChange, spelled
+from realize.results import Deferred, Mode, Part, RankDecision, Reduction, ResponseChange, spelled
 from realize.stability import Stability, hidden_cautions
 
 __all__ = ["Answer", "Examination", "environment"]
@@ -57,8 +57,6 @@ class Examination:
     answer : Answer
     verdict : str
         The answer in one sentence.
-    stabilizable, detectable : str
-        "yes", "no" or "cannot tell", about the answer.
     nearest : Nearest or None
         The nearest model of lower order that the floating reduction shows.
     cutoff_ranges : dict
@@ -88,8 +86,6 @@ class Examination:
     readings_agree: bool
     answer: Answer
     verdict: str
-    stabilizable: str
-    detectable: str
     nearest: Nearest | None
     cutoff_ranges: dict[str, tuple[float, float] | None]
     conflicts: dict[str, tuple[str, ...]]
@@ -115,6 +111,22 @@ class Examination:
     def hidden_modes(self) -> tuple[Mode, ...]:
         """The modes of the answer that the transfer matrix does not show."""
         return self._hidden.get()
+
+    @property
+    def stabilizable(self) -> str:
+        """Whether every mode that is not reached decays: "yes", "no" or "cannot tell"."""
+        return self._decaying(Part.UNCONTROLLABLE_OBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
+
+    @property
+    def detectable(self) -> str:
+        """Whether every mode that is not seen decays: "yes", "no" or "cannot tell"."""
+        return self._decaying(Part.CONTROLLABLE_UNOBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
+
+    def _decaying(self, *parts: Part) -> str:
+        found = {mode.stability for mode in self.hidden_modes if mode.part in parts}
+        if found & {Stability.UNSTABLE, Stability.MARGINAL}:
+            return "no"
+        return "cannot tell" if Stability.CANNOT_TELL in found else "yes"
 
     @property
     def modes(self) -> tuple[Mode, ...]:

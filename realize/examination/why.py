@@ -80,8 +80,9 @@ class Coordinates:
 
 def _levelled(vector: Array) -> Array:
     """Return the vector with its largest component 1 and what is rounding noise left out."""
-    vector = vector / vector[np.argmax(np.abs(vector))]
-    vector[np.abs(vector) < _NEGLIGIBLE] = 0.0
+    vector = np.asarray(vector / vector[np.argmax(np.abs(vector))], dtype=complex)
+    for part in (vector.real, vector.imag):
+        part[np.abs(part) < _NEGLIGIBLE] = 0.0
     return vector
 
 
@@ -169,6 +170,8 @@ def _combination(shown: Sequence[tuple[str, Any]]) -> str:
 
 def _number(value: Any) -> str:
     if isinstance(value, complex):
-        return f"({value.real:.3g}{value.imag:+.3g}j)"
+        if value.imag:
+            return f"({value.real:.3g}{value.imag:+.3g}j)"
+        value = value.real
     text = str(value) if isinstance(value, Fraction) else ""
     return text if text and len(text) <= 9 else f"{float(value):.4g}"
