@@ -226,7 +226,10 @@ def _cutoffs(examination: Examination) -> str:
     texts = [f"{', '.join(words)}: {text}" for text, words in grouped.items()]
     used = f"used {cutoff:.2g} (scale {scale:.3g}"
     used += f", default tolerance {default_tolerance(examination.order):.2g})"
-    return "; ".join(texts) + f"; {used}."
+    told = "; ".join(texts) + f"; {used}."
+    if examination.fragile:
+        told += f" Fragile: {', '.join(examination.fragile)}."
+    return told
 
 
 def _removal(examination: Examination) -> str:

@@ -7,7 +7,7 @@ import json
 import os
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
 
@@ -18,6 +18,9 @@ from realize.results import Deferred, Mode, Part, RankDecision, Reduction, Respo
 from realize.stability import Stability, hidden_cautions
 
 __all__ = ["Answer", "Examination", "environment"]
+
+NEAR_EDGE: Final = 1000.0
+"""Factor between the cutoff and another answer below which the answer counts as fragile."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -166,6 +169,40 @@ class Examination:
         return self._unsimple.get()
 
     @property
+    def fragile(self) -> tuple[str, ...]:
+        """What makes the answer fragile, in words; empty when nothing does.
+
+        A floating order that is not the answer's, an answer that no cutoff gives, a cutoff within
+        three decades of one that gives another answer, a hidden mode of which it cannot be told
+        whether it decays.
+        """
+        found: list[str] = []
+        if self.floating_order != self.answer.order:
+            found.append("the floating path has another order")
+        basis = self.answer.basis
+        span = self.cutoff_ranges.get(basis)
+        cutoff = next((decision.cutoff for decision in self.decisions), 0.0)
+        if basis in self.cutoff_ranges and span is None:
+            found.append("no cutoff gives the answer")
+        elif span is not None and not span[0] * NEAR_EDGE <= cutoff <= span[1] / NEAR_EDGE:
+            found.append("a cutoff less than three decades away gives another order")
+        elif basis == "nearest" and self._margin() < NEAR_EDGE:
+            found.append("a cutoff less than three decades away gives another order")
+        if any(mode.stability is Stability.CANNOT_TELL for mode in self.hidden_modes):
+            found.append("it cannot be told whether a hidden mode decays")
+        return tuple(found)
+
+    def _margin(self) -> float:
+        """Return the smallest factor between the cutoff and a singular value it decided on."""
+        factors = [float("inf")]
+        for decision in self.decisions:
+            if decision.smallest_kept is not None and decision.cutoff:
+                factors.append(decision.smallest_kept / decision.cutoff)
+            if decision.largest_dropped:
+                factors.append(decision.cutoff / decision.largest_dropped)
+        return min(factors)
+
+    @property
     def digest(self) -> str:
         """SHA-256 of what the exact path says; the same on every machine."""
         exact = {
@@ -208,6 +245,7 @@ class Examination:
             "readings_agree": self.readings_agree,
             "answer": {"order": self.answer.order, "basis": self.answer.basis},
             "verdict": self.verdict,
+            "fragile": list(self.fragile),
             "stabilizable": self.stabilizable,
             "detectable": self.detectable,
             "nearest": None if self.nearest is None else self.nearest.to_dict(),

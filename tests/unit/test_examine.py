@@ -850,7 +850,7 @@ KEYS = {
     "format", "version", "model", "order", "inputs", "outputs", "minimal_order", "floating_order",
     "unscaled_order", "paths_agree", "readings_agree", "answer", "verdict", "stabilizable",
     "detectable", "nearest", "parts", "modes", "decisions", "cutoff_ranges", "conflicts",
-    "response_change", "routes",
+    "response_change", "routes", "fragile",
     "within_uncertainty", "witness", "cautions", "not_done", "seconds", "environment", "digest",
 }  # fmt: skip
 
