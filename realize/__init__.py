@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as _numpy  # noqa: F401  # its cost is paid here, at the import, and never later
 
 if TYPE_CHECKING:
-    from realize import exact, floating
+    from realize import exact, floating, multiprecision
     from realize.convert import as_realization, as_transfer_matrix
     from realize.dispatch import (
         cancel,
@@ -26,6 +26,8 @@ if TYPE_CHECKING:
     )
     from realize.entries import Kind, Reading
     from realize.errors import (
+        AlgebraicLoopError,
+        AlgebraicLoopWarning,
         ArithmeticMismatchError,
         BudgetError,
         DisagreementError,
@@ -49,6 +51,13 @@ if TYPE_CHECKING:
     )
     from realize.examination.examine import examine
     from realize.examination.record import Examination
+    from realize.model.connections import (
+        assemble,
+        block_diagonal,
+        cascade,
+        loop,
+        sum_of,
+    )
     from realize.model.files import load, save
     from realize.model.realization import Realization
     from realize.model.transfer import TransferMatrix
@@ -67,6 +76,8 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 __all__ = [
+    "AlgebraicLoopError",
+    "AlgebraicLoopWarning",
     "ArithmeticMismatchError",
     "BudgetError",
     "Cancellation",
@@ -103,7 +114,10 @@ __all__ = [
     "ZeroDenominatorError",
     "as_realization",
     "as_transfer_matrix",
+    "assemble",
+    "block_diagonal",
     "cancel",
+    "cascade",
     "companion",
     "exact",
     "examine",
@@ -111,10 +125,13 @@ __all__ = [
     "from_markov_parameters",
     "kalman_parts",
     "load",
+    "loop",
     "markov_parameters",
     "minimal",
+    "multiprecision",
     "save",
     "staircase",
+    "sum_of",
     "transfer_matrix",
 ]
 
@@ -133,6 +150,8 @@ _HOMES = {
     ),
     "realize.entries": ("Kind", "Reading"),
     "realize.errors": (
+        "AlgebraicLoopError",
+        "AlgebraicLoopWarning",
         "ArithmeticMismatchError",
         "BudgetError",
         "DisagreementError",
@@ -156,6 +175,13 @@ _HOMES = {
     ),
     "realize.examination.examine": ("examine",),
     "realize.examination.record": ("Examination",),
+    "realize.model.connections": (
+        "assemble",
+        "block_diagonal",
+        "cascade",
+        "loop",
+        "sum_of",
+    ),
     "realize.model.files": ("load", "save"),
     "realize.model.realization": ("Realization",),
     "realize.model.transfer": ("TransferMatrix",),
@@ -172,7 +198,7 @@ _HOMES = {
     "realize.stability": ("Stability",),
 }
 _HOME_OF = {name: module for module, names in _HOMES.items() for name in names}
-_SUBMODULES = ("exact", "floating")
+_SUBMODULES = ("exact", "floating", "multiprecision")
 
 
 def __getattr__(name: str) -> Any:

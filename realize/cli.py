@@ -9,6 +9,7 @@ from __future__ import annotations
 import json
 import os
 import sys
+import traceback
 from dataclasses import asdict
 from typing import Any, NoReturn
 
@@ -35,7 +36,7 @@ from realize.stability import Stability, hidden_cautions
 
 __all__ = ["main"]
 
-FINDINGS, INPUT_ERROR, NOT_STABLE = 1, 2, 4
+FINDINGS, INPUT_ERROR, NOT_STABLE, BUG = 1, 2, 4, 70
 
 _EXIT_TEXT = (
     "Exit status: 0 nothing hidden and nothing in doubt; 1 hidden modes, or paths or readings "
@@ -56,6 +57,13 @@ class _Commands(click.Group):
             sys.exit(0)
         except (RealizeError, OSError) as error:
             _fail(str(error))
+        except (click.exceptions.Exit, click.ClickException, click.Abort):
+            raise
+        except Exception:
+            # A bug must not look like findings, whose status is the one Python gives by default.
+            traceback.print_exc()
+            click.echo("realize: this is a bug; please report it with the model", err=True)
+            sys.exit(BUG)
 
 
 def _fail(message: str) -> NoReturn:

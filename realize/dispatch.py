@@ -1,6 +1,7 @@
 """The forms at the top level: the arithmetic follows the data.
 
-Any float: floating. All rational: exact.
+Any float: floating. All rational: exact. Irrational constants and no float: multiprecision, with
+50 digits.
 """
 
 from __future__ import annotations
@@ -13,6 +14,7 @@ from realize import forms
 from realize.arithmetic.exact import ExactPath
 from realize.arithmetic.floating import FloatingPath
 from realize.arithmetic.path import Path
+from realize.entries import is_constant, round_entry
 from realize.model.realization import Kind, Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Cancellation, KalmanParts, Reduction, Staircase
@@ -34,7 +36,17 @@ Array = np.ndarray[Any, Any]
 
 def path_for(model: Any) -> Path:
     """Return the path that a model's own entries call for."""
-    return ExactPath() if getattr(model, "kind", None) == Kind.RATIONAL else FloatingPath()
+    kind = getattr(model, "kind", None)
+    if kind == Kind.PARAMETRIC:
+        return _multiprecision()
+    return ExactPath() if kind == Kind.RATIONAL else FloatingPath()
+
+
+def _multiprecision() -> Path:
+    # mpmath loads when it is needed.
+    from realize.arithmetic.multiprecision import MultiprecisionPath
+
+    return MultiprecisionPath()
 
 
 def staircase(model: Realization, *, side: str = "input") -> Staircase:
@@ -316,7 +328,9 @@ def from_markov_parameters(parameters: Any, *, sampling_period: Any = None) -> R
     2
     """
     entries, shape = forms.read_parameters(parameters)
-    path: Path = (
-        FloatingPath() if any(isinstance(entry, float) for entry in entries) else ExactPath()
-    )
+    if any(isinstance(entry, float) for entry in entries):
+        path: Path = FloatingPath()
+        entries = [round_entry(entry, "parameters") for entry in entries]
+    else:
+        path = _multiprecision() if any(map(is_constant, entries)) else ExactPath()
     return forms.realize_parameters(path, entries, shape, sampling_period)

@@ -1,8 +1,10 @@
 """Numbers as they enter and leave: what an entry may be, and which number it stands for.
 
-An entry is a float (a double) or an exact rational. `parse_entry` turns whatever a caller gives
-into one of the two or refuses it by name; `read_float` says which rational a double stands for
-under each reading; `round_fraction` goes back to a double with one correct rounding.
+An entry is a float (a double) or an exact rational; a model may also hold irrational constants,
+which are real numbers of sympy such as sqrt(2), without symbols. `parse_entry` turns whatever a
+caller gives into one of them or refuses it by name; `read_float` says which rational a double
+stands for under each reading; `round_fraction` and `round_constant` go to a double with one correct
+rounding, and `constant_near` gives any number of digits of a constant.
 
 The grammar of number strings is our own and strict (ASCII, no spaces, no underscores)::
 
@@ -26,7 +28,7 @@ from collections.abc import Iterable
 from decimal import Decimal
 from enum import StrEnum
 from fractions import Fraction
-from typing import Any, TypeAlias, TypeVar
+from typing import Any, Final, Literal, TypeAlias, TypeVar, overload
 
 import numpy as np
 from numpy.typing import NDArray
@@ -38,14 +40,17 @@ __all__ = [
     "MAX_DIGITS",
     "MAX_EXPONENT",
     "SIMPLE_BITS",
+    "Constant",
     "Entry",
     "Kind",
     "Place",
     "Reading",
+    "constant_near",
     "description_bits",
     "fraction_array",
     "int_from_digits",
     "int_to_digits",
+    "is_constant",
     "is_simple",
     "known_word",
     "make_fraction",
@@ -53,6 +58,8 @@ __all__ = [
     "parse_number",
     "place_text",
     "read_float",
+    "round_constant",
+    "round_entry",
     "round_fraction",
     "spell_fraction",
 ]
@@ -60,15 +67,23 @@ __all__ = [
 Entry: TypeAlias = float | Fraction
 """A number inside a model: a double, or an exact rational."""
 
+Constant: TypeAlias = Any
+"""An irrational constant: a real number of sympy, without symbols and without floats."""
+
 Place: TypeAlias = str | tuple[str, int, int]
 """Where an entry stands: a text, or (matrix, row, column) counted from zero."""
 
 
 class Kind(StrEnum):
-    """The arithmetic that the entries of a model call for."""
+    """The arithmetic that the entries of a model call for.
+
+    ``floating``: there is a float among them. ``rational``: all are rational. ``parametric``: no
+    float, but an irrational constant; every entry is then an expression of sympy.
+    """
 
     FLOATING = "floating"
     RATIONAL = "rational"
+    PARAMETRIC = "parametric"
 
 
 class Reading(StrEnum):
@@ -105,6 +120,15 @@ The simplest fraction that rounds to a random double takes about 53 bits, since 
 double from its neighbours. In draws of random doubles fewer than one in a thousand came out
 at 40 bits or less, while decimals of up to ten digits and ratios of six-digit integers all do.
 """
+
+_DOUBT_DIGITS: Final = 40
+"""Digits to which a constant is computed first: enough for a double, and to know it from zero."""
+
+_MOST_DOUBT_DIGITS: Final = 640
+"""Digits after which the middle between two doubles is no accident."""
+
+_LOST_DIGITS: Final = 60
+"""Digits that may cancel in a constant before it counts as one that may be zero."""
 
 _SMALLEST_EXPONENT = -1074  # of the last place of a subnormal double
 _HIDDEN_BIT = 1 << 52
@@ -199,6 +223,93 @@ def round_fraction(number: Fraction, where: Place = "number") -> float:
             "is too large for a double; scale the model, or keep it on the exact path",
             where=place,
         ) from None
+
+
+def round_entry(entry: Entry | Constant, where: Place = "number") -> float:
+    """Return the double nearest to an entry of any kind.
+
+    Raises
+    ------
+    EntryError
+        When the number is too large for a double.
+    """
+    if isinstance(entry, float):
+        return entry
+    if isinstance(entry, Fraction):
+        return round_fraction(entry, where)
+    if isinstance(entry, numbers.Rational):
+        return round_fraction(Fraction(int(entry.numerator), int(entry.denominator)), where)
+    return round_constant(entry, where)
+
+
+# Irrational constants
+
+
+def is_constant(entry: Entry | Constant) -> bool:
+    """Whether an entry is neither a float nor rational."""
+    return not isinstance(entry, (float, Fraction, numbers.Rational))
+
+
+def constant_near(value: Constant, digits: int, where: Place = "number") -> Fraction:
+    """Return a rational that agrees with an irrational constant to so many digits.
+
+    Raises
+    ------
+    EntryError
+        When the digits cancel, so that the value cannot be told from zero.
+    LimitError
+        When it lies beyond 10 to the power `MAX_EXPONENT`, up or down.
+
+    Notes
+    -----
+    The digits are those that sympy computes with error estimates that grow the precision as
+    digits cancel; nothing is simplified, and nothing is proved.
+    """
+    import sympy
+    from sympy.core.evalf import PrecisionExhausted
+
+    try:
+        number = value.evalf(digits, maxn=digits + _LOST_DIGITS, strict=True)
+    except PrecisionExhausted:
+        place = place_text(where)
+        raise EntryError(
+            f"{place}: {_shortened(str(value))} cannot be told from zero with "
+            f"{digits + _LOST_DIGITS} digits; simplify it, or write 0 if it is zero",
+            where=place,
+            found=str(value),
+        ) from None
+    if not isinstance(number, sympy.Float):
+        raise _unsupported(value, f"{_shortened(str(value))} has no decimals", where)
+    if not sympy.Integer(10) ** -MAX_EXPONENT < abs(number) < sympy.Integer(10) ** MAX_EXPONENT:
+        raise _too_large_exponent(where)
+    exact = sympy.Rational(number)
+    return make_fraction(int(exact.p), int(exact.q))
+
+
+def round_constant(value: Constant, where: Place = "number") -> float:
+    """Return the double nearest to an irrational constant.
+
+    Raises
+    ------
+    EntryError
+        When it is too large for a double, or cannot be told from the middle between two doubles.
+    """
+    digits = _DOUBT_DIGITS
+    while digits <= _MOST_DOUBT_DIGITS:
+        near = constant_near(value, digits, where)
+        # Both sides of what is not known must round alike.
+        slack = abs(near) / 10 ** (digits - 1)
+        low, high = round_fraction(near - slack, where), round_fraction(near + slack, where)
+        if low == high:
+            return low
+        digits *= 2
+    place = place_text(where)
+    raise EntryError(
+        f"{place}: {_shortened(str(value))} lies so near the middle between two doubles that "
+        f"{_MOST_DOUBT_DIGITS} digits do not part them; simplify it, or give the double meant",
+        where=place,
+        found=str(value),
+    )
 
 
 # Readings of a double
@@ -467,7 +578,13 @@ def _shortened(text: str) -> str:
 # Entries of every kind
 
 
-def parse_entry(value: Any, where: Place = "number") -> Entry:
+@overload
+def parse_entry(
+    value: Any, where: Place = "number", *, constants: Literal[False] = False
+) -> Entry: ...
+@overload
+def parse_entry(value: Any, where: Place = "number", *, constants: bool) -> Any: ...
+def parse_entry(value: Any, where: Place = "number", *, constants: bool = False) -> Any:
     """Return the float or the exact rational that a caller's value is.
 
     Parameters
@@ -477,11 +594,14 @@ def parse_entry(value: Any, where: Place = "number") -> Entry:
         that registers them with the standard number types are exact.
     where : str or (str, int, int)
         The place, for messages: a text, or matrix, row and column counted from zero.
+    constants : bool, keyword-only
+        Whether irrational constants are taken too; they are returned as they are.
 
     Raises
     ------
     EntryError
-        NaN, an infinity, text that is no number, a division by zero.
+        NaN, an infinity, text that is no number, a division by zero, a constant that cannot be
+        told from zero.
     UnsupportedEntryError
         A complex number, a bool, None, an extended-precision float, a symbol, any other object.
     LimitError
@@ -493,7 +613,7 @@ def parse_entry(value: Any, where: Place = "number") -> Entry:
     if kind is int:
         return make_fraction(value, 1)
     if kind is Fraction:
-        return value  # type: ignore[no-any-return]
+        return value
     if isinstance(value, str):
         return parse_number(str(value), where)
     if isinstance(value, float):  # numpy's double is one
@@ -515,7 +635,7 @@ def parse_entry(value: Any, where: Place = "number") -> Entry:
         import sympy
 
         if isinstance(value, sympy.Basic):
-            return _from_sympy(value, where)
+            return _from_sympy(value, where, constants)
     raise _unsupported(
         value,
         "an entry is an int, a float, a Fraction, a Decimal, a rational of sympy, or a string "
@@ -576,7 +696,7 @@ def _from_numpy(value: np.generic, where: Place) -> Entry:
     raise _unsupported(value, "entries are real numbers", where)
 
 
-def _from_sympy(value: Any, where: Place) -> Entry:
+def _from_sympy(value: Any, where: Place, constants: bool) -> Entry | Constant:
     """Numbers of sympy that are not rational, and everything else that sympy makes."""
     import sympy
 
@@ -595,9 +715,26 @@ def _from_sympy(value: Any, where: Place) -> Entry:
             "models with symbols are not built yet; put numbers in for the symbols",
             where,
         )
-    raise _unsupported(
-        value,
-        "only rational numbers and floats of sympy are entries; for a number such as sqrt(2) "
-        "give a float or a fraction near it",
-        where,
-    )
+    if not constants:
+        raise _unsupported(
+            value,
+            "only rational numbers and floats of sympy are taken here; for a number such as "
+            "sqrt(2) give a float or a fraction near it",
+            where,
+        )
+    if not isinstance(value, sympy.Expr) or value.is_real is not True:
+        raise _unsupported(
+            value,
+            f"{_shortened(str(value))} is not known to be a real number; entries are real. Where "
+            "only rounding makes it complex, give its real part, sympy.re(...)",
+            where,
+        )
+    if value.has(sympy.Float):
+        raise _unsupported(
+            value,
+            f"{_shortened(str(value))} holds a float, so its digits end there; write the float as "
+            "a rational number, or round the whole with float(...)",
+            where,
+        )
+    constant_near(value, _DOUBT_DIGITS, where)
+    return value

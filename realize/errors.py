@@ -14,6 +14,8 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 __all__ = [
+    "AlgebraicLoopError",
+    "AlgebraicLoopWarning",
     "ArithmeticMismatchError",
     "BudgetError",
     "DisagreementError",
@@ -195,6 +197,20 @@ class UnknownWordError(RealizeError, ValueError):
         self.allowed = tuple(allowed)
 
 
+class AlgebraicLoopError(RealizeError, ValueError):
+    """Blocks wired so that direct feedthroughs run in a circle without a unique solution.
+
+    Attributes
+    ----------
+    ports : tuple of str
+        The ports around the loop: ``"plant.u1"``, ``"plant.y1"``, ...
+    """
+
+    def __init__(self, message: str, *, ports: Sequence[str] = ()) -> None:
+        super().__init__(message)
+        self.ports = tuple(ports)
+
+
 class ToleranceError(RealizeError, ValueError):
     """A tolerance or uncertainty that is negative, not finite or not a number.
 
@@ -368,6 +384,10 @@ class NotBuiltError(RealizeError, NotImplementedError):
 
 class RealizeWarning(UserWarning):
     """Root of the warnings that the library gives."""
+
+
+class AlgebraicLoopWarning(RealizeWarning):
+    """A connection has an algebraic loop that is nearly ill-posed."""
 
 
 class HiddenInstabilityWarning(RealizeWarning):

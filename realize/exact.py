@@ -1,5 +1,7 @@
 """The forms in rational arithmetic. Floats are refused: say which exact model you mean.
 
+Irrational constants are refused too: `realize.multiprecision` takes them.
+
 Every answer is proved: subspaces are found modulo primes, lifted, and verified over the
 rationals before anything is returned.
 """
@@ -12,7 +14,8 @@ import numpy as np
 
 from realize import forms
 from realize.arithmetic.exact import ExactPath
-from realize.errors import InexactInputError
+from realize.entries import is_constant
+from realize.errors import InexactInputError, UnsupportedEntryError
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Cancellation, KalmanParts, Reduction, Staircase
@@ -74,5 +77,12 @@ def from_markov_parameters(parameters: Any, *, sampling_period: Any = None) -> R
             raise InexactInputError(
                 f"parameters hold the float {entry!r}; the exact face takes rational numbers only. "
                 "Write them as integers, fractions or strings, or use realize.floating"
+            )
+        if is_constant(entry):
+            raise UnsupportedEntryError(
+                f"parameters hold the irrational constant {entry}; the exact face takes rational "
+                "numbers only. Use realize.multiprecision",
+                where="parameters",
+                found=type(entry).__name__,
             )
     return forms.realize_parameters(ExactPath(), entries, shape, sampling_period)

@@ -1,4 +1,4 @@
-"""The forms in double precision, on LAPACK. Rational models are rounded.
+"""The forms in double precision, on LAPACK. Rational models and constants are rounded.
 
 ``tolerance``: a singular value counts as zero when it is at most tolerance times the Frobenius
 norm of the whole scaled model [A B; C 0]; None for the default, order * 2**-32
@@ -13,6 +13,7 @@ import numpy as np
 
 from realize import forms
 from realize.arithmetic.floating import FloatingPath
+from realize.entries import round_entry
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Cancellation, KalmanParts, Reduction, Staircase
@@ -76,5 +77,6 @@ def from_markov_parameters(
     parameters: Any, *, sampling_period: Any = None, tolerance: float | None = None
 ) -> Reduction:
     """Realize a sequence of Markov parameters. See `realize.from_markov_parameters`."""
-    entries, shape = forms.read_parameters(parameters)
+    given, shape = forms.read_parameters(parameters)
+    entries = [round_entry(entry, "parameters") for entry in given]
     return forms.realize_parameters(FloatingPath(tolerance), entries, shape, sampling_period)

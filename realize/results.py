@@ -196,7 +196,7 @@ class Mode:
         }
 
 
-@dataclass(frozen=True, kw_only=True, slots=True)
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class RemovedModes:
     """What a reduction removed.
 
@@ -212,7 +212,20 @@ class RemovedModes:
 
     count: int
     polynomial: Polynomial | None
-    modes: tuple[Mode, ...]
+    _modes: Deferred[tuple[Mode, ...]]
+
+    @property
+    def modes(self) -> tuple[Mode, ...]:
+        """The modes removed; computed at first access."""
+        return self._modes.get()
+
+    def __eq__(self, other: object) -> bool:
+        if not isinstance(other, RemovedModes):
+            return NotImplemented
+        mine, theirs = ((r.count, r.polynomial, r.modes) for r in (self, other))
+        return mine == theirs
+
+    __hash__ = None  # type: ignore[assignment]  # compared by value
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)

@@ -362,6 +362,11 @@ WEAK_IS_NOT_HIDDEN = (
     "A weak mode is not a hidden one. Its effect is small under this scaling and at these"
     " connections, but it is there. " + _DEFERENCE
 )
+NEARLY_ILL_POSED_LOOP = (
+    "Direct feedthroughs run in a circle that is nearly without a solution. A small change of one"
+    " of their gains changes the connected model beyond recognition, and no plant passes a signal"
+    " on at once: put in the delays and lags that were left out. " + _DEFERENCE
+)
 ROUNDED_COEFFICIENTS = (
     "Coefficients that are correctly rounded can still describe another filter. Judge the numbers"
     " delivered by their own poles, not by those of the design. " + _DEFERENCE
@@ -422,6 +427,7 @@ def hidden_cautions(modes: Iterable[HiddenMode]) -> tuple[str, ...]:
 def hidden_warning(modes: Iterable[HiddenMode]) -> str:
     """Return one sentence that names modes which a reduction removed and which may not decay."""
     named = ", ".join(dict.fromkeys(f"{_mode_text(m.value)} ({m.stability})" for m in modes))
+    named = named or "too large for a double"
     return (
         f"the reduction removed modes that are not known to be stable: {named}. The plant keeps"
         " them, and the transfer function does not show them. " + _NOT_FROM_THE_REDUCED_MODEL

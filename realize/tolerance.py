@@ -1,6 +1,6 @@
-"""The only cutoff rule: when the floating path calls a number zero.
+"""The only cutoff rule: when a path that rounds calls a number zero.
 
-Every rank decision of the floating path compares singular values with one number,
+Every rank decision of such a path compares singular values with one number,
 ``cutoff = tolerance * scale``, fixed before the first decision. The scale is the Frobenius norm of
 the whole scaled model ``[A B; C 0]``, never of the block at hand: cutoffs scaled by the current
 block lose to cutoffs scaled by the whole problem, because the blocks shrink as the reduction goes
@@ -8,13 +8,15 @@ on while the rounding errors do not.
 
 The default is a heuristic, and it is part of the interface. Factors between 1e3 and 1e10 times
 ``order * eps`` decide alike on well separated models; 2**-32 lies in the middle of that range on a
-logarithmic scale.
+logarithmic scale. With more digits than a double has there is room on both sides; see
+`digits_tolerance`.
 """
 
 from __future__ import annotations
 
 import math
-from typing import Final
+from fractions import Fraction
+from typing import Any, Final, TypeVar
 
 from realize.errors import ToleranceError
 
@@ -25,8 +27,12 @@ __all__ = [
     "cutoff",
     "default_tolerance",
     "difference",
+    "digits_tolerance",
+    "root_doubt",
     "rounding_floor",
 ]
+
+_Number = TypeVar("_Number", float, Fraction)
 
 DEFAULT_FACTOR: Final = 2.0**-32
 """Default tolerance for each state; the default tolerance is the order times this."""
@@ -36,6 +42,9 @@ FLOOR_FACTOR: Final = 8.0
 
 UNIT_ROUNDOFF: Final = 2.0**-52
 """Spacing of the doubles next to 1."""
+
+SHARE_OF_DIGITS: Final = Fraction(1, 2)
+"""Share of the digits of the multiprecision path within which a number counts as not zero."""
 
 
 def check_tolerance(tolerance: float | None) -> float | None:
@@ -50,14 +59,13 @@ def check_tolerance(tolerance: float | None) -> float | None:
         return None
     if isinstance(tolerance, bool) or not isinstance(tolerance, (int, float)):
         raise ToleranceError(
-            f"tolerance is {tolerance!r}; wanted a non-negative number, or None for the default "
-            "(order * 2**-32)"
+            f"tolerance is {tolerance!r}; wanted a non-negative number, or None for the default"
         )
     value = float(tolerance)
     if not math.isfinite(value) or value < 0.0:
         raise ToleranceError(
             f"tolerance is {tolerance!r}; wanted a finite number that is not negative. Pass None "
-            "for the default (order * 2**-32)"
+            "for the default"
         )
     return value
 
@@ -65,6 +73,20 @@ def check_tolerance(tolerance: float | None) -> float | None:
 def default_tolerance(order: int) -> float:
     """Return the tolerance used when none is given: ``order * 2**-32``."""
     return max(order, 1) * DEFAULT_FACTOR
+
+
+def digits_tolerance(order: int, digits: int) -> Fraction:
+    """Return the default tolerance of the multiprecision path: ``order * 10**-(digits // 2)``.
+
+    A number is lost on two sides: rounding noise is amplified as the reduction goes on, and what
+    is really there may be small. Half of the digits is left to each, so that doubling the digits
+    makes room on both. Measured at 30, 50 and 100 digits on 112 models of 5 to 20 states with a
+    planted hidden part (dense; diagonal with close or stiff eigenvalues; weakly coupled chains;
+    companion forms of consecutive integers): 4, 2 and 0 wrong orders, all of them stiff, where
+    noise grew by up to 1e14; with two thirds of the digits 5, 2 and 0, with three quarters 14, 4
+    and 2. At 30 states noise grew by up to 1e27, and chains hold values down to 1e-26.
+    """
+    return max(order, 1) * Fraction(1, 10 ** int(SHARE_OF_DIGITS * digits))
 
 
 def cutoff(order: int, scale: float, tolerance: float | None) -> float:
@@ -82,21 +104,30 @@ def cutoff(order: int, scale: float, tolerance: float | None) -> float:
     return (default_tolerance(order) if tolerance is None else tolerance) * scale
 
 
-def difference(first: float, second: float) -> float:
+def difference(first: _Number, second: _Number, roundoff: Any = UNIT_ROUNDOFF) -> _Number:
     """Return first - second, and zero where that is within the rounding of the two numbers.
 
     The rest of such a difference has no digit in common with what was meant, and a scaling would
     lift it to full size.
     """
     value = first - second
-    return value if abs(value) > 4.0 * UNIT_ROUNDOFF * max(abs(first), abs(second)) else 0.0
+    return value if abs(value) > 4 * roundoff * max(abs(first), abs(second)) else 0 * value
 
 
-def rounding_floor(order: int, scale: float) -> float:
+def rounding_floor(order: int, scale: Any, roundoff: Any = UNIT_ROUNDOFF) -> Any:
     """Return the size below which a singular value is rounding noise: ``8 order eps scale``.
 
     The bound for a product of Householder transformations is a modest constant times
     ``order * eps`` (Higham, Accuracy and Stability of Numerical Algorithms, section 19.3); 8 is
     the heuristic part.
     """
-    return FLOOR_FACTOR * max(order, 1) * UNIT_ROUNDOFF * scale
+    return FLOOR_FACTOR * max(order, 1) * roundoff * scale
+
+
+def root_doubt(root: complex) -> float:
+    """Return how far a root computed in doubles may lie from the true one.
+
+    A root of multiplicity k is good to the k-th root of the rounding only; two is the guess for
+    what is not known to be multiple.
+    """
+    return math.sqrt(UNIT_ROUNDOFF) * max(1.0, abs(root))

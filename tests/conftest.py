@@ -42,7 +42,7 @@ def pytest_report_header() -> list[str]:
     ]
 
 
-@pytest.fixture(params=["exact", "floating"])
+@pytest.fixture(params=["exact", "floating", "multiprecision"])
 def face(request: pytest.FixtureRequest) -> ModuleType:
     """Each face in turn."""
     return importlib.import_module(f"realize.{request.param}")

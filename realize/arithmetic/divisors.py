@@ -43,6 +43,9 @@ def split(f: Array, g: Array, degree: int) -> tuple[Array, Array, Array, float]:
     Cofactors come from the null vector of a Sylvester submatrix, the factor from least squares,
     and all three are refined together by Gauss-Newton, with the leading coefficient of h held.
     """
+    # Powers of two, so that squares neither overflow nor vanish.
+    f_shift, g_shift = (int(np.frexp(np.abs(p).max())[1]) for p in (f, g))
+    f, g = np.ldexp(f, -f_shift), np.ldexp(g, -g_shift)
     unit = _variable_unit(f if f.size >= g.size else g)
     f, g = (np.ldexp(p, -unit * np.arange(p.size)) for p in (f, g))
     f_norm, g_norm = float(np.linalg.norm(f)), float(np.linalg.norm(g))
@@ -59,8 +62,8 @@ def split(f: Array, g: Array, degree: int) -> tuple[Array, Array, Array, float]:
             break
         h, u, v, best = h_next, u_next, v_next, residual
     h = np.ldexp(h, unit * np.arange(h.size))
-    u = np.ldexp(u * f_norm, unit * np.arange(u.size))
-    v = np.ldexp(v * g_norm, unit * np.arange(v.size))
+    u = np.ldexp(u * f_norm, unit * np.arange(u.size) + f_shift)
+    v = np.ldexp(v * g_norm, unit * np.arange(v.size) + g_shift)
     return h, u, v, best
 
 
@@ -70,7 +73,8 @@ def _variable_unit(polynomial: Array) -> int:
     span = int(kept[-1] - kept[0])
     if not span:
         return 0
-    return round(math.log2(abs(polynomial[kept[-1]] / polynomial[kept[0]])) / span)
+    first, last = (math.log2(abs(polynomial[k])) for k in (kept[0], kept[-1]))
+    return round((last - first) / span)
 
 
 def _convolution(polynomial: Array, columns: int) -> Array:

@@ -21,7 +21,7 @@ from realize.errors import InexactInputError
 from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
 from realize.results import Mode, Part, RankDecision
-from realize.stability import damping, judge, time_constant
+from realize.stability import Stability, damping, judge, time_constant
 
 __all__ = ["ExactPath", "ExactReach", "OpenedExact"]
 
@@ -545,6 +545,7 @@ class ExactPath:
     """
 
     is_exact = True
+    kind = Kind.RATIONAL
 
     def __init__(self, budget: float | None = None) -> None:
         self.clock = Clock(budget)
@@ -553,6 +554,10 @@ class ExactPath:
         return OpenedExact(self.admit(model), self.clock)
 
     def admit(self, source: Any) -> Any:
+        source._refuse_constants(
+            "the exact path takes rational numbers only. Use realize.multiprecision, which takes "
+            "any number of digits of it"
+        )
         if source.kind != Kind.RATIONAL:
             raise InexactInputError(
                 f"found a model with floats ({source!r}), wanted a rational one. Say which exact "
@@ -598,6 +603,15 @@ class ExactPath:
 
     def factors(self, polynomial: Polynomial) -> tuple[tuple[Polynomial, int], ...]:
         return polynomials.factor(polynomial)
+
+    def judged(
+        self, factor: Polynomial, whole: Polynomial, period: Any
+    ) -> list[tuple[complex, Stability]]:
+        multiplicities = dict(polynomials.factor(whole))
+        # The companion form has one eigenvector for each eigenvalue, so a repeated pole is
+        # defective.
+        judged = judge(factor, period, lambda f: multiplicities[f] == 1)
+        return [(root.value, stability) for root, _, stability in judged]
 
     def sequence(self, parameters: Array) -> Sequenced:
         """Realize a finite sequence with the fewest states, exactly.

@@ -24,7 +24,7 @@ from realize.arithmetic.scaling import Scaling, scaling_of, unscaled
 from realize.errors import PrecisionError
 from realize.model.realization import Kind, Realization
 from realize.results import Mode, Part, RankDecision
-from realize.stability import computed_stability, damping, time_constant
+from realize.stability import Stability, computed_stability, damping, time_constant
 
 __all__ = ["FloatingPath", "FloatingReach", "OpenedFloating"]
 
@@ -231,7 +231,11 @@ class OpenedFloating:
     def __init__(self, model: Realization, tolerance: float | None, scaled: bool = True) -> None:
         self.model = model
         A, B, C = model.A, model.B, model.C
-        self.scaling: Scaling = scaling_of(A, B, C) if scaled and A.shape[0] else unscaled(A, B, C)
+        with np.errstate(all="ignore"):
+            # What overflows is found by the norm of the result, and refused there.
+            self.scaling: Scaling = (
+                scaling_of(A, B, C) if scaled and A.shape[0] else unscaled(A, B, C)
+            )
         self.A, self.B, self.C = self.scaling.A, self.scaling.B, self.scaling.C
         self.tolerance = tolerance
         self.cutoff = rule.cutoff(model.order, self.scaling.scale, tolerance)
@@ -350,8 +354,10 @@ class OpenedFloating:
         steps = scaling.time * np.arange(order + 1)
         # One factor A fewer than in the denominator: the series starts at C B / s.
         shifted = (steps - scaling.time)[:, None, None] + units
-        above = np.ldexp(above, shifted)
-        denominator = np.ldexp(below, steps)
+        with np.errstate(over="ignore"):
+            above = np.ldexp(above, shifted)
+            denominator = _in_range(np.ldexp(below, steps), "the characteristic polynomial")
+        _in_range(above, "a numerator")
         above += denominator[:, None, None] * model.D
         rows = tuple(
             tuple(_stripped(above[:, i, j]) for j in range(model.input_count))
@@ -365,10 +371,20 @@ class OpenedFloating:
         if count:
             result[0] = model.D
         power = model.B
-        for k in range(1, count):
-            result[k] = model.C @ power
-            power = model.A @ power
-        return result
+        with np.errstate(over="ignore", invalid="ignore"):
+            for k in range(1, count):
+                result[k] = model.C @ power
+                power = model.A @ power
+        return _in_range(result, "a Markov parameter")
+
+
+def _in_range(values: Array, what: str) -> Array:
+    """Return the values, or refuse what is too large for a double."""
+    if not np.isfinite(values).all():
+        raise PrecisionError(
+            f"{what} is too large for a double; give time another unit, or use the exact path"
+        )
+    return values
 
 
 def _stripped(coefficients: Array) -> tuple[float, ...]:
@@ -389,6 +405,7 @@ class FloatingPath:
     """
 
     is_exact = False
+    kind = Kind.FLOATING
 
     def __init__(self, tolerance: float | None = None, *, scaled: bool = True) -> None:
         self.tolerance = rule.check_tolerance(tolerance)
@@ -490,6 +507,14 @@ class FloatingPath:
             elif root.imag > 0:
                 found.append(((1.0, -2.0 * root.real, abs(root) ** 2), 1))
         return tuple(found)
+
+    def judged(
+        self, factor: tuple[float, ...], whole: tuple[float, ...], period: Any
+    ) -> list[tuple[complex, Stability]]:
+        return [
+            (value, computed_stability(value, period, rule.root_doubt(value)))
+            for value in np.roots(factor).astype(complex).tolist()
+        ]
 
     def sequence(self, parameters: Array) -> Sequenced:
         """Realize a finite sequence, by the singular values of its Hankel matrix.

@@ -38,6 +38,12 @@ __all__ = [
 
 PRIME_BITS: Final = 62
 
+_PROBES: Final = 12
+"""How many single entries are reconstructed before all of them are."""
+
+_SPARE_BITS: Final = 16
+"""Bits by which a modulus must exceed a probed entry; a chance agreement has odds of 2^-16."""
+
 _REFUSALS: Final = 8
 """How often a lifted subspace may fail its verification; unlucky primes are far rarer."""
 
@@ -297,6 +303,23 @@ def _to_rationals(residues: list[int], modulus: int) -> list[fmpq] | None:
     return found
 
 
+def _settled(images: list[list[int]], moduli: list[int]) -> bool:
+    """Whether a few single entries can be reconstructed, with bits to spare."""
+    count = len(images[0])
+    if not count:
+        return True
+    chosen = sorted({k * (count - 1) // (_PROBES - 1) for k in range(_PROBES)})
+    joined, modulus = _combine([[image[k] for k in chosen] for image in images], moduli)
+    bound = math.isqrt((modulus - 1) // 2)
+    for residue in joined:
+        pair = _reconstruct(residue, modulus, bound)
+        if pair is None:
+            return False
+        if abs(pair[0]).bit_length() + pair[1].bit_length() > modulus.bit_length() - _SPARE_BITS:
+            return False
+    return True
+
+
 def lift(
     compute: Callable[[int], tuple[tuple[Any, ...], list[int]] | None],
     better: Callable[[tuple[Any, ...], tuple[Any, ...]], bool],
@@ -324,16 +347,16 @@ def lift(
 
     Notes
     -----
-    No height bound is needed. A random-looking combination of the residues is the probe: while it
-    cannot be reconstructed, or a fresh prime contradicts it, nothing else is tried. The proof is
-    the verification.
+    No height bound is needed. A few single entries are the probe: while one of them cannot be
+    reconstructed with bits to spare, nothing else is tried. (A combination of all entries would be
+    as long as their common denominator, which may be many times longer than any of them.) The
+    proof is the verification.
     """
     profile: tuple[Any, ...] | None = None
     images: list[list[int]] = []
     moduli: list[int] = []
-    probe: list[int] = []
-    expected: tuple[int, int] | None = None
     refused = 0
+    wanted = 1
     for prime in primes():
         clock.check("lifting a subspace to the rationals")
         image = compute(prime)
@@ -341,27 +364,20 @@ def lift(
             continue
         found, residues = image
         if profile is None or better(found, profile):
-            profile, images, moduli, probe, expected = found, [], [], [], None
+            profile, images, moduli, wanted = found, [], [], 1
         elif found != profile:
             continue
         images.append(residues)
         moduli.append(prime)
-        # Weights are small and irregular, so that no structure of the entries cancels in the sum.
-        mixed = sum((7919 * i % 1009 + 1) * r for i, r in enumerate(residues)) % prime
-        probe.append(mixed)
-        confirmed = expected is not None and (expected[0] - mixed * expected[1]) % prime == 0
-        first = len(moduli) == 1
-        joined, modulus = _combine([[value] for value in probe], moduli)
-        expected = _reconstruct(joined[0], modulus, math.isqrt((modulus - 1) // 2))
-        if not (confirmed or first):
+        if len(moduli) < wanted or not _settled(images, moduli):
             continue
         rationals = _to_rationals(*_combine(images, moduli))
-        if rationals is None:
-            continue
-        answer = verify(profile, rationals)
+        answer = None if rationals is None else verify(profile, rationals)
         if answer is not None:
             return answer
-        refused += 1
+        # Some entry is longer than those that were probed; a few primes more each time.
+        wanted = len(moduli) + 1 + len(moduli) // 4
+        refused += rationals is not None
         if refused > _REFUSALS:
             raise VerificationError(
                 f"a subspace on which several primes agree was refused {refused} times by the "

@@ -14,8 +14,9 @@ from typing import Any, Protocol, Self, TypeVar
 
 import numpy as np
 
-from realize.model.realization import Realization
+from realize.model.realization import Kind, Realization
 from realize.results import Mode, Part, RankDecision
+from realize.stability import Stability
 
 __all__ = [
     "Completion",
@@ -207,6 +208,11 @@ class Path(Protocol):
         """Whether what the path says is proved."""
         ...
 
+    @property
+    def kind(self) -> Kind:
+        """The kind of the models that the path returns."""
+        ...
+
     def open(self, model: Realization) -> Opened[Reach]:
         """Open a model on this path."""
         ...
@@ -242,6 +248,12 @@ class Path(Protocol):
 
     def factors(self, polynomial: tuple[Any, ...]) -> tuple[tuple[tuple[Any, ...], int], ...]:
         """Return irreducible monic factors with multiplicities."""
+        ...
+
+    def judged(
+        self, factor: tuple[Any, ...], whole: tuple[Any, ...], period: Any
+    ) -> Sequence[tuple[complex, Stability]]:
+        """Return the roots of a factor of a denominator, and what a mode there does."""
         ...
 
     def sequence(self, parameters: Array) -> Sequenced:

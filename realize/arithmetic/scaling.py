@@ -22,9 +22,19 @@ from typing import Any, Final
 import numpy as np
 from scipy.linalg import lapack
 
+from realize.errors import PrecisionError
+
 __all__ = ["Scaling", "scaling_of", "unscaled"]
 
 Array = np.ndarray[Any, Any]
+
+OUT_OF_RANGE: Final = (
+    "the entries reach so far that no powers of two bring the model into the range of doubles; "
+    "use the exact path, or give the states other units"
+)
+
+_LARGEST: Final = 480
+"""Exponent beyond which a square overflows or vanishes, with room for sums."""
 
 _RIDGE: Final = 2.0**-20
 """Weight that holds the unit of time where nothing else does, far below that of one entry."""
@@ -74,6 +84,8 @@ def unscaled(A: Array, B: Array, C: Array) -> Scaling:
     largest = max(float(np.abs(M).max(initial=0.0)) for M in (A, B, C))
     shift = math.frexp(largest)[1]
     norm = _frobenius(*(np.ldexp(M, -shift) for M in (A, B, C)))
+    if shift > _LARGEST or shift < -_LARGEST:
+        raise PrecisionError(OUT_OF_RANGE)
     return Scaling(states, inputs, outputs, 0, A, B, C, math.ldexp(norm, shift))
 
 
@@ -146,6 +158,8 @@ def _balance(graph: Array, order: int) -> tuple[Array, int]:
     if time:
         np.ldexp(block, -time, out=block)
     time += int(whole[size])
+    if not math.isfinite(_squares(graph)):
+        raise PrecisionError(OUT_OF_RANGE)
     if noise is None:
         factors = lapack.dgebal(graph, scale=1, permute=0, overwrite_a=1)[3]
         steps: Array = np.frexp(factors)[1] - 1

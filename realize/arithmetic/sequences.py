@@ -31,17 +31,20 @@ def _in_units(parameters: Array) -> tuple[Array, int, Array, Array]:
     outputs and inputs are brought to norm 1.
     """
     count = parameters.shape[0]
+    # One power of two first, so that squares neither overflow nor vanish.
+    shift = int(np.frexp(np.abs(parameters).max(initial=0.0))[1])
+    parameters = np.ldexp(parameters, -shift)
     sizes = np.abs(parameters).max(axis=(1, 2), initial=0.0)
     first, second = sizes[: (count + 1) // 2], sizes[count // 2 :]
     time = 0
     if first.max(initial=0.0) > 0.0 and second.max(initial=0.0) > 0.0:
         steps = max(count // 2, 1)
-        time = round(math.log2(second.max() / first.max()) / steps)
+        time = round((math.log2(second.max()) - math.log2(first.max())) / steps)
     scaled = np.ldexp(parameters, (-time * np.arange(count))[:, None, None])
     outputs = np.frexp(np.sqrt((scaled**2).sum(axis=(0, 2))))[1]
     scaled = np.ldexp(scaled, -outputs[:, None])
     inputs = np.frexp(np.sqrt((scaled**2).sum(axis=(0, 1))))[1]
-    return np.ldexp(scaled, -inputs), time, outputs, inputs
+    return np.ldexp(scaled, -inputs), time, outputs + shift, inputs
 
 
 def _hankel(parameters: Array, rows: int, columns: int, start: int = 0) -> Array:

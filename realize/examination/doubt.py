@@ -12,7 +12,7 @@ import scipy.linalg
 
 from realize.model.realization import Kind, Realization
 from realize.results import Mode
-from realize.stability import Stability
+from realize.stability import Stability, root_counts
 from realize.tolerance import UNIT_ROUNDOFF, rounding_floor
 
 __all__ = ["with_doubt"]
@@ -42,7 +42,12 @@ def with_doubt(modes: Iterable[Mode], model: Realization, basis: str) -> tuple[M
     doubtful = (Stability.STABLE, Stability.UNSTABLE)
     if model.kind != Kind.FLOATING or not any(mode.stability in doubtful for mode in found):
         return found
-    A = model.A
+    period = model.sampling_period
+    # In a unit of time that keeps squares within doubles; the boundary |z| = 1 has none to choose.
+    largest_entry = float(np.abs(model.A).max(initial=0.0))
+    shift = max(math.frexp(largest_entry)[1], -1000) if period is None else 0
+    A = np.ldexp(model.A, -shift)
+    unit = math.ldexp(1.0, -shift)
     norm = float(np.linalg.norm(A))
     if basis == "nearest":
         accuracy = np.full(A.shape, rounding_floor(model.order, norm) / model.order)
@@ -50,21 +55,26 @@ def with_doubt(modes: Iterable[Mode], model: Realization, basis: str) -> tuple[M
         accuracy = UNIT_ROUNDOFF * np.abs(A)
     values, left, right = scipy.linalg.eig(A, left=True, right=True)
     largest = _ALLOWANCE * math.sqrt(float(np.linalg.norm(accuracy)) * norm)
-    period = model.sampling_period
     return tuple(
         replace(mode, stability=Stability.CANNOT_TELL)
         if mode.stability in doubtful
-        and 0.0 < abs(_margin(mode, period)) <= largest
-        and abs(_margin(mode, period)) <= _reach(mode.value, values, left, right, accuracy)
+        and not _on_boundary(mode, period)
+        and abs(_margin(mode.value * unit, period)) <= largest
+        and abs(_margin(mode.value * unit, period))
+        <= _reach(mode.value * unit, values, left, right, accuracy)
         else mode
         for mode in found
     )
 
 
-def _margin(mode: Mode, period: Any) -> float:
-    """Return how far a mode lies off the boundary; 0.0 when its enclosure touches it."""
-    margin = mode.value.real if period is None else abs(mode.value) - 1.0
-    return 0.0 if abs(margin) <= mode.radius else margin
+def _margin(value: complex, period: Any) -> float:
+    """Return how far a computed value lies off the boundary."""
+    return value.real if period is None else abs(value) - 1.0
+
+
+def _on_boundary(mode: Mode, period: Any) -> bool:
+    """Whether the mode, an exact root, lies exactly on the boundary: counted, not computed."""
+    return mode.polynomial is not None and root_counts(mode.polynomial, period).boundary > 0
 
 
 def _reach(value: complex, values: Array, left: Array, right: Array, accuracy: Array) -> float:

@@ -6,11 +6,12 @@ import time
 from collections.abc import Iterable, Sequence
 from typing import Final
 
-from realize.arithmetic.floating import FloatingPath, OpenedFloating
+from realize.arithmetic.floating import FloatingPath, FloatingReach, OpenedFloating
 from realize.arithmetic.modular import Clock
 from realize.entries import Reading, is_simple, known_word
 from realize.errors import (
     BudgetError,
+    EntryError,
     NotBuiltError,
     PrecisionError,
     UnknownWordError,
@@ -106,10 +107,13 @@ def examine(
     floating = _Floating(model, tolerance)
     exact, not_done, exact_seconds = _exact_answers(model, words, budget)
     orders = {word: found.order for word, found in exact.items()}
-    replays = {
-        word: Replay.of(floating.opened, found.stairs, floating.run)
-        for word, found in exact.items()
-    }
+    if floating.failed is not None:
+        if not exact:
+            raise PrecisionError(
+                f"neither path has an answer: {'; '.join(not_done)}; {floating.failed}"
+            )
+        not_done.append(f"the floating path did not run: {floating.failed}")
+    replays = {word: floating.replay(found.stairs) for word, found in exact.items()}
     answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
     hidden = Deferred(
         lambda: (
@@ -130,8 +134,12 @@ def examine(
         answer=answer,
         verdict=_verdict(model.order, answer, orders, floating.order),
         nearest=nearest,
-        cutoff_ranges={word: replay.interval for word, replay in replays.items()},
-        conflicts={word: replay.conflicts for word, replay in replays.items()},
+        cutoff_ranges={
+            word: None if replay is None else replay.interval for word, replay in replays.items()
+        },
+        conflicts={
+            word: () if replay is None else replay.conflicts for word, replay in replays.items()
+        },
         routes={word: found.routes for word, found in exact.items()},
         not_done=tuple(not_done),
         seconds={"floating": floating.seconds, "exact": exact_seconds},
@@ -155,35 +163,68 @@ def examine(
 
 
 class _Floating:
-    """What the floating path says of the model."""
+    """What the floating path says of the model; nothing, where no scaling fits doubles."""
 
     def __init__(self, model: Realization, tolerance: float | None) -> None:
         began = time.perf_counter()
         self.path = FloatingPath(tolerance)
-        self.opened: OpenedFloating = self.path.open(model)
-        self.run = reach_and_see(self.opened)
-        self.order = self.run[1].dimension
-        unscaled = FloatingPath(tolerance, scaled=False).open(model)
-        self.unscaled_order = reach_and_see(unscaled)[1].dimension
+        self.failed: str | None = None
+        self.run: tuple[FloatingReach, FloatingReach] | None = None
+        try:
+            self.opened: OpenedFloating | None = self.path.open(model)
+            self.run = reach_and_see(self.opened)
+        except (PrecisionError, EntryError) as error:
+            self.opened, self.failed = None, str(error)
+        self.order = None if self.run is None else self.run[1].dimension
+        self.unscaled_order = _unscaled_order(model, tolerance)
         self.seconds = time.perf_counter() - began
 
+    def _ran(self) -> tuple[OpenedFloating, tuple[FloatingReach, FloatingReach]]:
+        if self.opened is None or self.run is None:
+            raise PrecisionError(f"the floating path did not run: {self.failed}")
+        return self.opened, self.run
+
+    def replay(self, stairs: tuple[tuple[int, ...], tuple[int, ...]]) -> Replay | None:
+        """Return the replay with exact stairs."""
+        return (
+            None if self.failed is not None else Replay.of(self._ran()[0], stairs, self._ran()[1])
+        )
+
+    def nearest(self, model: Realization, clock: Clock) -> tuple[Nearest, ExactAnswer]:
+        """Return the nearest model of lower order, and what it hides."""
+        return nearest_of(model, *self._ran(), clock)
+
     def decisions(self) -> tuple[RankDecision, ...]:
-        return self.run[0].decisions() + self.run[1].decisions()
+        if self.failed is not None:
+            return ()
+        _, run = self._ran()
+        return run[0].decisions() + run[1].decisions()
 
     def hidden_modes(self) -> tuple[Mode, ...]:
-        reach, sight = self.run
+        opened, (reach, sight) = self._ran()
         try:
-            blocks = decompose(self.opened, reach, sight).hidden_blocks()
+            blocks = decompose(opened, reach, sight).hidden_blocks()
         except PrecisionError:
             # At this tolerance what is not reached cannot be split by what is seen of it.
             blocks = [
                 (Part.CONTROLLABLE_UNOBSERVABLE, sight.quotient()),
                 (Part.UNCONTROLLABLE_UNOBSERVABLE, reach.quotient()),
             ]
-        return self.opened.modes(blocks)
+        return opened.modes(blocks)
 
     def visible_modes(self) -> tuple[Mode, ...]:
-        return self.opened.modes([(Part.CONTROLLABLE_OBSERVABLE, self.run[1].A.T)])
+        if self.failed is not None:
+            return ()
+        opened, (_, sight) = self._ran()
+        return opened.modes([(Part.CONTROLLABLE_OBSERVABLE, sight.A.T)])
+
+
+def _unscaled_order(model: Realization, tolerance: float | None) -> int | None:
+    try:
+        opened = FloatingPath(tolerance, scaled=False).open(model)
+        return reach_and_see(opened)[1].dimension
+    except (PrecisionError, EntryError):
+        return None
 
 
 def _readings_of(model: Realization, readings: Iterable[str] | None) -> tuple[Reading, ...]:
@@ -271,22 +312,23 @@ def _answer(
 ) -> tuple[Answer, ExactAnswer | None, Nearest | None]:
     """Return the answer, the exact answer it rests on, and the nearest model of lower order."""
     if not exact:
-        return Answer(order=floating.order, basis="floating"), None, None
+        order = model.order if floating.order is None else floating.order
+        return Answer(order=order, basis="floating"), None, None
     if Reading.GIVEN in exact:
         leading = [str(Reading.GIVEN)]
     else:
         leading = [str(word) for word in _LEADING if word in exact] or list(exact)
     best = min(leading, key=lambda word: orders[word])
     answer, about = Answer(order=orders[best], basis=best), exact[best]
-    if floating.order >= answer.order:
+    if floating.order is None or floating.order >= answer.order:
         return answer, about, None
     try:
-        nearest, near = nearest_of(model, floating.opened, floating.run, Clock(budget))
+        nearest, near = floating.nearest(model, Clock(budget))
     except (BudgetError, PrecisionError) as error:
         not_done.append(f"the nearest model of lower order was not formed: {error}")
         return answer, about, None
     floor = rounding_floor(model.order, 1.0)
-    if model.kind == Kind.FLOATING and nearest.relative_distance <= floor:
+    if model.kind == Kind.FLOATING and nearest.largest_share <= floor:
         return Answer(order=near.order, basis="nearest"), near, nearest
     return answer, about, nearest
 
@@ -319,7 +361,7 @@ def _count_unsimple(model: Realization) -> int:
     )
 
 
-def _verdict(order: int, answer: Answer, orders: dict[str, int], floating_order: int) -> str:
+def _verdict(order: int, answer: Answer, orders: dict[str, int], floating_order: int | None) -> str:
     """Return the answer in one sentence."""
     grounds = {
         "given": "proved for the model as given",
@@ -344,6 +386,6 @@ def _verdict(order: int, answer: Answer, orders: dict[str, int], floating_order:
             f"order {answer.order} remains"
         )
     others = [f"{word} gives {value}" for word, value in orders.items() if value != answer.order]
-    if floating_order != answer.order and answer.basis != "floating":
+    if floating_order not in (None, answer.order) and answer.basis != "floating":
         others.append(f"the floating path gives {floating_order}")
     return f"{text}; {grounds}" + (f" ({', '.join(others)})" if others else "")

@@ -6,6 +6,7 @@ that its hidden modes are exact and can be proved.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Any
 
@@ -33,10 +34,14 @@ class Nearest:
     relative_distance : float
         Frobenius norm of the change of [A B; C 0] over that of [A B; C 0], in the user's units,
         for all hidden modes at once.
+    largest_share : float
+        The largest relative change of A, of one column of B or of one row of C, which does not
+        depend on the units of time, inputs and outputs. This is held against the rounding floor.
     """
 
     order: int
     relative_distance: float
+    largest_share: float
     _witness: Deferred[Realization]
 
     @property
@@ -46,7 +51,11 @@ class Nearest:
 
     def to_dict(self) -> dict[str, Any]:
         """Return order and distance as plain JSON values."""
-        return {"order": self.order, "relative_distance": self.relative_distance}
+        return {
+            "order": self.order,
+            "relative_distance": self.relative_distance,
+            "largest_share": self.largest_share if math.isfinite(self.largest_share) else None,
+        }
 
 
 def nearest_of(
@@ -72,6 +81,8 @@ def nearest_of(
     answer.find_hidden()
     rational = user if user.kind == Kind.RATIONAL else user.read(Reading.STORED)
 
+    distance, share = near.distances(rational)
+
     def witness() -> Realization:
         A, B, C = (RationalMatrix.from_array(M) for M in shaped.matrices()[:3])
         T = RationalMatrix.from_floats(near.T)
@@ -91,7 +102,8 @@ def nearest_of(
     return (
         Nearest(
             order=answer.order,
-            relative_distance=near.distance(rational),
+            relative_distance=distance,
+            largest_share=share,
             _witness=Deferred(witness),
         ),
         answer,

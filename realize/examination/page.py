@@ -6,8 +6,6 @@ import textwrap
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
-import numpy as np
-
 from realize.polynomials import Polynomial
 from realize.polynomials import text as polynomial_text
 from realize.results import Mode, Part
@@ -22,7 +20,7 @@ __all__ = ["findings", "page"]
 WIDTH = 80
 _MARGIN = 11
 _BLUR = 1e-6
-"""Share of the norm of A below which a doubtful mode's distance from the axis is noise."""
+"""Share of the largest entry of A below which a doubtful mode's distance from the axis is noise."""
 
 _ROUNDING = 1e-12
 """Relative change of a response below which a size and a place would be those of rounding."""
@@ -93,7 +91,7 @@ def _named(examination: Examination, modes: Iterable[Mode]) -> list[tuple[str, M
     A mode of which it cannot be told whether it decays is named by the place on the boundary that
     it cannot be told from; its other digits are noise.
     """
-    blur = _BLUR * float(np.linalg.norm(examination.model.to_float().A)) if modes else 0.0
+    blur = _BLUR * _largest(examination) if modes else 0.0
     found: dict[tuple[str, Part], tuple[str, Mode, int]] = {}
     for mode in modes:
         doubtful = mode.stability is Stability.CANNOT_TELL
@@ -109,6 +107,11 @@ def _named(examination: Examination, modes: Iterable[Mode]) -> list[tuple[str, M
         _, first, times = found.get((text, mode.part), (text, mode, 0))
         found[text, mode.part] = (text, first, times + mode.multiplicity)
     return list(found.values())
+
+
+def _largest(examination: Examination) -> float:
+    entries = examination.model.A.ravel().tolist()
+    return max((abs(float(value)) for value in entries), default=0.0)
 
 
 def _times(count: int) -> str:
@@ -148,10 +151,20 @@ def _danger(examination: Examination) -> str:
                 f"Stabilizable: {examination.stabilizable}. Detectable: {examination.detectable}."
             )
     if not hidden:
+        near = examination.nearest
+        if near is not None and near.order < examination.answer.order:
+            return (
+                f"no mode is hidden, but a model at relative distance {near.relative_distance:.2g} "
+                f"hides {_count(examination.order - near.order, 'mode')}; what those do, the "
+                "transfer function of that model does not show."
+            )
         return "no mode is hidden, so none can be unstable unseen."
-    slowest = max((mode.time_constant or 0.0 for mode in hidden), default=0.0)
+    constants = [mode.time_constant for mode in hidden]
+    slowest = max((constant for constant in constants if constant is not None), default=0.0)
     settles = f"the slowest has a time constant of {number_text(slowest)}"
-    if not slowest:
+    if None in constants:
+        settles = "the slowest decays too slowly for its time constant to be told from none"
+    elif not slowest:
         settles = "all of them are delays, which die out in as many steps"
     return (
         f"every hidden mode is stable; {settles}. Stabilizable: {examination.stabilizable}. "
@@ -190,8 +203,10 @@ def _basis(examination: Examination) -> str:
     if not examination.minimal_order:
         return "the exact path did not run; nothing here is proved."
     orders = ", ".join(f"{word} {value}" for word, value in examination.minimal_order.items())
-    text = f"exact minimal order: {orders}; floating path: {examination.floating_order}"
-    if examination.unscaled_order != examination.floating_order:
+    floating = examination.floating_order
+    text = f"exact minimal order: {orders}; "
+    text += "the floating path did not run" if floating is None else f"floating path: {floating}"
+    if examination.unscaled_order not in (None, floating):
         text += f" ({examination.unscaled_order} without scaling)"
     if examination.nearest is not None:
         nearest = examination.nearest
@@ -211,6 +226,8 @@ def _basis(examination: Examination) -> str:
 def _cutoffs(examination: Examination) -> str:
     if not examination.cutoff_ranges:
         return "no exact ranks to compare with."
+    if examination.floating_order is None:
+        return "none; the floating path did not run."
     scale = next((d.scale for d in examination.decisions), 0.0)
     cutoff = next((d.cutoff for d in examination.decisions), 0.0)
     grouped: dict[str, list[str]] = {}

@@ -52,7 +52,8 @@ class Examination:
     minimal_order : dict
         Reading -> minimal order, proved.
     floating_order, unscaled_order : int
-        What the floating path takes at the cutoff, on the scaled model and in the user's units.
+        What the floating path takes at the cutoff, on the scaled model and in the user's units;
+        None where the entries reach beyond what doubles can hold.
     paths_agree : bool
         Whether for some reading the floating order is the exact one.
     readings_agree : bool
@@ -83,8 +84,8 @@ class Examination:
     model: Realization
     order: int
     minimal_order: dict[str, int]
-    floating_order: int
-    unscaled_order: int
+    floating_order: int | None
+    unscaled_order: int | None
     paths_agree: bool
     readings_agree: bool
     answer: Answer
@@ -177,16 +178,19 @@ class Examination:
         whether it decays.
         """
         found: list[str] = []
-        if self.floating_order != self.answer.order:
+        if self.floating_order is None:
+            found.append("the floating path did not run")
+        elif self.floating_order != self.answer.order:
             found.append("the floating path has another order")
         basis = self.answer.basis
         span = self.cutoff_ranges.get(basis)
         cutoff = next((decision.cutoff for decision in self.decisions), 0.0)
-        if basis in self.cutoff_ranges and span is None:
+        near_edge = basis == "nearest" and self._margin() < NEAR_EDGE
+        if span is not None:
+            near_edge = not span[0] * NEAR_EDGE <= cutoff <= span[1] / NEAR_EDGE
+        if basis in self.cutoff_ranges and span is None and self.decisions:
             found.append("no cutoff gives the answer")
-        elif span is not None and not span[0] * NEAR_EDGE <= cutoff <= span[1] / NEAR_EDGE:
-            found.append("a cutoff less than three decades away gives another order")
-        elif basis == "nearest" and self._margin() < NEAR_EDGE:
+        elif near_edge:
             found.append("a cutoff less than three decades away gives another order")
         if any(mode.stability is Stability.CANNOT_TELL for mode in self.hidden_modes):
             found.append("it cannot be told whether a hidden mode decays")

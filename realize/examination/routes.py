@@ -13,13 +13,13 @@ from itertools import islice
 from flint import nmod_mat, nmod_poly
 
 from realize.arithmetic import modular
-from realize.arithmetic.exact import OpenedExact
+from realize.arithmetic.exact import POLYNOMIAL_SECONDS, OpenedExact
 from realize.arithmetic.modular import Clock
 from realize.errors import DisagreementError
 
 __all__ = ["routes"]
 
-_PRIMES = 3
+_PRIMES = 8
 """How many primes may fall short before the disagreement is reported as a bug."""
 
 
@@ -40,7 +40,7 @@ def routes(opened: OpenedExact, order: int) -> dict[str, int]:
     found = {"state": order, "polynomial": -1, "hankel": -1}
     for A, B, C in islice(modular.images(opened.A, opened.B, opened.C), _PRIMES):
         opened.clock.check("the polynomial and Hankel routes")
-        found["polynomial"] = max(found["polynomial"], _coprime_order(A, B, C))
+        found["polynomial"] = max(found["polynomial"], _coprime_order(A, B, C, opened.clock))
         found["hankel"] = max(found["hankel"], _hankel_rank(A, B, C, opened.clock))
         if found["polynomial"] == found["hankel"] == order:
             return found
@@ -54,7 +54,7 @@ def routes(opened: OpenedExact, order: int) -> dict[str, int]:
     )
 
 
-def _coprime_order(A: nmod_mat, B: nmod_mat, C: nmod_mat) -> int:
+def _coprime_order(A: nmod_mat, B: nmod_mat, C: nmod_mat, clock: Clock) -> int:
     """Return the degree of the denominator of a coprime matrix fraction, modulo a prime.
 
     Numerators come from det(s - A + b c) - det(s - A), entry by entry. The fraction
@@ -70,7 +70,13 @@ def _coprime_order(A: nmod_mat, B: nmod_mat, C: nmod_mat) -> int:
     below = A.charpoly()
     columns = [nmod_mat(order, 1, [B[i, j] for i in range(order)], prime) for j in range(inputs)]
     rows = [nmod_mat(1, order, [C[i, j] for j in range(order)], prime) for i in range(outputs)]
-    table = [[(A - column * row).charpoly() - below for column in columns] for row in rows]
+    clock.afford(
+        POLYNOMIAL_SECONDS * order**3 * inputs * outputs, "the numerators of the polynomial route"
+    )
+    table = []
+    for row in rows:
+        clock.check("the polynomial route")
+        table.append([(A - column * row).charpoly() - below for column in columns])
     if outputs > inputs:
         table = [list(line) for line in zip(*table, strict=True)]
     size = len(table)

@@ -2,16 +2,20 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Any, Final
 
 import numpy as np
+from scipy.sparse import csr_array
+from scipy.sparse.csgraph import maximum_bipartite_matching
 
 from realize import polynomials
 from realize.arithmetic.exact import OpenedExact
 from realize.arithmetic.rational import RationalMatrix
+from realize.arithmetic.scaling import scaling_of
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
 from realize.results import Mode, Part
@@ -22,6 +26,11 @@ Array = np.ndarray[Any, Any]
 
 _EXACT_VECTORS: Final = 32
 """Up to this order vectors of rational modes are exact; beyond, they are computed in doubles."""
+
+_AT_ZERO: Final[Polynomial] = (Fraction(1), Fraction(0))
+
+_PHASE: Final = 1e-6
+"""Share of a component below which its imaginary, or its real, part is rounding."""
 
 _NEGLIGIBLE: Final = 1e-9
 """Components of a computed vector below this share of the largest are not shown."""
@@ -36,9 +45,10 @@ def explained(
     back to them.
 
     Structural: the mode belongs to states that no path of non-zero entries joins to an input (or
-    to an output), so no change of the values would show it (Lin 1974, Structural controllability,
-    IEEE Trans. Automatic Control 19, the reachability half). By value: it comes with a left
-    vector w, w A = z w and w B = 0 (or a right vector v, A v = z v and C v = 0), in named states.
+    to an output), or to a pattern with too few ways in (or out), so no change of the values would
+    show it (Lin 1974, Structural controllability, IEEE Trans. Automatic Control 19). By value: it
+    comes with a left vector w, w A = z w and w B = 0 (or a right vector v, A v = z v and C v = 0),
+    in named states.
     """
     modes = tuple(modes)
     user = opened.model if coordinates is None else coordinates.model
@@ -74,8 +84,7 @@ class Coordinates:
         """Return a right vector (by output) or a left one in the user's states."""
         floats = np.array([complex(value) for value in vector])
         moved = self.T @ floats if by_output else np.linalg.solve(self.T.T, floats)
-        moved = _levelled(moved)
-        return list((moved.real if not moved.imag.any() else moved).tolist())
+        return _cleaned(_levelled(moved).tolist())
 
 
 def _levelled(vector: Array) -> Array:
@@ -84,6 +93,22 @@ def _levelled(vector: Array) -> Array:
     for part in (vector.real, vector.imag):
         part[np.abs(part) < _NEGLIGIBLE] = 0.0
     return vector
+
+
+def _cleaned(vector: Sequence[complex]) -> list[complex | float]:
+    """Return the vector over its first largest component, phases of rounding size left out."""
+    largest = max(map(abs, vector))
+    lead = next(value for value in vector if abs(value) >= (1.0 - _PHASE) * largest)
+    found: list[complex | float] = []
+    for value in vector:
+        share = value / lead
+        if abs(share.imag) <= _PHASE * abs(share):
+            found.append(share.real)
+        else:
+            found.append(
+                complex(share.real if abs(share.real) > _PHASE * abs(share) else 0.0, share.imag)
+            )
+    return found
 
 
 def _structural(modes: Sequence[Mode], opened: OpenedExact) -> set[tuple[Part, Polynomial | None]]:
@@ -115,7 +140,27 @@ def _structural(modes: Sequence[Mode], opened: OpenedExact) -> set[tuple[Part, P
             }
             if sum(hidden.values()) <= copies:
                 found |= {(part, factor) for part in hidden}
+    found |= _dilations(modes, A, B, (Part.UNCONTROLLABLE_OBSERVABLE, neither))
+    found |= _dilations(modes, A.T, C.T, (Part.CONTROLLABLE_UNOBSERVABLE, neither))
     return found
+
+
+def _dilations(
+    modes: Sequence[Mode], A: Array, B: Array, parts: tuple[Part, ...]
+) -> set[tuple[Part, Polynomial | None]]:
+    """Return the zero modes that the pattern hides because too few entries lead into the states.
+
+    The pattern of [A B] has rank n for almost all values of its entries, or for none; what is
+    missing are modes at zero (Lin 1974, the dilation half).
+    """
+    pattern = csr_array(np.hstack([A, B]).astype(np.int8))
+    missing = A.shape[0] - int(np.count_nonzero(maximum_bipartite_matching(pattern) >= 0))
+    hidden = {
+        mode.part: mode.multiplicity
+        for mode in modes
+        if mode.part in parts and mode.polynomial == _AT_ZERO
+    }
+    return {(part, _AT_ZERO) for part in hidden} if sum(hidden.values()) <= missing else set()
 
 
 def _cut_off(pattern: Array, first: Array) -> list[int]:
@@ -141,9 +186,13 @@ def _vector(A: RationalMatrix, C: RationalMatrix, mode: Mode) -> Sequence[Any]:
         exact = _null_vector(stacked)
         largest = max(exact, key=abs)
         return [component / largest for component in exact]
-    floats = [M.rounded() for M in (A, C)]
-    pencil = np.vstack([floats[0] - mode.value * np.eye(order), floats[1]])
-    return list(_levelled(np.linalg.svd(pencil)[2][-1].conj()).tolist())
+    # In units of its own: with states in very unlike units, a small component may be essential.
+    scaling = scaling_of(A.rounded(), np.zeros((order, 0)), C.rounded())
+    point = mode.value * math.ldexp(1.0, -scaling.time)
+    pencil = np.vstack([scaling.A - point * np.eye(order), scaling.C])
+    vector = _levelled(np.linalg.svd(pencil)[2][-1].conj())
+    units = np.exp2(scaling.states.astype(float))
+    return _cleaned([v * u for v, u in zip(vector.tolist(), units.tolist(), strict=True)])
 
 
 def _null_vector(matrix: RationalMatrix) -> list[Fraction]:
@@ -162,7 +211,8 @@ def _null_vector(matrix: RationalMatrix) -> list[Fraction]:
 
 def _combination(shown: Sequence[tuple[str, Any]]) -> str:
     """Return a combination of named states, the larger components first, in few words."""
-    ordered = sorted(shown, key=lambda item: -abs(item[1]))
+    # Rounded, so that components of one size keep the order of the states.
+    ordered = sorted(shown, key=lambda item: -float(f"{abs(item[1]):.6g}"))
     terms = [f"{_number(value)} {name}" for name, value in ordered[:4]]
     rest = len(ordered) - 4
     return ", ".join(terms) + (f" and {rest} more" if rest > 0 else "")

@@ -16,7 +16,8 @@ from realize.forms.sources import accept
 from realize.model.realization import Kind
 from realize.model.transfer import TransferMatrix
 from realize.results import Cancellation, Deferred, NearPair
-from realize.stability import Stability, computed_stability, hidden_cautions, judge
+from realize.stability import Stability, computed_stability, hidden_cautions
+from realize.tolerance import root_doubt
 
 __all__ = ["cancel"]
 
@@ -25,9 +26,6 @@ Array = np.ndarray[Any, Any]
 NEAR: Final = 1e-4
 """Relative change of the coefficients below which a pair that it would make cancel is reported as
 near. A heuristic for what is worth a line; it decides nothing."""
-
-_ROOT_DOUBT: Final = 2.0**-26
-"""Relative doubt about a computed root: the square root of the unit roundoff."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,7 +61,7 @@ def cancel(path: Path, transfer: TransferMatrix, uncertainty: Any) -> Cancellati
     coprime = TransferMatrix._trusted(
         tuple(tuple(item.numerator for item in row) for row in table),
         tuple(tuple(item.denominator for item in row) for row in table),
-        kind=Kind.RATIONAL if path.is_exact else Kind.FLOATING,
+        kind=path.kind,
         sampling_period=transfer.sampling_period,
         input_names=transfer.input_names,
         output_names=transfer.output_names,
@@ -74,7 +72,7 @@ def cancel(path: Path, transfer: TransferMatrix, uncertainty: Any) -> Cancellati
         transfer=coprime,
         common=common[0][0] if single else common,
         decisions=tuple(d for row in table for item in row for d in item.decisions),
-        cautions=_cautions(common, transfer.denominators, transfer.sampling_period, path.is_exact),
+        cautions=_cautions(path, common, transfer),
         _factors=Deferred(
             lambda: (
                 path.factors(common[0][0])
@@ -87,36 +85,17 @@ def cancel(path: Path, transfer: TransferMatrix, uncertainty: Any) -> Cancellati
 
 
 def _cautions(
-    common: Sequence[Sequence[tuple[Any, ...]]],
-    denominators: Sequence[Sequence[tuple[Any, ...]]],
-    period: Any,
-    exact: bool,
+    path: Path, common: Sequence[Sequence[tuple[Any, ...]]], transfer: TransferMatrix
 ) -> tuple[str, ...]:
     """Return what must be said of the modes that cancel."""
     modes = [
         _Cancelled(value, stability)
-        for shared_row, row in zip(common, denominators, strict=True)
+        for shared_row, row in zip(common, transfer.denominators, strict=True)
         for shared, below in zip(shared_row, row, strict=True)
         if len(shared) > 1
-        for value, stability in _judged(shared, below, period, exact)
+        for value, stability in path.judged(shared, below, transfer.sampling_period)
     ]
     return hidden_cautions(modes)
-
-
-def _judged(
-    shared: tuple[Any, ...], below: tuple[Any, ...], period: Any, exact: bool
-) -> list[tuple[complex, Stability]]:
-    if not exact:
-        # A computed root of multiplicity k is good to the k-th root of the rounding only; the
-        # square root is the guess for what is not known to be multiple.
-        return [
-            (value, computed_stability(value, period, _ROOT_DOUBT * max(1.0, abs(value))))
-            for value in np.roots(shared).astype(complex).tolist()
-        ]
-    multiplicities = dict(polynomials.factor(below))
-    # The companion form has one eigenvector for each eigenvalue, so a repeated pole is defective.
-    judged = judge(shared, period, lambda factor: multiplicities[factor] == 1)
-    return [(root.value, stability) for root, _, stability in judged]
 
 
 def near_pairs(transfer: TransferMatrix) -> tuple[NearPair, ...]:
@@ -146,9 +125,7 @@ def near_pairs(transfer: TransferMatrix) -> tuple[NearPair, ...]:
                         input=j,
                         change=change,
                         response_change=_response_change(f, g, pole, zero, period),
-                        stability=computed_stability(
-                            pole, period, _ROOT_DOUBT * max(1.0, abs(pole))
-                        ),
+                        stability=computed_stability(pole, period, root_doubt(pole)),
                     )
                 )
     return tuple(sorted(found, key=lambda pair: pair.change))

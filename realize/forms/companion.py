@@ -13,7 +13,7 @@ from realize.entries import known_word
 from realize.errors import ImproperError, NotBuiltError
 from realize.forms.sources import accept
 from realize.forms.transfer import transfer_matrix
-from realize.model.realization import Kind, Realization
+from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Side
 
@@ -96,7 +96,7 @@ def _by_columns(path: Path, transfer: TransferMatrix) -> Realization:
         path.array(B, (order, inputs)),
         path.array(C, (outputs, order)),
         path.array(D, (outputs, inputs)),
-        kind=Kind.RATIONAL if path.is_exact else Kind.FLOATING,
+        kind=path.kind,
         sampling_period=transfer.sampling_period,
         input_names=transfer.input_names,
         output_names=transfer.output_names,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 from typing import Any, TypeVar
@@ -12,7 +13,7 @@ from realize.forms.sources import accept
 from realize.model.realization import Realization
 from realize.results import Deferred, KalmanParts, Part
 
-__all__ = ["Decomposition", "decompose", "kalman_parts", "reach_and_see"]
+__all__ = ["Decomposition", "decompose", "kalman_parts", "reach_and_see", "zeroed"]
 
 # A maps each part into itself, into what is both reached and unseen, and, from the part that is
 # neither, anywhere (Kailath, Linear Systems, section 2.4).
@@ -132,18 +133,33 @@ def decompose(opened: Opened[Reach], reach: Reach, sight: Reach) -> Decompositio
     edges = (0, hidden, r, r + unseen, order)
     spans = [slice(low, high) for low, high in pairwise(edges)]
 
+    A, B, C = zeroed(opened, A, B, C, spans)
+    return Decomposition(T=T, A=A, B=B, C=C, spans=tuple(spans), outside=outside)
+
+
+def zeroed(
+    opened: Opened[Reach], A: Any, B: Any, C: Any, spans: Sequence[slice]
+) -> tuple[Any, Any, Any]:
+    """Return the matrices with exact zeros where the four subspaces make them zero.
+
+    What the four subspaces make zero is zero, whatever rounding left there.
+    """
+
     def kept(matrix: Any, rows: slice, columns: slice, keep: bool) -> Any:
         part = matrix[rows, columns]
         return part if keep else opened.zeros(*part.shape)
 
-    # What the four subspaces make zero is zero, whatever rounding left there.
-    A = opened.block(
-        [[kept(A, spans[i], spans[j], _MAY_BE_NON_ZERO[i][j]) for j in range(4)] for i in range(4)]
-    )
     inputs, outputs = slice(0, B.shape[1]), slice(0, C.shape[0])
-    B = opened.block([[kept(B, span, inputs, k < 2)] for k, span in enumerate(spans)])
-    C = opened.block([[kept(C, outputs, span, k % 2 == 1) for k, span in enumerate(spans)]])
-    return Decomposition(T=T, A=A, B=B, C=C, spans=tuple(spans), outside=outside)
+    return (
+        opened.block(
+            [
+                [kept(A, spans[i], spans[j], _MAY_BE_NON_ZERO[i][j]) for j in range(4)]
+                for i in range(4)
+            ]
+        ),
+        opened.block([[kept(B, span, inputs, k < 2)] for k, span in enumerate(spans)]),
+        opened.block([[kept(C, outputs, span, k % 2 == 1) for k, span in enumerate(spans)]]),
+    )
 
 
 def _beside(opened: Opened[Reach], first: Any, size: int) -> Any:

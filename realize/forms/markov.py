@@ -8,11 +8,11 @@ from typing import Any
 import numpy as np
 
 from realize.arithmetic.path import Path
-from realize.entries import Entry, parse_entry
+from realize.entries import Constant, Entry, parse_entry
 from realize.errors import ShapeError
 from realize.forms.sources import accept
 from realize.model.base import parse_period
-from realize.model.realization import Kind, Realization
+from realize.model.realization import Realization
 from realize.polynomials import ONE
 from realize.results import Deferred, Reduction, RemovedModes
 
@@ -31,7 +31,7 @@ def markov_parameters(path: Path, model: Realization, count: int) -> Array:
     return path.open(model).markov_parameters(int(count))
 
 
-def read_parameters(parameters: Any) -> tuple[list[Entry], tuple[int, int, int]]:
+def read_parameters(parameters: Any) -> tuple[list[Entry | Constant], tuple[int, int, int]]:
     """Return the entries of a sequence of Markov parameters, and its shape.
 
     A flat sequence is one input and one output.
@@ -59,7 +59,7 @@ def read_parameters(parameters: Any) -> tuple[list[Entry], tuple[int, int, int]]
                 "shape (outputs, inputs) for all. Pass an array (count, outputs, inputs)"
             )
     entries = [
-        parse_entry(value, f"parameters[{k}]")
+        parse_entry(value, f"parameters[{k}]", constants=True)
         for k, item in enumerate(items)
         for value in item.ravel().tolist()
     ]
@@ -67,20 +67,25 @@ def read_parameters(parameters: Any) -> tuple[list[Entry], tuple[int, int, int]]
 
 
 def realize_parameters(
-    path: Path, entries: Sequence[Entry], shape: tuple[int, int, int], sampling_period: Any
+    path: Path,
+    entries: Sequence[Entry | Constant],
+    shape: tuple[int, int, int],
+    sampling_period: Any,
 ) -> Reduction:
     """Return a realization with the fewest states that has these Markov parameters."""
     values = path.array([entries], (1, len(entries))).reshape(shape)
     found = path.sequence(values[1:])
     order = found.A.shape[0]
-    nothing = RemovedModes(count=0, polynomial=ONE if path.is_exact else None, modes=())
+    nothing = RemovedModes(
+        count=0, polynomial=ONE if path.is_exact else None, _modes=Deferred.known(())
+    )
     return Reduction(
         model=Realization._trusted(
             found.A,
             found.B,
             found.C,
             values[0],
-            kind=Kind.RATIONAL if path.is_exact else Kind.FLOATING,
+            kind=path.kind,
             sampling_period=parse_period(sampling_period),
         ),
         order=order,

@@ -9,7 +9,7 @@ from typing import Any
 from realize.arithmetic.floating import OpenedFloating
 from realize.arithmetic.path import Path
 from realize.entries import Reading
-from realize.errors import HiddenInstabilityWarning
+from realize.errors import EntryError, HiddenInstabilityWarning
 from realize.forms.companion import realize_transfer
 from realize.forms.kalman import decompose, reach_and_see
 from realize.forms.nearby import nearby
@@ -27,10 +27,14 @@ def minimal(path: Path, source: Realization | TransferMatrix) -> Reduction:
     """Return a minimal realization, and warn of what the transfer matrix no longer shows."""
     reduction, blocks = _reduce(path, source)
     if reduction.order < reduction.source_order:
-        doubtful = [m for m in blocks() if m.stability is not Stability.STABLE]
-        if doubtful:
+        try:
+            doubtful = [m for m in blocks() if m.stability is not Stability.STABLE]
+        except EntryError:
+            # A mode that no double can hold is not known to be stable, and cannot be named.
+            doubtful = None
+        if doubtful is None or doubtful:
             # The caller called a face, and the face called this.
-            warnings.warn(hidden_warning(doubtful), HiddenInstabilityWarning, stacklevel=3)
+            warnings.warn(hidden_warning(doubtful or ()), HiddenInstabilityWarning, stacklevel=3)
     return reduction
 
 
@@ -64,7 +68,7 @@ def _reduce(
         return RemovedModes(
             count=model.order - order,
             polynomial=polynomial,
-            modes=opened.modes(decompose(opened, reach, sight).hidden_blocks()),
+            _modes=Deferred(lambda: opened.modes(decompose(opened, reach, sight).hidden_blocks())),
         )
 
     # The reduced state is U x on the reachable part, with U the transposed basis of the dual.

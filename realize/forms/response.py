@@ -33,6 +33,11 @@ def response_change(model: Realization, reduced: Realization) -> ResponseChange:
     ----------
     model, reduced : Realization, floating, with the same inputs, outputs and sampling period.
     """
+    with np.errstate(all="ignore"):
+        return _searched(model, reduced)
+
+
+def _searched(model: Realization, reduced: Realization) -> ResponseChange:
     period = model.sampling_period
     if not model.input_count or not model.output_count:
         return ResponseChange(size=0.0, relative=0.0, frequency=0.0)
@@ -40,7 +45,7 @@ def response_change(model: Realization, reduced: Realization) -> ResponseChange:
     grid = _frequencies(first.poles, None if period is None else float(period))
 
     def change(frequency: float) -> float:
-        point = _point(frequency, period)
+        point = first.beside(second.beside(_point(frequency, period)))
         return _norm(first.at(point) - second.at(point))
 
     changes = np.array([change(frequency) for frequency in grid])
@@ -50,7 +55,9 @@ def response_change(model: Realization, reduced: Realization) -> ResponseChange:
         frequency, value = _highest(change, float(low), float(high))
         if value > largest:
             largest, where = value, frequency
-    size = max(_norm(first.at(_point(frequency, period))) for frequency in (*grid, where))
+    size = max(
+        _norm(first.at(first.beside(_point(frequency, period)))) for frequency in (*grid, where)
+    )
     return ResponseChange(
         size=largest,
         relative=largest / size if size else 0.0,
@@ -70,15 +77,18 @@ class _Response:
         self.B, self.C = unitary.conj().T @ model.B, model.C @ unitary
         self.poles = np.diagonal(self.triangle)
 
+    def beside(self, point: complex) -> complex:
+        """Return the point, or one beside it where the response is infinite."""
+        if np.any(self.poles == point):
+            return point + 1e-9 * max(abs(point), float(np.abs(self.poles).max()), 1e-300)
+        return point
+
     def at(self, point: complex) -> Array:
         if not self.poles.size:
             return np.asarray(self.D, dtype=complex)
         shifted = -self.triangle
         diagonal = np.einsum("ii->i", shifted)
         diagonal += point
-        # A pole exactly on the boundary makes the response infinite there; one unit in the last
-        # place beside it is as near as the question has a meaning.
-        diagonal[diagonal == 0.0] = np.finfo(float).eps * max(abs(point), 1.0)
         return np.asarray(self.C @ scipy.linalg.solve_triangular(shifted, self.B) + self.D)
 
 
@@ -97,7 +107,7 @@ def _frequencies(poles: Array, period: float | None) -> Array:
         spread = np.concatenate([np.linspace(0.0, math.pi, _GRID), angles])
         return np.unique(spread) / period
     sizes = np.abs(poles)
-    sizes = sizes[sizes > 0.0]
+    sizes = np.clip(sizes[sizes > 0.0], 1e-290, 1e290)
     low, high = (sizes.min() / 100.0, sizes.max() * 100.0) if sizes.size else (1e-2, 1e2)
     return np.unique(
         np.concatenate([[0.0], np.geomspace(low, high, _GRID), np.abs(poles.imag), sizes])
@@ -122,4 +132,7 @@ def _highest(f: Any, low: float, high: float) -> tuple[float, float]:
 
 
 def _norm(M: Array) -> float:
-    return float(np.linalg.norm(M, 2)) if M.size else 0.0
+    """Return the 2-norm; 0.0 where doubles do not reach, so that it is passed over."""
+    if not M.size or not np.isfinite(M).all():
+        return 0.0
+    return float(np.linalg.norm(M, 2))

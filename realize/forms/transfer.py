@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from realize.arithmetic.path import Path
 from realize.forms.sources import accept
-from realize.model.realization import Kind, Realization
+from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 
 __all__ = ["transfer_matrix"]
@@ -18,7 +18,7 @@ def transfer_matrix(path: Path, model: Realization) -> TransferMatrix:
     return TransferMatrix._trusted(
         above,
         tuple(tuple(below for _ in row) for row in above),
-        kind=Kind.RATIONAL if path.is_exact else Kind.FLOATING,
+        kind=path.kind,
         sampling_period=opened.model.sampling_period,
         input_names=opened.model.input_names,
         output_names=opened.model.output_names,

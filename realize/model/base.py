@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from fractions import Fraction
 from typing import Any, ClassVar, Self
 
@@ -12,9 +12,11 @@ import numpy as np
 
 from realize.entries import (
     EXACT_READINGS,
+    Constant,
     Entry,
     Kind,
     Reading,
+    is_constant,
     known_word,
     parse_entry,
     read_float,
@@ -37,6 +39,7 @@ __all__ = [
     "default_names",
     "encode_entry",
     "entry_reader",
+    "expression",
     "fit_names",
     "own_names",
     "parse_names",
@@ -48,10 +51,28 @@ Names = tuple[str, ...]
 Period = float | Fraction | None
 
 
-def encode_entry(entry: Entry) -> float | str:
-    """Return an entry as JSON holds it: a double as a number, a rational as a string."""
-    # The sign of a zero says nothing about a model; adding 0.0 drops it.
-    return entry + 0.0 if isinstance(entry, float) else spell_fraction(entry)
+def encode_entry(entry: Entry | Constant) -> float | str:
+    """Return an entry as JSON holds it: a double as a number, anything else as a string.
+
+    An expression of sympy is spelled in full, which tells it from every other, for a digest.
+    """
+    if isinstance(entry, float):
+        # The sign of a zero says nothing about a model; adding 0.0 drops it.
+        return entry + 0.0
+    if isinstance(entry, Fraction):
+        return spell_fraction(entry)
+    import sympy
+
+    return str(sympy.srepr(entry))
+
+
+def expression(entry: Entry | Constant) -> Any:
+    """Return a rational or a constant as an expression of sympy."""
+    import sympy
+
+    if isinstance(entry, Fraction):
+        return sympy.Rational(entry.numerator, entry.denominator)
+    return entry
 
 
 def entry_reader(reading: Reading) -> Callable[[Entry], Fraction]:
@@ -172,7 +193,11 @@ class SystemModel:
 
     @property
     def kind(self) -> Kind:
-        """The arithmetic the entries call for: "floating" when any is a float, else "rational"."""
+        """The arithmetic the entries call for.
+
+        "floating" when any is a float; else "parametric" when any is an irrational constant; else
+        "rational".
+        """
         return self._kind
 
     @property
@@ -237,6 +262,28 @@ class SystemModel:
         """Return the numbers of the model, hashable, equal exactly when those of two models are."""
         raise NotImplementedError
 
+    def _placed(self) -> Iterator[tuple[str, Entry | Constant]]:
+        """Yield the numbers as they were given, with places in words; none if all are doubles."""
+        raise NotImplementedError
+
+    def _refuse_constants(self, advice: str) -> None:
+        """Refuse a model that holds irrational constants, naming the first.
+
+        Raises
+        ------
+        UnsupportedEntryError
+            Saying where it is, and the advice.
+        """
+        if self._kind is Kind.RATIONAL:
+            return
+        for where, entry in self._placed():
+            if is_constant(entry):
+                raise UnsupportedEntryError(
+                    f"{where}: found the irrational constant {entry}; {advice}",
+                    where=where,
+                    found=type(entry).__name__,
+                )
+
     def _state(self) -> tuple[Any, ...]:
         """Return the arguments from which `_restore` makes the model again."""
         raise NotImplementedError
@@ -265,6 +312,10 @@ class SystemModel:
     def _reading(self, reading: str) -> Reading | None:
         """Return the reading to apply, None when there is nothing to read."""
         word = known_word(Reading, reading, "reading")
+        self._refuse_constants(
+            "no rational number is what it stands for, so the model has no reading. Use "
+            "realize.multiprecision, which takes any number of digits of it, or to_float()"
+        )
         if self._kind is Kind.RATIONAL:
             return None if word is Reading.GIVEN else word
         if word is Reading.GIVEN:

@@ -93,7 +93,16 @@ def to_document(model: SystemModel) -> dict[str, Any]:
     """Return the model as a JSON document: dicts, lists, texts, ints and floats, nothing else.
 
     Doubles stay floats, rationals become texts. Default names are left out.
+
+    Raises
+    ------
+    UnsupportedEntryError
+        When the model holds irrational constants, which a model file has no numbers for.
     """
+    model._refuse_constants(
+        "model files hold doubles and rational numbers only. Save to_float(), or keep the model in "
+        "a pickle"
+    )
     return model._document()
 
 
@@ -115,7 +124,8 @@ def save(model: SystemModel, target: str | os.PathLike[str] | TextIO) -> None:
     LimitError
         When the model exceeds a limit of `load`.
     UnsupportedEntryError
-        When `model` is no model, or `target` neither a path nor a text stream.
+        When `model` is no model or holds irrational constants, or `target` is neither a path nor a
+        text stream.
     OSError
         When the file cannot be written.
 

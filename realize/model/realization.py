@@ -1,28 +1,31 @@
-"""State-space models: four matrices of doubles, of rationals, or of both.
+"""State-space models: four matrices of doubles, of rationals, of irrational constants.
 
 The matrices are kept as given and never change. A model with any float is a floating model; where
-it also holds rationals, these are kept beside the rounded matrices, so that a reading touches the
-floats alone.
+it also holds rationals or constants, these are kept beside the rounded matrices, so that a reading
+touches the floats alone. Constants without any float make a parametric model.
 """
 
 from __future__ import annotations
 
 import html
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from fractions import Fraction
 from itertools import chain
-from typing import Any, Self
+from typing import TYPE_CHECKING, Any, Self
 
 import numpy as np
 from numpy.typing import NDArray
 
 from realize.entries import (
+    Constant,
     Entry,
     Kind,
     fraction_array,
+    is_constant,
     make_fraction,
     parse_entry,
-    round_fraction,
+    place_text,
+    round_entry,
 )
 from realize.errors import NotBuiltError, ShapeError, UnsupportedEntryError
 from realize.model.base import (
@@ -33,6 +36,7 @@ from realize.model.base import (
     default_names,
     encode_entry,
     entry_reader,
+    expression,
     fit_names,
     own_names,
     parse_names,
@@ -40,10 +44,13 @@ from realize.model.base import (
     refuse_masked,
 )
 
+if TYPE_CHECKING:
+    from realize.model.connections import Connection
+
 __all__ = ["Kind", "Matrix", "Realization"]
 
 Matrix = NDArray[Any]
-"""A matrix of doubles, or an object array of Fractions."""
+"""A matrix of doubles, or an object array of Fractions or of expressions of sympy."""
 
 _Matrices = tuple[Matrix, Matrix, Matrix, Matrix]
 
@@ -62,9 +69,9 @@ class Realization(SystemModel):
     ----------
     A, B, C : array_like, shapes (n, n), (n, m), (p, n)
         Entries are ints, floats, Fractions, Decimals, numbers of numpy or sympy, or strings such
-        as ``"1/3"``. Integers and strings are exact. A flat B of length n is one column, a flat C
-        of length n one row. A model with no states has ``[]`` for all three, or arrays of shapes
-        (0, 0), (0, m), (p, 0).
+        as ``"1/3"``. Integers and strings are exact. Irrational constants of sympy, such as
+        sqrt(2), are taken too. A flat B of length n is one column, a flat C of length n one row. A
+        model with no states has ``[]`` for all three, or arrays of shapes (0, 0), (0, m), (p, 0).
     D : array_like, shape (p, m), optional
         Zeros unless given. A number serves when there is one input and one output.
     E : None, keyword-only
@@ -105,13 +112,15 @@ class Realization(SystemModel):
     Fraction(-1, 10)
     """
 
-    __slots__ = ("_A", "_B", "_C", "_D", "_given", "_state_names")
+    __slots__ = ("_A", "_B", "_C", "_D", "_connection", "_given", "_state_names")
 
     _KEY = "realization"
     _A: Matrix
     _B: Matrix
     _C: Matrix
     _D: Matrix
+    # The blocks of a connected model, which are what is read; no part of the model's identity.
+    _connection: Connection | None
     # The entries before rounding, floats and Fractions together; None unless both occur.
     _given: _Matrices | None
     _state_names: Names | None
@@ -139,6 +148,7 @@ class Realization(SystemModel):
         self._A, self._B, self._C, self._D = matrices
         self._kind = kind
         self._given = given
+        self._connection = None
         self._digest = None
         self._sampling_period = None if sampling_period is None else parse_period(sampling_period)
         outputs, inputs = matrices[3].shape
@@ -165,6 +175,7 @@ class Realization(SystemModel):
         state_names: Names | None = None,
         input_names: Names | None = None,
         output_names: Names | None = None,
+        connection: Connection | None = None,
     ) -> Self:
         """Return a model of arrays that fit, without checks or copies; they become read-only."""
         self = cls.__new__(cls)
@@ -178,6 +189,7 @@ class Realization(SystemModel):
         self._D = D
         self._kind = kind
         self._given = None
+        self._connection = connection
         self._digest = None
         self._sampling_period = sampling_period
         self._state_names = state_names
@@ -254,19 +266,31 @@ class Realization(SystemModel):
         Realization
             A rational model; this one, when nothing is to be read.
 
+        Notes
+        -----
+        A connected model (see `realize.assemble`) is read block by block, each block and gain as
+        it was given, and then connected exactly; its own doubles are what rounding made of that.
+        So are its copies, its pickles, its dual and what `to_float` makes of it. A model file
+        holds the entries alone.
+
         Raises
         ------
         UnknownWordError
             For another word, and for "given" when there are floats.
+        UnsupportedEntryError
+            When there are irrational constants.
         """
         word = self._reading(reading)
         if word is None:
             return self
         period = self._period_read(word)
+        connection = None if self._connection is None else self._connection.read(word)
         if self._kind is Kind.RATIONAL:
             if period is self._sampling_period:
                 return self
-            matrices = self.matrices()
+            return self._like(self.matrices(), Kind.RATIONAL, period, connection)
+        if connection is not None:
+            matrices = connection.join().matrices
         else:
             reader = entry_reader(word)
             matrices = _each(
@@ -275,7 +299,7 @@ class Realization(SystemModel):
                 ),
                 self._given or self.matrices(),
             )
-        return self._like(matrices, Kind.RATIONAL, period)
+        return self._like(matrices, Kind.RATIONAL, period, connection)
 
     def to_float(self) -> Realization:
         """Return the model in doubles, each entry correctly rounded.
@@ -290,9 +314,10 @@ class Realization(SystemModel):
         if self._kind is Kind.FLOATING and self._given is None:
             return self
         matrices = self.matrices()
-        if self._kind is Kind.RATIONAL:
+        if self._kind is not Kind.FLOATING:
             matrices = _each(_rounded, matrices)
-        return self._like(matrices, Kind.FLOATING, self._sampling_period)
+        connection = None if self._connection is None else self._connection.to_float()
+        return self._like(matrices, Kind.FLOATING, self._sampling_period, connection)
 
     def dual(self) -> Realization:
         """Return the dual model (A', C', B', D'): inputs and outputs change places."""
@@ -306,6 +331,7 @@ class Realization(SystemModel):
             state_names=self._state_names,
             input_names=own_names(self._output_names, "y"),
             output_names=own_names(self._input_names, "u"),
+            connection=None if self._connection is None else self._connection.dual(),
         )
         if self._given is not None:
             A, B, C, D = self._given
@@ -326,7 +352,13 @@ class Realization(SystemModel):
             feature="symbols",
         )
 
-    def _like(self, matrices: _Matrices, kind: Kind, period: Period) -> Realization:
+    def _like(
+        self,
+        matrices: _Matrices,
+        kind: Kind,
+        period: Period,
+        connection: Connection | None = None,
+    ) -> Realization:
         """Return a model of other matrices of the same shapes, with the names of this one."""
         return Realization._trusted(
             *matrices,
@@ -335,6 +367,7 @@ class Realization(SystemModel):
             state_names=self._state_names,
             input_names=self._input_names,
             output_names=self._output_names,
+            connection=connection,
         )
 
     # Identity
@@ -353,6 +386,13 @@ class Realization(SystemModel):
     def _as_given(self) -> _Matrices:
         """Return the four matrices with each entry as it was given."""
         return self._given or self.matrices()
+
+    def _placed(self) -> Iterator[tuple[str, Entry | Constant]]:
+        if self._kind is Kind.FLOATING and self._given is None:
+            return
+        for letter, matrix in zip(_LETTERS, self._as_given(), strict=True):
+            for (i, j), entry in np.ndenumerate(matrix):
+                yield place_text((letter, i, j)), entry
 
     def _body(self) -> dict[str, Any]:
         return {
@@ -379,11 +419,12 @@ class Realization(SystemModel):
             self._kind,
             self._sampling_period,
             (self._state_names, self._input_names, self._output_names),
+            self._connection,
         )
 
     @classmethod
     def _restore(cls, *state: Any) -> Self:
-        matrices, given, kind, period, names = state
+        matrices, given, kind, period, names, connection = state
         self = cls._trusted(
             *matrices,
             kind=kind,
@@ -391,6 +432,7 @@ class Realization(SystemModel):
             state_names=names[0],
             input_names=names[1],
             output_names=names[2],
+            connection=connection,
         )
         self._given = given
         return self
@@ -412,7 +454,7 @@ class Realization(SystemModel):
         if max(*self._A.shape, *self._D.shape) <= _LONGEST_TABLE:
             for letter, matrix in zip(_LETTERS, self._as_given(), strict=True):
                 rows = "".join(
-                    "<tr>" + "".join(f"<td>{entry}</td>" for entry in row) + "</tr>"
+                    "<tr>" + "".join(f"<td>{html.escape(str(x))}</td>" for x in row) + "</tr>"
                     for row in matrix.tolist()
                 )
                 parts.append(f"<p>{letter}</p><table>{rows}</table>")
@@ -433,7 +475,11 @@ class Realization(SystemModel):
         return rf"$\left[\begin{{array}}{{{columns}}}{body}\end{{array}}\right]$"
 
 
-def _latex_entry(entry: Entry) -> str:
+def _latex_entry(entry: Entry | Constant) -> str:
+    if not isinstance(entry, float | Fraction):
+        import sympy
+
+        return str(sympy.latex(entry))
     if isinstance(entry, float) or entry.denominator == 1:
         return str(entry)
     sign = "-" if entry < 0 else ""
@@ -447,13 +493,11 @@ def _each(change: Callable[[Matrix, str], Matrix], matrices: Sequence[Matrix]) -
 
 
 def _rounded(matrix: Matrix, letter: str) -> Matrix:
-    """Return an object array of floats and Fractions in doubles."""
+    """Return an object array of entries of any kind in doubles."""
     columns = matrix.shape[1]
     return np.fromiter(
         (
-            entry
-            if isinstance(entry, float)
-            else round_fraction(entry, (letter, *divmod(index, columns)))
+            round_entry(entry, (letter, *divmod(index, columns)))
             for index, entry in enumerate(matrix.flat)
         ),
         dtype=_DOUBLE,
@@ -478,18 +522,26 @@ def _assemble(A: Any, B: Any, C: Any, D: Any) -> tuple[_Matrices, Kind, _Matrice
     elif any(table.dtype is _DOUBLE or _has_float(table) for table in telling):
         kind, mixed = Kind.FLOATING, True
     else:
-        kind, mixed = Kind.RATIONAL, False
+        constants = any(is_constant(entry) for table in telling for entry in table.flat)
+        kind, mixed = (Kind.PARAMETRIC if constants else Kind.RATIONAL), False
         tables = [table.astype(object) if table.dtype is _DOUBLE else table for table in tables]
     if D is None:
         tables.append(_zeros(shape, kind))
     given: _Matrices | None = None
     a, b, c, d = tables
+    if kind is Kind.PARAMETRIC:
+        a, b, c, d = _each(_expressions, (a, b, c, d))
     if mixed:
         given = _each(lambda matrix, _: matrix.astype(object), (a, b, c, d))
         a, b, c, d = _each(_rounded, given)
     for matrix in (a, b, c, d, *(given or ())):
         matrix.flags.writeable = False
     return (a, b, c, d), kind, given
+
+
+def _expressions(matrix: Matrix, _: str) -> Matrix:
+    """Return an object array of Fractions and constants as expressions of sympy."""
+    return np.fromiter(map(expression, matrix.flat), object, matrix.size).reshape(matrix.shape)
 
 
 def _zeros(shape: tuple[int, int], kind: Kind) -> Matrix:
@@ -553,7 +605,8 @@ def _place(letter: str, index: int, shape: tuple[int, ...]) -> tuple[str, int, i
 def _entries(values: Sequence[Any], shape: tuple[int, ...], letter: str) -> Matrix:
     """Values parsed one by one; doubles when all of them are floats."""
     entries = [
-        parse_entry(value, _place(letter, index, shape)) for index, value in enumerate(values)
+        parse_entry(value, _place(letter, index, shape), constants=True)
+        for index, value in enumerate(values)
     ]
     if entries and all(isinstance(entry, float) for entry in entries):
         return np.array(entries, dtype=_DOUBLE).reshape(shape)

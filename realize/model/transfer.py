@@ -14,7 +14,16 @@ from typing import Any, Self, TypeAlias
 import numpy as np
 from numpy.typing import NDArray
 
-from realize.entries import Entry, Kind, fraction_array, parse_entry, round_fraction
+from realize.entries import (
+    Constant,
+    Entry,
+    Kind,
+    fraction_array,
+    is_constant,
+    parse_entry,
+    round_entry,
+    round_fraction,
+)
 from realize.errors import (
     EntryError,
     ImproperError,
@@ -29,6 +38,7 @@ from realize.model.base import (
     count_text,
     encode_entry,
     entry_reader,
+    expression,
     fit_names,
     own_names,
     parse_names,
@@ -39,7 +49,7 @@ from realize.model.base import (
 __all__ = ["Coefficients", "Table", "TransferMatrix"]
 
 Coefficients: TypeAlias = tuple[Any, ...]
-"""Coefficients of a polynomial in descending powers: all floats, or all Fractions."""
+"""Coefficients in descending powers: all floats, all Fractions, or all expressions of sympy."""
 
 Table: TypeAlias = tuple[tuple[Coefficients, ...], ...]
 """A polynomial for each output and input: table[output][input]."""
@@ -134,14 +144,17 @@ class TransferMatrix(SystemModel):
                     numerator_degree=len(numerator) - 1,
                     denominator_degree=len(denominator) - 1,
                 )
-        floats = _holds(float, above, below)
+        floats, others = _holds(_is_float, above, below), _holds(_is_no_float, above, below)
+        constants = others and _holds(is_constant, above, below)
         self._given = None
-        if floats and _holds(Fraction, above, below):
+        if floats and others:
             self._given = above, below
             above, below = _round_tables(above, below)
+        elif constants:
+            above, below = _map(_expressions, above), _map(_expressions, below)
         self._numerators = above
         self._denominators = below
-        self._kind = Kind.FLOATING if floats else Kind.RATIONAL
+        self._kind = Kind.FLOATING if floats else Kind.PARAMETRIC if constants else Kind.RATIONAL
         self._digest = None
         self._sampling_period = parse_period(sampling_period)
         inputs = parse_names(input_names, "input_names")
@@ -234,13 +247,17 @@ class TransferMatrix(SystemModel):
             At a pole of an entry; at a point that is not finite; where a value is too large for
             a double.
         UnsupportedEntryError
-            A point that is not a number.
+            A point that is not a number; a transfer matrix with irrational constants.
 
         Notes
         -----
         Computed in rational arithmetic and rounded once, so that nothing overflows or cancels on
         the way. Cost grows with the square of the degree.
         """
+        self._refuse_constants(
+            "values are computed in rational arithmetic. Evaluate to_float(), or the transfer "
+            "matrix that realize.multiprecision.cancel returns"
+        )
         at, exact, is_complex = _parse_point(point)
         numerators, denominators = self._given or (self._numerators, self._denominators)
         values: list[_Gaussian] = []
@@ -284,6 +301,8 @@ class TransferMatrix(SystemModel):
         ------
         UnknownWordError
             For another word, and for "given" when there are floats.
+        UnsupportedEntryError
+            When there are irrational constants.
         """
         word = self._reading(reading)
         if word is None:
@@ -317,7 +336,7 @@ class TransferMatrix(SystemModel):
         if self._kind is Kind.FLOATING and self._given is None:
             return self
         tables = self._numerators, self._denominators
-        if self._kind is Kind.RATIONAL:
+        if self._kind is not Kind.FLOATING:
             tables = _round_tables(*tables)
         return self._like(*tables, Kind.FLOATING, self._sampling_period)
 
@@ -364,6 +383,17 @@ class TransferMatrix(SystemModel):
             for table in self._given
         )
         return self._input_count, numerators, denominators, exact
+
+    def _placed(self) -> Iterator[tuple[str, Entry | Constant]]:
+        if self._kind is Kind.FLOATING and self._given is None:
+            return
+        tables = self._given or (self._numerators, self._denominators)
+        for part, table in zip(("numerator", "denominator"), tables, strict=True):
+            for row, line in enumerate(table):
+                for column, polynomial in enumerate(line):
+                    for index, entry in enumerate(polynomial):
+                        where = f"{part} of {_entry_text(row, column)}, coefficient {index + 1}"
+                        yield where, entry
 
     def _body(self) -> dict[str, Any]:
         numerators, denominators = self._given or (self._numerators, self._denominators)
@@ -455,6 +485,12 @@ def _latex(polynomial: Coefficients, variable: str) -> str:
         if not entry and len(polynomial) > 1:
             continue
         symbol = "" if power == 0 else variable if power == 1 else f"{variable}^{{{power}}}"
+        if is_constant(entry):
+            import sympy
+
+            term = rf"\left({sympy.latex(entry)}\right) {symbol}".rstrip()
+            text += f" + {term}" if text else term
+            continue
         size = abs(entry)
         term = symbol if size == 1 and symbol else f"{size} {symbol}".rstrip()
         if text:
@@ -489,9 +525,21 @@ def _strip(polynomial: Coefficients) -> Coefficients:
     return polynomial[first:] if first else polynomial
 
 
-def _holds(kind: type, *tables: Table) -> bool:
+def _is_float(entry: Entry | Constant) -> bool:
+    return isinstance(entry, float)
+
+
+def _is_no_float(entry: Entry | Constant) -> bool:
+    return not isinstance(entry, float)
+
+
+def _expressions(polynomial: Coefficients) -> Coefficients:
+    return tuple(map(expression, polynomial))
+
+
+def _holds(test: Callable[[Entry | Constant], bool], *tables: Table) -> bool:
     return any(
-        isinstance(entry, kind)
+        test(entry)
         for table in tables
         for row in table
         for polynomial in row
@@ -528,9 +576,7 @@ def _round_tables(numerators: Table, denominators: Table) -> tuple[Table, Table]
 
 
 def _rounded(polynomial: Coefficients, where: str) -> Coefficients:
-    return tuple(
-        entry if isinstance(entry, float) else round_fraction(entry, where) for entry in polynomial
-    )
+    return tuple(round_entry(entry, where) for entry in polynomial)
 
 
 def _encoded(table: Table) -> list[list[list[float | str]]]:
@@ -650,7 +696,7 @@ def _polynomial(value: list[Any], where: str) -> Coefficients:
         place = f"{where}, coefficient {index + 1}"
         if isinstance(item, list):
             raise ShapeError(f"{place}: found a list, wanted a number", where=place)
-        entries.append(parse_entry(item, place))
+        entries.append(parse_entry(item, place, constants=True))
     return _strip(tuple(entries))
 
 

@@ -20,7 +20,7 @@ import numpy as np
 import pytest
 
 import realize
-from realize import errors, exact, floating
+from realize import errors, exact, floating, multiprecision
 from tests.helpers import walk
 from tests.house.everything import answers, hidden_in_every_part
 
@@ -46,13 +46,16 @@ def assert_plain(thing: Any, name: str, *, rational: bool) -> int:
     return count
 
 
-@pytest.mark.parametrize("place", [exact, floating], ids=["exact", "floating"])
+@pytest.mark.parametrize(
+    "place", [exact, floating, multiprecision], ids=["exact", "floating", "multiprecision"]
+)
 def test_results_hold_plain_values(place: ModuleType) -> None:
     """No FLINT, mpmath or sympy object is reachable from a result, nor after pickling."""
     model = hidden_in_every_part()
     for name, result in answers(place, model).items():
-        assert_plain(result, name, rational=place is exact)
-        assert_plain(pickle.loads(pickle.dumps(result)), name, rational=place is exact)
+        rational = place is not floating
+        assert_plain(result, name, rational=rational)
+        assert_plain(pickle.loads(pickle.dumps(result)), name, rational=rational)
 
 
 @pytest.mark.parametrize("rational", [True, False], ids=["rational", "floats"])
@@ -87,7 +90,7 @@ def odd_precision() -> Iterator[None]:
 def everything() -> None:
     """Ask every question, and fail in a few ways."""
     model = hidden_in_every_part()
-    for place in (exact, floating):
+    for place in (exact, floating, multiprecision):
         for result in answers(place, model).values():
             for _ in walk(result):
                 pass

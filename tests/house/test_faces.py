@@ -11,7 +11,7 @@ from typing import Any
 import pytest
 
 import realize
-from realize import exact, floating
+from realize import exact, floating, multiprecision
 from tests.house.tree import TESTS, modules
 
 #: The forms that every face and the top level offer.
@@ -35,8 +35,8 @@ def parameters(function: Callable[..., Any]) -> list[tuple[str, Any, Any]]:
 
 
 def test_the_faces_offer_the_same_names() -> None:
-    """The two faces list one set of names, and the forms are among them."""
-    assert set(exact.__all__) == set(floating.__all__)
+    """The faces list one set of names, and the forms are among them."""
+    assert set(exact.__all__) == set(floating.__all__) == set(multiprecision.__all__)
     assert set(FORMS) <= set(exact.__all__)
     assert set(FORMS) <= set(realize.__all__)
 
@@ -53,6 +53,16 @@ def test_signatures_are_equal_but_for_the_tolerance(name: str) -> None:
 
 
 @pytest.mark.parametrize("name", FORMS)
+def test_multiprecision_takes_digits_and_a_tolerance(name: str) -> None:
+    """That face has the signature of the exact one, and both of these, keyword-only."""
+    keyword = inspect.Parameter.KEYWORD_ONLY
+    added = [("digits", keyword, 50), ("tolerance", keyword, None)]
+    found = parameters(getattr(multiprecision, name))
+    assert [p for p in found if p in added] == added
+    assert [p for p in found if p not in added] == parameters(getattr(exact, name))
+
+
+@pytest.mark.parametrize("name", FORMS)
 def test_the_top_level_has_the_signature_of_the_faces(name: str) -> None:
     """A program can change between a face and the top level without touching its calls."""
     top = [p for p in parameters(getattr(realize, name)) if p[0] != "tolerance"]
@@ -62,7 +72,7 @@ def test_the_top_level_has_the_signature_of_the_faces(name: str) -> None:
 @pytest.mark.parametrize("name", FORMS)
 def test_only_the_source_is_positional(name: str) -> None:
     """Everything with a default is keyword-only; what comes first is the source."""
-    for place in (exact, floating, realize):
+    for place in (exact, floating, multiprecision, realize):
         for _, kind, default in parameters(getattr(place, name)):
             if default is not inspect.Parameter.empty:
                 assert kind is inspect.Parameter.KEYWORD_ONLY
@@ -71,7 +81,7 @@ def test_only_the_source_is_positional(name: str) -> None:
 def public_functions() -> list[tuple[str, Any]]:
     """Every public function, at the top level and on the faces."""
     found = []
-    for module in ("realize", "realize.exact", "realize.floating"):
+    for module in ("realize", "realize.exact", "realize.floating", "realize.multiprecision"):
         place = importlib.import_module(module)
         for name in place.__all__:
             thing = getattr(place, name)

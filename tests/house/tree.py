@@ -20,7 +20,7 @@ ROOMS: tuple[tuple[str, ...], ...] = (
     ("results", "stability"),
     ("arithmetic",),
     ("forms",),
-    ("exact", "floating", "dispatch"),
+    ("exact", "floating", "multiprecision", "dispatch"),
     ("convert",),
     ("examination",),
     ("",),

@@ -201,7 +201,7 @@ def test_chen_cancelled_factor(face: ModuleType) -> None:
     """
     found = face.cancel(transfer(TABLES["M-11"][0]))
     left = [[((4, -6), (2, 0, 2, 1))]]
-    assert_transfer(found.transfer, left)
+    assert_transfer(found.transfer, left, proved=face is exact)
     assert len(found.transfer.denominators[0][0]) == 4
     if face is exact:
         assert found.common == poly(1, 1)

@@ -517,6 +517,7 @@ def test_files_that_are_not_text(tmp_path: Any) -> None:
 
 
 FACTS: dict[str, dict[str, Any]] = {
+    "AlgebraicLoopError": {"ports": ("a.u1", "a.y1")},
     "ShapeError": {"where": "A", "found": (1, 2), "wanted": (2, 2)},
     "EntryError": {"where": "A", "found": "nan"},
     "UnsupportedEntryError": {"where": "A", "found": "complex"},
@@ -537,6 +538,7 @@ FACTS: dict[str, dict[str, Any]] = {
 }
 
 BUILTINS: dict[str, type[Exception]] = {
+    "AlgebraicLoopError": ValueError,
     "ShapeError": ValueError,
     "EntryError": ValueError,
     "UnsupportedEntryError": TypeError,

@@ -507,7 +507,12 @@ def test_the_nearest_model_is_what_it_says(model: Realization, reading: str, ord
     assert 0 < measured < 1e-10
     assert (witness.D == rational.D).all()
     assert witness.state_names == model.state_names
-    assert nearest.to_dict() == {"order": order, "relative_distance": nearest.relative_distance}
+    assert nearest.to_dict() == {
+        "order": order,
+        "relative_distance": nearest.relative_distance,
+        "largest_share": nearest.largest_share,
+    }
+    assert 0 < nearest.largest_share < 1e-9
 
 
 def test_an_unstable_mode_hidden_within_rounding_is_named() -> None:

@@ -1,0 +1,160 @@
+"""Householder reflections over any number of digits.
+
+Matrices are object arrays of the numbers of one mpmath context. Every function takes the context;
+none changes it.
+
+References
+----------
+Golub and Van Loan, Matrix Computations, sections 5.1, 5.2, 7.4. Wilkinson (1965), The Algebraic
+Eigenvalue Problem, chapter 6, section 57 (from memory), for the polynomial of a Hessenberg matrix.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+__all__ = [
+    "characteristic_polynomial",
+    "identity",
+    "least_squares",
+    "reflect",
+    "reflection",
+    "singular_values",
+    "solve_triangle",
+    "triangularised",
+    "zeros",
+]
+
+Array = np.ndarray[Any, Any]
+
+
+def zeros(context: Any, rows: int, columns: int) -> Array:
+    """Return a matrix of zeros."""
+    return np.full((rows, columns), context.zero, dtype=object)
+
+
+def identity(context: Any, size: int) -> Array:
+    """Return the identity."""
+    result = zeros(context, size, size)
+    np.fill_diagonal(result, context.one)
+    return result
+
+
+def reflection(context: Any, x: Array) -> tuple[Array, Any]:
+    """Return v and f for which 1 - f v v^T reflects x, which is not empty, to the first axis."""
+    v = x.copy()
+    size = context.sqrt(context.fdot(x, x))
+    if size == 0:
+        return v, context.zero
+    # The sign that adds: nothing cancels.
+    v[0] += size if v[0] >= 0 else -size
+    return v, 2 / context.fdot(v, v)
+
+
+def reflect(context: Any, v: Array, factor: Any, *targets: Array) -> None:
+    """Apply 1 - factor v v^T from the left to each target, in place."""
+    for target in targets:
+        row = np.empty(target.shape[1], dtype=object)
+        for j in range(target.shape[1]):
+            row[j] = factor * context.fdot(v, target[:, j])
+        target -= np.multiply.outer(v, row)
+
+
+def triangularised(context: Any, M: Array, *targets: Array) -> Array:
+    """Return the triangle R of M = Q R, with Q^T applied to the rows of each target in place."""
+    R = M.copy()
+    for k in range(min(R.shape)):
+        v, factor = reflection(context, R[k:, k])
+        reflect(context, v, factor, R[k:, k:], *(target[k:] for target in targets))
+        R[k + 1 :, k] = context.zero
+    return R
+
+
+def solve_triangle(context: Any, R: Array, right: Array) -> Array:
+    """Return X with R X = right, R upper triangular and invertible.
+
+    Parameters
+    ----------
+    R : (k, k).
+    right : (k, m).
+    """
+    X = right.copy()
+    for i in range(R.shape[0] - 1, -1, -1):
+        for j in range(X.shape[1]):
+            rest = X[i, j] - context.fdot(R[i, i + 1 :], X[i + 1 :, j])
+            X[i, j] = rest / R[i, i]
+    return X
+
+
+def least_squares(context: Any, M: Array, right: Array, cutoff: Any) -> tuple[Array, Any]:
+    """Return x for which M x is nearest to a vector, and the distance left.
+
+    The columns are taken in the order of what the ones before leave of them; those of which no
+    more than the cutoff is left take no part.
+
+    Parameters
+    ----------
+    M : (rows, columns).
+    right : (rows,).
+    """
+    R, rest = M.copy(), right.reshape(-1, 1).copy()
+    order = np.arange(M.shape[1])
+    rank = 0
+    while rank < min(M.shape):
+        left = [context.fdot(column, column) for column in R[rank:, rank:].T]
+        pivot = rank + max(range(len(left)), key=left.__getitem__)
+        if context.sqrt(left[pivot - rank]) <= cutoff:
+            break
+        R[:, [rank, pivot]] = R[:, [pivot, rank]]
+        order[[rank, pivot]] = order[[pivot, rank]]
+        v, factor = reflection(context, R[rank:, rank])
+        reflect(context, v, factor, R[rank:, rank:], rest[rank:])
+        rank += 1
+    x = np.full(M.shape[1], context.zero, dtype=object)
+    x[order[:rank]] = solve_triangle(context, R[:rank, :rank], rest[:rank])[:, 0]
+    distance = rest[rank:, 0]
+    return x, context.sqrt(context.fdot(distance, distance))
+
+
+def singular_values(context: Any, M: Array) -> tuple[Array, list[Any], Array]:
+    """Return U, the singular values and V^T of a small matrix; U and V are square."""
+    if M.shape == (1, 1):
+        sign = context.one if M[0, 0] >= 0 else -context.one
+        return np.array([[sign]]), [abs(M[0, 0])], np.array([[context.one]])
+    U, values, Vt = context.svd_r(context.matrix(M.tolist()), full_matrices=True)
+    return _table(U), [values[k] for k in range(min(M.shape))], _table(Vt)
+
+
+def _table(M: Any) -> Array:
+    return np.array(M.tolist(), dtype=object).reshape(M.rows, M.cols)
+
+
+def characteristic_polynomial(context: Any, A: Array) -> list[Any]:
+    """Return det(s - A), descending powers, by way of a Hessenberg form.
+
+    The leading minors obey p_k = (s - h_kk) p_(k-1) - sum_j h_(j,k) (h_(j+1,j) ... h_(k,k-1))
+    p_(j-1).
+    """
+    H = A.copy()
+    order = H.shape[0]
+    for k in range(order - 2):
+        v, factor = reflection(context, H[k + 1 :, k])
+        reflect(context, v, factor, H[k + 1 :, k:], H[:, k + 1 :].T)
+        H[k + 2 :, k] = context.zero
+    minors: list[list[Any]] = [[context.one]]
+    for k in range(order):
+        factors = [-H[k, k]]
+        product = context.one
+        for j in range(k - 1, -1, -1):
+            product *= H[j + 1, j]
+            factors.append(-H[j, k] * product)
+        # minors[k - i] has k - i + 1 coefficients, so it lies k - i places from the right.
+        polynomial = [*minors[k], context.zero]
+        for i, factor in enumerate(factors):
+            shorter = minors[k - i]
+            for place, coefficient in enumerate(shorter, start=i + 1):
+                polynomial[place] += factor * coefficient
+        minors.append(polynomial)
+    return minors[order]

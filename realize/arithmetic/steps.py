@@ -1,0 +1,164 @@
+"""Steps of precision: whether a small singular value is a zero, seen from more and more digits.
+
+A singular value that shrinks with the precision is rounding noise about a zero; one that stays is
+not.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from enum import StrEnum
+from itertools import pairwise
+from typing import Any, Final
+
+from realize.arithmetic.multiprecision import MultiprecisionPath
+from realize.errors import LimitError
+from realize.model.realization import Realization
+
+__all__ = ["PrecisionStep", "PrecisionSteps", "Trend", "precision_steps"]
+
+
+class Trend(StrEnum):
+    """What a singular value does as the precision rises."""
+
+    SHRINKS = "shrinks"
+    STAYS = "stays"
+    CANNOT_TELL = "cannot tell"
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class PrecisionStep:
+    """One singular value of a staircase at rising precision.
+
+    Attributes
+    ----------
+    where : str
+        The stage, such as ``"reached, stage 2"``.
+    kept : bool
+        Whether it was kept at the highest precision (the smallest that was), or dropped (the
+        largest that was).
+    values : tuple of float
+        Its size over the Frobenius norm of the scaled model, for each number of digits; 0.0 also
+        where it lies below the range of doubles.
+    trend : Trend
+        ``"shrinks"``: with the precision, so it is a zero. ``"stays"``: it is not.
+    """
+
+    where: str
+    kept: bool
+    values: tuple[float, ...]
+    trend: Trend
+
+    @property
+    def is_settled(self) -> bool:
+        """Whether the trend bears out the decision."""
+        return self.trend is (Trend.STAYS if self.kept else Trend.SHRINKS)
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class PrecisionSteps:
+    """What the singular values of both staircases do as the precision rises.
+
+    Attributes
+    ----------
+    digits : tuple of int
+        The precisions, rising.
+    order : int
+        The minimal order at the highest precision.
+    stairs : tuple of two tuples of int
+        The stairs there: of what is reached, and of what of that is seen.
+    steps : tuple of PrecisionStep
+        At each stage the largest value dropped and the smallest kept.
+    """
+
+    digits: tuple[int, ...]
+    order: int
+    stairs: tuple[tuple[int, ...], tuple[int, ...]]
+    steps: tuple[PrecisionStep, ...]
+
+    @property
+    def is_settled(self) -> bool:
+        """Whether every value kept stays and every value dropped shrinks."""
+        return all(step.is_settled for step in self.steps)
+
+
+_SLACK: Final = 6
+"""Decades by which rounding noise at two precisions may differ beyond the digits between them."""
+
+_AGREE: Final = 0.01
+"""Relative difference up to which two precisions show the same singular value."""
+
+
+def precision_steps(
+    model: Realization, *, digits: Sequence[int] = (16, 32, 64, 128)
+) -> PrecisionSteps:
+    """Replay both staircases at rising precision, and say which singular values are zeros.
+
+    Parameters
+    ----------
+    model : Realization
+        Floats count as the numbers they are; irrational constants are computed anew for each
+        precision.
+    digits : sequence of int, keyword-only
+        At least two precisions, rising.
+
+    Returns
+    -------
+    PrecisionSteps
+
+    Raises
+    ------
+    LimitError, UnsupportedEntryError
+        When digits are not at least two rising integers from `MIN_DIGITS` to `MAX_DIGITS`.
+
+    Notes
+    -----
+    The ranks are those of the highest precision with the default tolerance, so that the stages of
+    all precisions are the same; the trend is read from the last two. A value that neither shrinks
+    nor stays lies near the noise of one of them: give more digits. Evidence, not proof: zero to
+    all digits tried is not zero.
+    """
+    ladder = tuple(digits)
+    if len(ladder) < 2 or any(low >= high for low, high in pairwise(ladder)):
+        raise LimitError(
+            f"digits is {ladder!r}; wanted at least two numbers of digits, rising", what="digits"
+        )
+    stairs: tuple[Any, Any] = (None, None)
+    columns: list[list[tuple[str, bool, Any]]] = []
+    for count in reversed(ladder):
+        opened = MultiprecisionPath(count).open(model)
+        reach = opened.reached(opened.A, opened.B, opened.C, "reached", stairs[0])
+        sight = opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen", stairs[1])
+        stairs = reach.stairs, sight.stairs
+        columns.append(
+            [
+                # A model without any entry but zero has scale zero, and its values are zero.
+                (f"{where}, stage {stage}", kept, values[index] / (opened.scaling.scale or 1))
+                for where, run in (("reached", reach), ("seen", sight))
+                for stage, (_, values, rank) in enumerate(run.stages, start=1)
+                for kept, index in ((True, rank - 1), (False, rank))
+                if 0 <= index < len(values)
+            ]
+        )
+    steps = []
+    for found in zip(*reversed(columns), strict=True):
+        values = [value for _, _, value in found]
+        steps.append(
+            PrecisionStep(
+                where=found[-1][0],
+                kept=found[-1][1],
+                values=tuple(map(float, values)),
+                trend=_trend(values[-2], values[-1], ladder[-1] - ladder[-2]),
+            )
+        )
+    return PrecisionSteps(digits=ladder, order=sum(stairs[1]), stairs=stairs, steps=tuple(steps))
+
+
+def _trend(before: Any, after: Any, digits: int) -> Trend:
+    """Return what a value did between two precisions that differ by so many digits."""
+    if after * 10 ** max(digits - _SLACK, 1) <= before:
+        return Trend.SHRINKS
+    if abs(after - before) <= _AGREE * after:
+        return Trend.STAYS
+    return Trend.CANNOT_TELL
