@@ -190,17 +190,17 @@ class MultiprecisionReach:
         rows, *others = targets
         R = reflections.triangularised(context, block, rows, *(M[:, top:].T for M in others))
         count = min(block.shape)
-        U, values, Vt = reflections.singular_values(context, R[:count])
+        G, rotated, values = reflections.orthogonal_rows(context, R[:count])
         if forced is None:
             rank = sum(value > self._opened.cutoff for value in values)
         else:
             rank = min(forced, count)
         bottom = top + count
-        rows[:count] = U.T @ rows[:count]
-        for M in others:
-            M[:, top:bottom] = M[:, top:bottom] @ U
-        for k in range(rank):
-            block[k] = values[k] * Vt[k]
+        if count > 1:
+            rows[:count] = G @ rows[:count]
+            for M in others:
+                M[:, top:bottom] = M[:, top:bottom] @ G.T
+        block[:rank] = rotated[:rank]
         return values, rank
 
     @property
@@ -320,9 +320,11 @@ class OpenedMultiprecision:
     def condition(self, state_map: Array) -> float | None:
         if not state_map.size:
             return 1.0
-        numbers = self.numbers
-        _, values, _ = reflections.singular_values(numbers.context, numbers.table(state_map))
-        return float(values[0] / values[-1]) if values[-1] else math.inf
+        context = self.numbers.context
+        table = context.matrix(self.numbers.table(state_map).tolist())
+        values = context.svd_r(table, compute_uv=False)
+        smallest = values[len(values) - 1]
+        return float(values[0] / smallest) if smallest else math.inf
 
     def eigenvalues(self, A: Array) -> list[Any]:
         """Return the eigenvalues of a block in the scaled unit of time; pairs are exact pairs.
@@ -645,6 +647,7 @@ class MultiprecisionPath:
         dual = opened.A.T, opened.C.T, opened.B.T
         seen = opened.reached(*dual, where)
         decisions = seen.decisions()
+        time = opened.scaling.time
         allowed = self.numbers.number(self.allowed(opened.model.order))
         least = min(len(numerator), len(denominator)) - 1
         for degree in range(min(opened.model.order - seen.dimension, least), 0, -1):
@@ -652,8 +655,8 @@ class MultiprecisionPath:
             if seen.dimension != kept:
                 seen = opened.reached(*dual, where, (1,) * kept)
             common = opened.characteristic_polynomial(seen.quotient())
-            above = self._divided(numerator, common, allowed)
-            below = self._divided(denominator, common, allowed)
+            above = self._divided(numerator, common, allowed, time)
+            below = self._divided(denominator, common, allowed, time)
             if above is not None and below is not None:
                 return SharedFactor(
                     common=common, numerator=above, denominator=below, decisions=decisions
@@ -666,11 +669,11 @@ class MultiprecisionPath:
         )
 
     def _divided(
-        self, polynomial: tuple[Any, ...], factor: tuple[Any, ...], allowed: Any
+        self, polynomial: tuple[Any, ...], factor: tuple[Any, ...], allowed: Any, time: int
     ) -> tuple[Fraction, ...] | None:
         """Return the quotient by a monic factor; None when the remainder is not small.
 
-        Each coefficient of the remainder is measured against the terms it is the sum of.
+        It is measured, in the scaled unit of time, against the terms of which it is the rest.
         """
         numbers = self.numbers
         rest = _vector([numbers.number(c) for c in polynomial])
@@ -681,7 +684,9 @@ class MultiprecisionPath:
             step = rest[k] * divisor
             size[k + 1 : k + len(divisor)] += abs(step[1:])
             rest[k + 1 : k + len(divisor)] -= step[1:]
-        if any(abs(r) > allowed * s for r, s in zip(rest[count:], size[count:], strict=True)):
+        powers = -time * np.arange(len(polynomial))
+        left = numbers.norm(numbers.shifted(rest[count:], powers[count:]))
+        if left > allowed * numbers.norm(numbers.shifted(size, powers)):
             return None
         return tuple(map(numbers.fraction, rest[:count]))
 

@@ -11,23 +11,28 @@ Eigenvalue Problem, chapter 6, section 57 (from memory), for the polynomial of a
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
+
+from realize.errors import PrecisionError
 
 __all__ = [
     "characteristic_polynomial",
     "identity",
     "least_squares",
+    "orthogonal_rows",
     "reflect",
     "reflection",
-    "singular_values",
     "solve_triangle",
     "triangularised",
     "zeros",
 ]
 
 Array = np.ndarray[Any, Any]
+
+_SWEEPS: Final = 60
+"""Sweeps of rotations at most; they converge quadratically once the rows are nearly orthogonal."""
 
 
 def zeros(context: Any, rows: int, columns: int) -> Array:
@@ -118,17 +123,55 @@ def least_squares(context: Any, M: Array, right: Array, cutoff: Any) -> tuple[Ar
     return x, context.sqrt(context.fdot(distance, distance))
 
 
-def singular_values(context: Any, M: Array) -> tuple[Array, list[Any], Array]:
-    """Return U, the singular values and V^T of a small matrix; U and V are square."""
-    if M.shape == (1, 1):
-        sign = context.one if M[0, 0] >= 0 else -context.one
-        return np.array([[sign]]), [abs(M[0, 0])], np.array([[context.one]])
-    U, values, Vt = context.svd_r(context.matrix(M.tolist()), full_matrices=True)
-    return _table(U), [values[k] for k in range(min(M.shape))], _table(Vt)
+def orthogonal_rows(context: Any, M: Array) -> tuple[Array, Array, list[Any]]:
+    """Return an orthogonal G, the rows of G M, orthogonal to each other, and their norms, falling.
 
+    The norms are the singular values. One-sided Jacobi rotations: G is a product of rotations and
+    so orthogonal whatever the rank of M, which the accumulated factor of a bidiagonal iteration
+    need not be where singular values are rounding noise.
 
-def _table(M: Any) -> Array:
-    return np.array(M.tolist(), dtype=object).reshape(M.rows, M.cols)
+    Raises
+    ------
+    PrecisionError
+        When the rotations do not settle.
+
+    References
+    ----------
+    Golub and Van Loan, Matrix Computations, section 8.6.
+    """
+    count, width = M.shape
+    joined = np.concatenate([M, identity(context, count)], axis=1)
+    noise = context.eps * context.sqrt(context.fdot(M.flat, M.flat))
+    small = 8 * max(width, 1) * context.eps
+    for _ in range(_SWEEPS):
+        settled = True
+        for i in range(count):
+            for j in range(i + 1, count):
+                first, second = joined[i, :width], joined[j, :width]
+                a, b = context.fdot(first, first), context.fdot(second, second)
+                c = context.fdot(first, second)
+                sizes = context.sqrt(a), context.sqrt(b)
+                if min(sizes) <= noise or abs(c) <= small * sizes[0] * sizes[1]:
+                    continue
+                settled = False
+                ratio = (b - a) / (2 * c)
+                tangent = 1 / (abs(ratio) + context.sqrt(1 + ratio**2))
+                cosine = 1 / context.sqrt(1 + tangent**2)
+                sine = cosine * (tangent if ratio >= 0 else -tangent)
+                joined[i], joined[j] = (
+                    cosine * joined[i] - sine * joined[j],
+                    sine * joined[i] + cosine * joined[j],
+                )
+        if settled:
+            break
+    else:
+        raise PrecisionError(
+            f"the singular values of a block of shape {M.shape} did not settle in {_SWEEPS} sweeps"
+        )
+    norms = [context.sqrt(context.fdot(row, row)) for row in joined[:, :width]]
+    falling = sorted(range(count), key=norms.__getitem__, reverse=True)
+    joined = joined[falling]
+    return joined[:, width:], joined[:, :width], [norms[k] for k in falling]
 
 
 def characteristic_polynomial(context: Any, A: Array) -> list[Any]:

@@ -212,7 +212,7 @@ def _null_vector(matrix: RationalMatrix) -> list[Fraction]:
 def _combination(shown: Sequence[tuple[str, Any]]) -> str:
     """Return a combination of named states, the larger components first, in few words."""
     # Rounded, so that components of one size keep the order of the states.
-    ordered = sorted(shown, key=lambda item: -float(f"{abs(item[1]):.6g}"))
+    ordered = sorted(shown, key=lambda item: -float(f"{float(abs(item[1])):.6g}"))
     terms = [f"{_number(value)} {name}" for name, value in ordered[:4]]
     rest = len(ordered) - 4
     return ", ".join(terms) + (f" and {rest} more" if rest > 0 else "")

@@ -222,7 +222,7 @@ def load(source: str | os.PathLike[str] | TextIO) -> Realization | TransferMatri
     """
     if isinstance(source, str | os.PathLike):
         name = os.fspath(source)
-        with open(source, encoding="utf-8") as stream:
+        with open(source, encoding="utf-8-sig") as stream:
             text = _read(stream, name)
     elif hasattr(source, "read"):
         name = str(getattr(source, "name", "stream"))

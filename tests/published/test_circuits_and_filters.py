@@ -291,7 +291,7 @@ def test_two_pendulums(M: Any, m1: Any, m2: Any, l1: Any, l2: Any, g: Any) -> No
 def test_crane_with_two_loads(M: Any, m1: Any, m2: Any, l1: Any, l2: Any, g: Any) -> None:
     """T-08: the determinant -g^6 (l1 - l2)^2/(M^6 l1^6 l2^6).
 
-    Source: a student's notebook (the model was read, the determinant is ours). Published (data);
+    Source: a public notebook (the model was read, the determinant is ours). Published (data);
     recomputed.
     """
     M, m1, m2, l1, l2, g = (Fraction(v) for v in (M, m1, m2, l1, l2, g))
