@@ -519,8 +519,10 @@ def test_other_errors_are_not_swallowed(
 
     name = file(minimal_model())
     monkeypatch.setattr("realize.cli.examine", fault)
-    with pytest.raises(ZeroDivisionError):
-        run("examine", name)
+    broken = run("examine", name)
+    assert broken.exit_code == 70
+    assert "ZeroDivisionError: a fault" in broken.stderr
+    assert "bug" in broken.stderr
     monkeypatch.setattr("realize.cli.examine", refusal)
     assert run("examine", name).stderr == "realize: found this, wanted that\n"
 
