@@ -49,6 +49,10 @@ class _Commands(click.Group):
     """Turns errors raised on purpose into one line and status 2."""
 
     def invoke(self, ctx: click.Context) -> Any:
+        with _BugStatus():
+            return self._told(ctx)
+
+    def _told(self, ctx: click.Context) -> Any:
         try:
             return super().invoke(ctx)
         except BrokenPipeError:
@@ -57,13 +61,23 @@ class _Commands(click.Group):
             sys.exit(0)
         except (RealizeError, OSError) as error:
             _fail(str(error))
-        except (click.exceptions.Exit, click.ClickException, click.Abort):
-            raise
-        except Exception:
-            # A bug must not look like findings, whose status is the one Python gives by default.
-            traceback.print_exc()
-            click.echo("realize: this is a bug; please report it with the model", err=True)
-            sys.exit(BUG)
+
+
+class _BugStatus:
+    """Gives a bug its own exit status: Python's, 1, would look like findings."""
+
+    def __enter__(self) -> None:
+        return None
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, _: object
+    ) -> None:
+        expected = (SystemExit, KeyboardInterrupt, click.exceptions.Exit, click.ClickException)
+        if error is None or isinstance(error, (*expected, click.Abort)):
+            return
+        traceback.print_exception(error)
+        click.echo("realize: this is a bug; please report it with the model", err=True)
+        sys.exit(BUG)
 
 
 def _fail(message: str) -> NoReturn:
