@@ -21,7 +21,7 @@ from realize.errors import InexactInputError
 from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
 from realize.results import Mode, Part, RankDecision
-from realize.stability import Stability, damping, judge, time_constant
+from realize.stability import Stability, damping, is_stable, judge, time_constant
 
 __all__ = ["ExactPath", "ExactReach", "OpenedExact"]
 
@@ -374,6 +374,10 @@ class OpenedExact:
             images = 1 + order * (A.bits() + order.bit_length()) / modular.PRIME_BITS
             self.clock.afford(POLYNOMIAL_SECONDS * order**3 * images, "a characteristic polynomial")
         return A.characteristic_polynomial()
+
+    def decays(self, block: RationalMatrix) -> bool:
+        """Decide by the Routh-Hurwitz test, without a root."""
+        return is_stable(self.characteristic_polynomial(block), self.model.sampling_period)
 
     def modes(self, blocks: Iterable[tuple[Part, RationalMatrix]]) -> tuple[Mode, ...]:
         return modes_of(

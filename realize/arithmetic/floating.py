@@ -84,14 +84,14 @@ class FloatingReach:
         reduced, tau, _ = lapack.dgehrd(bordered, lwork=space, overwrite_a=1)
         pivots = np.abs(reduced.ravel(order="K")[1 :: order + 2])
         Q, _ = lapack.dorghr(reduced, tau, lwork=space)[:2]
-        hessenberg = reduced * _hessenberg_mask(order + 1)
+        reduced *= _hessenberg_mask(order + 1)
         if ranks is None:
             small = (pivots <= self._opened.cutoff).nonzero()[0]
             reach = int(small[0]) if small.size else order
         else:
             reach = sum(ranks)
-        self.A_all = hessenberg[1:, 1:]
-        self.B_all = hessenberg[1:, :1]
+        self.A_all = reduced[1:, 1:]
+        self.B_all = reduced[1:, :1]
         if reach == 0:
             self.B_all[0, 0] = 0.0
         self.Q = Q[1:, 1:]
@@ -306,15 +306,26 @@ class OpenedFloating:
         powers = self.scaling.time * np.arange(coefficients.size)
         return tuple(np.ldexp(coefficients, powers).tolist())
 
-    def modes(self, blocks: Iterable[tuple[Part, Array]]) -> tuple[Mode, ...]:
-        """Return computed eigenvalues, about which nothing is proved.
+    def _doubt(self) -> float:
+        """Return by how much a computed eigenvalue may be off.
 
-        A double eigenvalue moves by the square root of the rounding, so that much is doubted.
+        A double eigenvalue moves by the square root of the rounding.
         """
-        period = self.model.sampling_period
         scale = self.scaling.scale
         floor = rule.rounding_floor(self.model.order, scale)
-        doubt = math.ldexp(math.sqrt(floor * scale), self.scaling.time)
+        return math.ldexp(math.sqrt(floor * scale), self.scaling.time)
+
+    def decays(self, block: Array) -> bool:
+        if not block.size:
+            return True
+        values, doubt = self.eigenvalues(block), self._doubt()
+        if self.model.sampling_period is None:
+            return float(values.real.max()) < -doubt
+        return float(np.abs(values).max()) < 1.0 - doubt
+
+    def modes(self, blocks: Iterable[tuple[Part, Array]]) -> tuple[Mode, ...]:
+        """Return computed eigenvalues, about which nothing is proved."""
+        period, doubt = self.model.sampling_period, self._doubt()
         found: list[Mode] = []
         for part, block in blocks:
             for value in sorted(self.eigenvalues(block).tolist(), key=lambda v: (v.real, v.imag)):

@@ -19,7 +19,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Sequence
-from dataclasses import replace
 from fractions import Fraction
 from typing import Any, Final
 
@@ -58,8 +57,8 @@ MAX_DIGITS: Final = 10_000
 _GUARD: Final = 10
 """Digits of an irrational constant beyond those of the path, so that it is rounded once."""
 
-_REACH_OF_DOUBLES: Final = 900
-"""Binary exponent up to which an entry takes part in the scaling as it is; beyond, as this."""
+_EDGE: Final = 900
+"""Binary exponent, up or down, up to which an entry takes part in the scaling as it is."""
 
 _CLUSTER: Final = 4
 """Eigenvalues that lie this many times their doubt apart may be one multiple eigenvalue."""
@@ -327,24 +326,9 @@ class OpenedMultiprecision:
         return float(values[0] / smallest) if smallest else math.inf
 
     def eigenvalues(self, A: Array) -> list[Any]:
-        """Return the eigenvalues of a block in the scaled unit of time; pairs are exact pairs.
-
-        Raises
-        ------
-        PrecisionError
-            When they do not converge.
-        """
+        """Return the eigenvalues of a block in the scaled unit of time; pairs are exact pairs."""
         context = self.numbers.context
-        if A.shape[0] <= 1:
-            return [context.mpc(value) for value in A.flat]
-        try:
-            values = context.eig(context.matrix(A.tolist()), left=False, right=False)
-        except RuntimeError as error:
-            raise PrecisionError(
-                f"the eigenvalues of a block of order {A.shape[0]} did not converge with "
-                f"{self.numbers.digits} digits; give more"
-            ) from error
-        return _in_pairs(context, values)
+        return _in_pairs(context, reflections.eigenvalues(context, A))
 
     def clustered(self, values: Sequence[Any]) -> list[tuple[Any, int, Any]]:
         """Return eigenvalues with their multiplicity and how far off they may be, all scaled.
@@ -408,6 +392,10 @@ class OpenedMultiprecision:
         coefficients = reflections.characteristic_polynomial(numbers.context, A)
         powers = self.scaling.time * np.arange(len(coefficients))
         return tuple(numbers.fractions(numbers.shifted(_vector(coefficients), powers)).tolist())
+
+    def decays(self, block: Array) -> bool:
+        found = self.modes([(Part.UNCONTROLLABLE_UNOBSERVABLE, block)])
+        return all(mode.stability is Stability.STABLE for mode in found)
 
     def modes(self, blocks: Iterable[tuple[Part, Array]]) -> tuple[Mode, ...]:
         """Return computed eigenvalues, about which nothing is proved."""
@@ -493,24 +481,40 @@ class OpenedMultiprecision:
 
 def _scaling(numbers: Numbers, A: Array, B: Array, C: Array) -> Scaling:
     """Return the scaling that the floating path would take, applied to all digits."""
-    rounded = [_in_doubles(numbers.context, M) for M in (A, B, C)]
-    found = scaling_of(*rounded) if A.shape[0] else unscaled(*rounded)
-    states, inputs, outputs = found.states, found.inputs, found.outputs
-    A = numbers.shifted(A, states - states[:, None] - found.time)
-    B = numbers.shifted(B, inputs - states[:, None])
-    C = numbers.shifted(C, states - outputs[:, None])
-    return replace(found, A=A, B=B, C=C, scale=numbers.norm(A, B, C))
+    sizes = (A.shape[0], B.shape[1], C.shape[0])
+    states, inputs, outputs = (np.zeros(size, dtype=int) for size in sizes)
+    time, beyond = 0, True
+    while beyond:
+        (a, b, c), beyond = _in_doubles(numbers.context, A, B, C)
+        found = scaling_of(a, b, c) if sizes[0] else unscaled(a, b, c)
+        A = numbers.shifted(A, found.states - found.states[:, None] - found.time)
+        B = numbers.shifted(B, found.inputs - found.states[:, None])
+        C = numbers.shifted(C, found.states - found.outputs[:, None])
+        states, inputs, outputs = (
+            states + found.states,
+            inputs + found.inputs,
+            outputs + found.outputs,
+        )
+        time += found.time
+    return Scaling(states, inputs, outputs, time, A, B, C, numbers.norm(A, B, C))
 
 
-def _in_doubles(context: Any, M: Array) -> Array:
-    """Return a matrix in doubles; what is beyond their range is brought to its edge."""
-    result = np.zeros(M.shape)
-    for index, value in np.ndenumerate(M):
-        if value:
-            beyond = context.mag(value)
-            kept = min(max(beyond, -_REACH_OF_DOUBLES), _REACH_OF_DOUBLES)
-            result[index] = float(context.ldexp(value, kept - beyond))
-    return result
+def _in_doubles(context: Any, *matrices: Array) -> tuple[list[Array], bool]:
+    """Return matrices in doubles, and whether an entry lies far beyond their range.
+
+    Such an entry is brought to the edge of the range, from where a scaling brings it nearer.
+    """
+    found, beyond = [], False
+    for M in matrices:
+        doubles = np.zeros(M.shape)
+        for index, value in np.ndenumerate(M):
+            if value:
+                exponent = context.mag(value)
+                kept = min(max(exponent, -_EDGE), _EDGE)
+                beyond = beyond or kept != exponent
+                doubles[index] = float(context.ldexp(value, kept - exponent))
+        found.append(doubles)
+    return found, beyond
 
 
 def _in_pairs(context: Any, values: Sequence[Any]) -> list[Any]:

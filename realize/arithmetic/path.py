@@ -187,6 +187,10 @@ class Opened(Protocol[R_co]):
         """Return det(s - A), monic, descending powers, in the user's unit of time."""
         ...
 
+    def decays(self, block: Any) -> bool:
+        """Return whether every mode of a block is known to decay."""
+        ...
+
     def modes(self, blocks: Iterable[tuple[Part, Any]]) -> tuple[Mode, ...]:
         """Return the eigenvalues of blocks, each with its part, stability and multiplicity."""
         ...

@@ -5,8 +5,9 @@ none changes it.
 
 References
 ----------
-Golub and Van Loan, Matrix Computations, sections 5.1, 5.2, 7.4. Wilkinson (1965), The Algebraic
-Eigenvalue Problem, chapter 6, section 57 (from memory), for the polynomial of a Hessenberg matrix.
+Golub and Van Loan, Matrix Computations, sections 5.1, 5.2, 7.4, 7.5. Wilkinson (1965), The
+Algebraic Algebraic Eigenvalue Problem, chapter 6, section 57 (from memory), for the polynomial of a
+Hessenberg matrix.
 """
 
 from __future__ import annotations
@@ -19,6 +20,8 @@ from realize.errors import PrecisionError
 
 __all__ = [
     "characteristic_polynomial",
+    "eigenvalues",
+    "hessenberg",
     "identity",
     "least_squares",
     "orthogonal_rows",
@@ -33,6 +36,9 @@ Array = np.ndarray[Any, Any]
 
 _SWEEPS: Final = 60
 """Sweeps of rotations at most; they converge quadratically once the rows are nearly orthogonal."""
+
+_STEPS: Final = 200
+"""Steps of a QR iteration for one eigenvalue at most; a few are common, also with many digits."""
 
 
 def zeros(context: Any, rows: int, columns: int) -> Array:
@@ -174,30 +180,103 @@ def orthogonal_rows(context: Any, M: Array) -> tuple[Array, Array, list[Any]]:
     return joined[:, width:], joined[:, :width], [norms[k] for k in falling]
 
 
+def hessenberg(context: Any, A: Array) -> Array:
+    """Return an upper Hessenberg matrix orthogonally similar to A."""
+    H = A.copy()
+    for k in range(H.shape[0] - 2):
+        v, factor = reflection(context, H[k + 1 :, k])
+        reflect(context, v, factor, H[k + 1 :, k:], H[:, k + 1 :].T)
+        H[k + 2 :, k] = context.zero
+    return H
+
+
 def characteristic_polynomial(context: Any, A: Array) -> list[Any]:
-    """Return det(s - A), descending powers, by way of a Hessenberg form.
+    """Return det(s - A), descending powers, by way of a Hessenberg form H.
 
     The leading minors obey p_k = (s - h_kk) p_(k-1) - sum_j h_(j,k) (h_(j+1,j) ... h_(k,k-1))
     p_(j-1).
     """
-    H = A.copy()
-    order = H.shape[0]
-    for k in range(order - 2):
-        v, factor = reflection(context, H[k + 1 :, k])
-        reflect(context, v, factor, H[k + 1 :, k:], H[:, k + 1 :].T)
-        H[k + 2 :, k] = context.zero
+    H = hessenberg(context, A)
     minors: list[list[Any]] = [[context.one]]
-    for k in range(order):
+    for k in range(H.shape[0]):
         factors = [-H[k, k]]
         product = context.one
         for j in range(k - 1, -1, -1):
             product *= H[j + 1, j]
             factors.append(-H[j, k] * product)
-        # minors[k - i] has k - i + 1 coefficients, so it lies k - i places from the right.
+        # A minor of order k - i has its coefficients i + 1 places further right.
         polynomial = [*minors[k], context.zero]
         for i, factor in enumerate(factors):
-            shorter = minors[k - i]
-            for place, coefficient in enumerate(shorter, start=i + 1):
+            for place, coefficient in enumerate(minors[k - i], start=i + 1):
                 polynomial[place] += factor * coefficient
         minors.append(polynomial)
-    return minors[order]
+    return minors[-1]
+
+
+def eigenvalues(context: Any, A: Array) -> list[Any]:
+    """Return the eigenvalues as complex numbers, those of an exactly conjugate pair included.
+
+    Shifted QR iteration on a Hessenberg form; what is below the rounding of the whole matrix is
+    zero.
+
+    Raises
+    ------
+    PrecisionError
+        When the iteration does not converge.
+    """
+    H = hessenberg(context, A)
+    for index, value in np.ndenumerate(H):
+        H[index] = context.mpc(value)
+    negligible = context.eps * context.sqrt(context.fdot(A.flat, A.flat))
+    found: list[Any] = []
+    high, steps = H.shape[0], 0
+    while high:
+        low = high - 1
+        while low and abs(H[low, low - 1]) > negligible:
+            low -= 1
+        if high - low <= 2:
+            found += [H[low, low]] if high - low == 1 else _of_two(context, H[low:high, low:high])
+            high, steps = low, 0
+            continue
+        if steps == _STEPS:
+            raise PrecisionError(
+                f"the eigenvalues of a block of order {A.shape[0]} did not converge in {_STEPS} "
+                "steps; give another number of digits"
+            )
+        steps += 1
+        last = H[high - 2 : high, high - 2 : high]
+        if steps % 10:
+            shift = min(_of_two(context, last), key=lambda value: abs(value - last[1, 1]))
+        else:
+            # A shift out of the ordinary, where the ordinary ones go round in circles.
+            shift = last[1, 1] + abs(last[1, 0])
+        _step(context, H[low:high, low:high], shift)
+    return found
+
+
+def _of_two(context: Any, H: Array) -> list[Any]:
+    """Return the eigenvalues of a matrix of order two."""
+    middle = (H[0, 0] + H[1, 1]) / 2
+    root = context.sqrt(((H[0, 0] - H[1, 1]) / 2) ** 2 + H[0, 1] * H[1, 0])
+    return [middle + root, middle - root]
+
+
+def _step(context: Any, H: Array, shift: Any) -> None:
+    """Take one QR step with a shift, in place, on a Hessenberg matrix of complex numbers."""
+    size = H.shape[0]
+    diagonal = np.einsum("ii->i", H)
+    diagonal -= shift
+    rotations = []
+    for k in range(size - 1):
+        first, second = H[k, k], H[k + 1, k]
+        length = context.sqrt(abs(first) ** 2 + abs(second) ** 2)
+        c, s = (first / length, second / length) if length else (context.mpc(1), context.mpc(0))
+        rotations.append((c, s))
+        upper, lower = H[k, k:].copy(), H[k + 1, k:]
+        H[k, k:] = context.conj(c) * upper + context.conj(s) * lower
+        H[k + 1, k:] = c * lower - s * upper
+    for k, (c, s) in enumerate(rotations):
+        left, right = H[: k + 2, k].copy(), H[: k + 2, k + 1]
+        H[: k + 2, k] = c * left + s * right
+        H[: k + 2, k + 1] = context.conj(c) * right - context.conj(s) * left
+    diagonal += shift

@@ -106,11 +106,13 @@ def scaling_of(A: Array, B: Array, C: Array) -> Scaling:
     graph[first_output:, :order] = C
     units, time = _balance(graph, order)
     scaled_A = graph[:order, :order]
-    shift = _exponent(scaled_A)
+    squares = _squares(scaled_A)
+    shift = math.frexp(math.sqrt(squares))[1]
     if shift:
         np.ldexp(scaled_A, -shift, out=scaled_A)
-    scaled_B, by_input = _normalised(graph[:order, order:first_output], 0)
-    scaled_C, by_output = _normalised(graph[first_output:, :order], 1)
+        squares = math.ldexp(squares, -2 * shift)
+    scaled_B, by_input, squares_B = _normalised(graph[:order, order:first_output], 0)
+    scaled_C, by_output, squares_C = _normalised(graph[first_output:, :order], 1)
     return Scaling(
         units[:order],
         units[order:first_output] - by_input,
@@ -119,7 +121,7 @@ def scaling_of(A: Array, B: Array, C: Array) -> Scaling:
         scaled_A,
         scaled_B,
         scaled_C,
-        _frobenius(scaled_A, scaled_B, scaled_C),
+        math.sqrt(squares + squares_B + squares_C),
     )
 
 
@@ -127,12 +129,14 @@ def _balance(graph: Array, order: int) -> tuple[Array, int]:
     """Scale the graph in place; return the exponents of its units, and of that of time."""
     size = graph.shape[0]
     # One row and column more than the graph has: the unit of time will be an unknown as well.
-    work = np.empty((size + 1, size + 1), order="F")
+    # Single precision is enough for exponents that will be rounded, and half the memory: for a
+    # large model, fresh memory costs more than the arithmetic.
+    work = np.empty((size + 1, size + 1), dtype=np.float32, order="F")
     mantissas, exponents = np.frexp(graph)
     pattern = mantissas != 0.0
     units, roots = _tree_potentials(pattern, exponents)
     logs = work[:size, :size]
-    np.abs(mantissas, out=logs)
+    np.abs(mantissas, out=logs, casting="same_kind")
     logs[~pattern] = 1.0
     np.log2(logs, out=logs)
     # Whole exponents are added to the logarithms of the mantissas, so that the sums, and their
@@ -148,7 +152,7 @@ def _balance(graph: Array, order: int) -> tuple[Array, int]:
         moved = _least_squares(work, logs, pattern, roots, order)
     whole = np.rint(moved).astype(np.int32)
     units = units + whole[:size]
-    powers = units - units[:, None]
+    powers = np.subtract(units, units[:, None], order="F")
     powers[:order, :order] -= whole[size]
     np.ldexp(graph, powers, out=graph)
     # A at norm 1 while the states are balanced: its weight against B and C must not depend on
@@ -185,10 +189,15 @@ def _exponent(A: Array) -> int:
     return math.frexp(math.sqrt(_squares(A)))[1]
 
 
-def _normalised(M: Array, axis: int) -> tuple[Array, Array]:
-    """Bring columns (axis 0) or rows (axis 1) to norms from 1/2 to 1, by powers of two."""
-    exponents = np.frexp(np.sqrt(np.add.reduce(M * M, axis)))[1]
-    return np.ldexp(M, -exponents if axis == 0 else -exponents[:, None]), exponents
+def _normalised(M: Array, axis: int) -> tuple[Array, Array, float]:
+    """Bring columns (axis 0) or rows (axis 1) to norms from 1/2 to 1, by powers of two.
+
+    Returns the matrix, the exponents, and the sum of squares of what came out.
+    """
+    squares = np.add.reduce(M * M, axis)
+    exponents: Array = np.frexp(np.sqrt(squares))[1]
+    scaled = np.ldexp(M, -exponents if axis == 0 else -exponents[:, None])
+    return scaled, exponents, float(np.add.reduce(np.ldexp(squares, -2 * exponents)))
 
 
 def _tree_potentials(pattern: Array, exponents: Array) -> tuple[Array, list[int]]:
@@ -197,33 +206,30 @@ def _tree_potentials(pattern: Array, exponents: Array) -> tuple[Array, list[int]
     The tree depends on the zero pattern alone, so the scaled model does not depend on the units.
     """
     size = pattern.shape[0]
-    linked = pattern | pattern.T
-    units = np.zeros(size, dtype=np.int32)
-    waiting = np.ones(size, dtype=bool)
+    packed = np.packbits(pattern | pattern.T, axis=1, bitorder="little")
+    links = [int.from_bytes(row.tobytes(), "little") for row in packed]
+    units = [0] * size
+    waiting = (1 << size) - 1
     roots: list[int] = []
-    left = size
-    for root in range(size):
-        if not left:
-            break
-        if not waiting[root]:
-            continue
+    while waiting:
+        root = (waiting & -waiting).bit_length() - 1
         roots.append(root)
-        waiting[root] = False
-        left -= 1
+        waiting &= waiting - 1
         queue = [root]
         for node in queue:
-            if not left:
+            children = links[node] & waiting
+            waiting ^= children
+            while children:
+                child = (children & -children).bit_length() - 1
+                children &= children - 1
+                if pattern[node, child]:
+                    units[child] = units[node] - int(exponents[node, child])
+                else:
+                    units[child] = units[node] + int(exponents[child, node])
+                queue.append(child)
+            if not waiting:
                 break
-            children = (linked[node] & waiting).nonzero()[0]
-            if not children.size:
-                continue
-            waiting[children] = False
-            left -= children.size
-            units[children] = units[node] + np.where(
-                pattern[node, children], -exponents[node, children], exponents[children, node]
-            )
-            queue.extend(children.tolist())
-    return units, roots
+    return np.array(units, dtype=np.int32), roots
 
 
 def _least_squares(work: Array, logs: Array, weights: Array, roots: list[int], order: int) -> Array:
@@ -235,15 +241,15 @@ def _least_squares(work: Array, logs: Array, weights: Array, roots: list[int], o
     it.
 
     ``logs`` are already weighted. They may lie in ``work``, which is overwritten by the normal
-    equations: for a large model, fresh memory costs more than the arithmetic.
+    equations and whose precision is that of the solution.
     """
     size = weights.shape[0]
     total = np.add.reduce
-    right = np.empty(size + 1)
+    right = np.empty(size + 1, dtype=work.dtype)
     np.subtract(total(logs, 1), total(logs, 0), out=right[:size])
     right[size] = total(total(logs[:order, :order], 0))
     laplacian = work[:size, :size]
-    np.add(weights, weights.T, out=laplacian, dtype=float)
+    np.add(weights, weights.T, out=laplacian, dtype=work.dtype)
     degrees = total(laplacian, 0)
     np.negative(laplacian, out=laplacian)
     # The diagonal of A says nothing about nodes: its own terms cancel here and in the sums above.
@@ -252,12 +258,13 @@ def _least_squares(work: Array, logs: Array, weights: Array, roots: list[int], o
     for root in roots:
         diagonal[root] += 1.0
     state = weights[:order, :order]
-    to_state = total(state, 1, dtype=float)
+    to_state = total(state, 1, dtype=work.dtype)
     work[size] = 0.0
-    work[size, :order] = to_state - total(state, 0, dtype=float)
+    work[size, :order] = to_state - total(state, 0, dtype=work.dtype)
     work[:, size] = work[size]
     work[size, size] = total(to_state) + _RIDGE
-    solution, info = lapack.dposv(work, right, lower=1, overwrite_a=1)[1:]
+    solve = lapack.sposv if work.dtype == np.float32 else lapack.dposv
+    solution, info = solve(work, right, lower=1, overwrite_a=1)[1:]
     if info:  # pragma: no cover  # the ridge and the grounds make it positive definite
         raise AssertionError(f"normal equations not positive definite (info {info})")
     return np.asarray(solution)

@@ -86,6 +86,9 @@ class PrecisionSteps:
 _SLACK: Final = 6
 """Decades by which rounding noise at two precisions may differ beyond the digits between them."""
 
+_APART: Final = 2 * _SLACK
+"""Fewest digits between two precisions of which a trend can be read."""
+
 _AGREE: Final = 0.01
 """Relative difference up to which two precisions show the same singular value."""
 
@@ -101,7 +104,7 @@ def precision_steps(
         Floats count as the numbers they are; irrational constants are computed anew for each
         precision.
     digits : sequence of int, keyword-only
-        At least two precisions, rising.
+        At least two precisions, each at least 12 more than the one before.
 
     Returns
     -------
@@ -110,7 +113,7 @@ def precision_steps(
     Raises
     ------
     LimitError, UnsupportedEntryError
-        When digits are not at least two rising integers from `MIN_DIGITS` to `MAX_DIGITS`.
+        When digits are no such integers, or beyond the limits of the path.
 
     Notes
     -----
@@ -119,15 +122,18 @@ def precision_steps(
     nor stays lies near the noise of one of them: give more digits. Evidence, not proof: zero to
     all digits tried is not zero.
     """
-    ladder = tuple(digits)
-    if len(ladder) < 2 or any(low >= high for low, high in pairwise(ladder)):
+    paths = [MultiprecisionPath(count) for count in digits]
+    ladder = tuple(path.numbers.digits for path in paths)
+    if len(ladder) < 2 or any(high < low + _APART for low, high in pairwise(ladder)):
         raise LimitError(
-            f"digits is {ladder!r}; wanted at least two numbers of digits, rising", what="digits"
+            f"digits is {ladder!r}; wanted two numbers of digits or more, each at least {_APART} "
+            "more than the one before",
+            what="digits",
         )
     stairs: tuple[Any, Any] = (None, None)
     columns: list[list[tuple[str, bool, Any]]] = []
-    for count in reversed(ladder):
-        opened = MultiprecisionPath(count).open(model)
+    for path in reversed(paths):
+        opened = path.open(model)
         reach = opened.reached(opened.A, opened.B, opened.C, "reached", stairs[0])
         sight = opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen", stairs[1])
         stairs = reach.stairs, sight.stairs
@@ -149,16 +155,16 @@ def precision_steps(
                 where=found[-1][0],
                 kept=found[-1][1],
                 values=tuple(map(float, values)),
-                trend=_trend(values[-2], values[-1], ladder[-1] - ladder[-2]),
+                trend=_trend(values[-2], values[-1], *ladder[-2:]),
             )
         )
     return PrecisionSteps(digits=ladder, order=sum(stairs[1]), stairs=stairs, steps=tuple(steps))
 
 
-def _trend(before: Any, after: Any, digits: int) -> Trend:
-    """Return what a value did between two precisions that differ by so many digits."""
-    if after * 10 ** max(digits - _SLACK, 1) <= before:
-        return Trend.SHRINKS
+def _trend(before: Any, after: Any, fewer: int, more: int) -> Trend:
+    """Return what a value did between two precisions."""
     if abs(after - before) <= _AGREE * after:
-        return Trend.STAYS
-    return Trend.CANNOT_TELL
+        return Trend.STAYS if after else Trend.SHRINKS
+    # Noise that happens to be zero, or nearly, at the lower precision is still noise there.
+    noise = max(before, before.context.mpf(10) ** -fewer)
+    return Trend.SHRINKS if after * 10 ** (more - fewer - _SLACK) <= noise else Trend.CANNOT_TELL

@@ -3,11 +3,10 @@
 from __future__ import annotations
 
 import warnings
-from collections.abc import Callable
 from typing import Any
 
 from realize.arithmetic.floating import OpenedFloating
-from realize.arithmetic.path import Path
+from realize.arithmetic.path import Opened, Path, Reach
 from realize.entries import Reading
 from realize.errors import EntryError, HiddenInstabilityWarning
 from realize.forms.companion import realize_transfer
@@ -17,7 +16,7 @@ from realize.forms.response import response_change
 from realize.forms.sources import accept
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
-from realize.results import Deferred, Mode, Part, Reduction, RemovedModes
+from realize.results import Deferred, Part, Reduction, RemovedModes
 from realize.stability import Stability, hidden_warning
 
 __all__ = ["minimal", "reduce"]
@@ -25,16 +24,18 @@ __all__ = ["minimal", "reduce"]
 
 def minimal(path: Path, source: Realization | TransferMatrix) -> Reduction:
     """Return a minimal realization, and warn of what the transfer matrix no longer shows."""
-    reduction, blocks = _reduce(path, source)
-    if reduction.order < reduction.source_order:
+    reduction, opened, blocks = _reduce(path, source)
+    if reduction.order < reduction.source_order and not all(
+        opened.decays(block) for _, block in blocks
+    ):
         try:
-            doubtful = [m for m in blocks() if m.stability is not Stability.STABLE]
+            modes = opened.modes(blocks)
         except EntryError:
-            # A mode that no double can hold is not known to be stable, and cannot be named.
-            doubtful = None
-        if doubtful is None or doubtful:
-            # The caller called a face, and the face called this.
-            warnings.warn(hidden_warning(doubtful or ()), HiddenInstabilityWarning, stacklevel=3)
+            # A mode that no double can hold cannot be named.
+            modes = ()
+        doubtful = [mode for mode in modes if mode.stability is not Stability.STABLE]
+        # The caller called a face, and the face called this.
+        warnings.warn(hidden_warning(doubtful), HiddenInstabilityWarning, stacklevel=3)
     return reduction
 
 
@@ -45,8 +46,8 @@ def reduce(path: Path, source: Realization | TransferMatrix) -> Reduction:
 
 def _reduce(
     path: Path, source: Realization | TransferMatrix
-) -> tuple[Reduction, Callable[[], tuple[Mode, ...]]]:
-    """Return the reduction, and what computes the modes removed, not yet sorted into parts."""
+) -> tuple[Reduction, Opened[Reach], list[tuple[Part, Any]]]:
+    """Return the reduction, the opened model, and the blocks removed, not yet sorted into parts."""
     accept(source, Realization, TransferMatrix)
     from_transfer = isinstance(source, TransferMatrix)
     model = realize_transfer(path, source) if isinstance(source, TransferMatrix) else source
@@ -54,16 +55,15 @@ def _reduce(
     reach, sight = reach_and_see(opened)
     order = sight.dimension
 
-    def blocks() -> list[tuple[Part, Any]]:
-        return [
-            (Part.CONTROLLABLE_UNOBSERVABLE, sight.quotient()),
-            (Part.UNCONTROLLABLE_UNOBSERVABLE, reach.quotient()),
-        ]
+    blocks = [
+        (Part.CONTROLLABLE_UNOBSERVABLE, sight.quotient()),
+        (Part.UNCONTROLLABLE_UNOBSERVABLE, reach.quotient()),
+    ]
 
     def removed() -> RemovedModes:
         polynomial: tuple[Any, ...] | None = None
         if path.is_exact:
-            first, second = (opened.characteristic_polynomial(block) for _, block in blocks())
+            first, second = (opened.characteristic_polynomial(block) for _, block in blocks)
             polynomial = path.multiply(first, second)
         return RemovedModes(
             count=model.order - order,
@@ -88,7 +88,7 @@ def _reduce(
         ),
         **_changes(opened, (reach, sight), reduced),
     )
-    return reduction, lambda: opened.modes(blocks())
+    return reduction, opened, blocks
 
 
 def _changes(opened: Any, run: tuple[Any, Any], reduced: Realization) -> dict[str, Deferred[Any]]:
