@@ -60,6 +60,9 @@ _GUARD: Final = 10
 _EDGE: Final = 900
 """Binary exponent, up or down, up to which an entry takes part in the scaling as it is."""
 
+_PASSES: Final = 8
+"""Scalings at most, each of which brings an entry beyond that nearer by as much."""
+
 _CLUSTER: Final = 4
 """Eigenvalues that lie this many times their doubt apart may be one multiple eigenvalue."""
 
@@ -483,8 +486,9 @@ def _scaling(numbers: Numbers, A: Array, B: Array, C: Array) -> Scaling:
     """Return the scaling that the floating path would take, applied to all digits."""
     sizes = (A.shape[0], B.shape[1], C.shape[0])
     states, inputs, outputs = (np.zeros(size, dtype=int) for size in sizes)
-    time, beyond = 0, True
-    while beyond:
+    time = 0
+    # A loop whose gain is beyond the range stays there in every unit, so the passes are counted.
+    for _ in range(_PASSES):
         (a, b, c), beyond = _in_doubles(numbers.context, A, B, C)
         found = scaling_of(a, b, c) if sizes[0] else unscaled(a, b, c)
         A = numbers.shifted(A, found.states - found.states[:, None] - found.time)
@@ -496,6 +500,8 @@ def _scaling(numbers: Numbers, A: Array, B: Array, C: Array) -> Scaling:
             outputs + found.outputs,
         )
         time += found.time
+        if not beyond:
+            break
     return Scaling(states, inputs, outputs, time, A, B, C, numbers.norm(A, B, C))
 
 

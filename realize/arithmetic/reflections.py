@@ -6,7 +6,7 @@ none changes it.
 References
 ----------
 Golub and Van Loan, Matrix Computations, sections 5.1, 5.2, 7.4, 7.5. Wilkinson (1965), The
-Algebraic Algebraic Eigenvalue Problem, chapter 6, section 57 (from memory), for the polynomial of a
+Algebraic Eigenvalue Problem, chapter 6, section 57 (from memory), for the polynomial of a
 Hessenberg matrix.
 """
 
