@@ -66,6 +66,10 @@ _PASSES: Final = 8
 _CLUSTER: Final = 4
 """Eigenvalues that lie this many times their doubt apart may be one multiple eigenvalue."""
 
+_NEAR: Final = 1e-8
+"""Largest such doubt, over the norm of the model. The m-th root of the rounding grows with m, and
+many eigenvalues that lie within it are many eigenvalues: 50 digits find up to six in one place."""
+
 
 class Numbers:
     """Numbers with so many digits: a context, and the way in and out of it."""
@@ -328,19 +332,15 @@ class OpenedMultiprecision:
         smallest = values[len(values) - 1]
         return float(values[0] / smallest) if smallest else math.inf
 
-    def eigenvalues(self, A: Array) -> list[Any]:
-        """Return the eigenvalues of a block in the scaled unit of time; pairs are exact pairs."""
-        context = self.numbers.context
-        return _in_pairs(context, reflections.eigenvalues(context, A))
-
-    def clustered(self, values: Sequence[Any]) -> list[tuple[Any, int, Any]]:
-        """Return eigenvalues with their multiplicity and how far off they may be, all scaled.
+    def eigenvalues(self, A: Array) -> list[tuple[Any, int, Any]]:
+        """Return eigenvalues, their multiplicity and how far off they may be, in scaled time.
 
         An eigenvalue of multiplicity m is computed as m of them about it, as far away as the m-th
         root of the rounding. So m that lie that close together are taken for one, at their mean,
         in which most of that error cancels. What is alone is doubted like a double one.
         """
         context, scale = self.numbers.context, self.scaling.scale
+        values = reflections.eigenvalues(context, A)
         roundoff = self.numbers.number(self.numbers.roundoff)
         floor = rule.rounding_floor(self.model.order, context.one, roundoff)
         radii = [scale * context.root(floor, m) for m in range(1, max(len(values), 2) + 1)]
@@ -352,6 +352,8 @@ class OpenedMultiprecision:
             near = sorted(waiting, key=lambda other: abs(other - value))
             size = 1
             for m in range(2, len(near) + 1):
+                if radii[m - 1] > _NEAR * scale:
+                    break
                 if abs(near[m - 1] - value) <= _CLUSTER * radii[m - 1]:
                     size = m
             cluster = near[:size]
@@ -385,7 +387,7 @@ class OpenedMultiprecision:
                     size,
                     computed_stability(value * unit, period, doubt * unit),
                 )
-                for value, size, doubt in self.clustered(self.eigenvalues(A))
+                for value, size, doubt in self.eigenvalues(A)
             ),
             key=lambda each: (each[0].real, each[0].imag),
         )
@@ -521,23 +523,6 @@ def _in_doubles(context: Any, *matrices: Array) -> tuple[list[Array], bool]:
                 doubles[index] = float(context.ldexp(value, kept - exponent))
         found.append(doubles)
     return found, beyond
-
-
-def _in_pairs(context: Any, values: Sequence[Any]) -> list[Any]:
-    """Return eigenvalues of a real matrix with complex ones in exact conjugate pairs."""
-    waiting = sorted((context.mpc(value) for value in values), key=lambda v: -abs(v.imag))
-    found: list[Any] = []
-    while waiting:
-        value = waiting.pop(0)
-        mirror = context.conj(value)
-        nearest = min(waiting, key=lambda other: abs(other - mirror), default=None)
-        if nearest is not None and abs(nearest - mirror) < abs(value.imag):
-            waiting.remove(nearest)
-            middle = (value + context.conj(nearest)) / 2
-            found += [middle, context.conj(middle)]
-        else:
-            found.append(context.mpc(value.real))
-    return found
 
 
 def _vector(values: Sequence[Any]) -> Array:
@@ -730,7 +715,7 @@ class MultiprecisionPath:
         opened = self._companion((), polynomial)
         unit = numbers.context.ldexp(1, opened.scaling.time)
         found: list[tuple[tuple[Any, ...], int]] = []
-        roots = [(v * unit, m) for v, m, _ in opened.clustered(opened.eigenvalues(opened.A))]
+        roots = [(v * unit, m) for v, m, _ in opened.eigenvalues(opened.A)]
         for root, multiplicity in sorted(roots, key=lambda each: (each[0].real, each[0].imag)):
             if root.imag == 0:
                 found.append(((Fraction(1), -numbers.fraction(root.real)), multiplicity))

@@ -214,10 +214,10 @@ def characteristic_polynomial(context: Any, A: Array) -> list[Any]:
 
 
 def eigenvalues(context: Any, A: Array) -> list[Any]:
-    """Return the eigenvalues as complex numbers, those of an exactly conjugate pair included.
+    """Return the eigenvalues as complex numbers, pairs exactly conjugate.
 
-    Shifted QR iteration on a Hessenberg form; what is below the rounding of the whole matrix is
-    zero.
+    Francis's QR iteration with double shifts on a Hessenberg form; what is below the rounding of
+    the whole matrix is zero.
 
     Raises
     ------
@@ -225,8 +225,6 @@ def eigenvalues(context: Any, A: Array) -> list[Any]:
         When the iteration does not converge.
     """
     H = hessenberg(context, A)
-    for index, value in np.ndenumerate(H):
-        H[index] = context.mpc(value)
     negligible = context.eps * context.sqrt(context.fdot(A.flat, A.flat))
     found: list[Any] = []
     high, steps = H.shape[0], 0
@@ -234,49 +232,47 @@ def eigenvalues(context: Any, A: Array) -> list[Any]:
         low = high - 1
         while low and abs(H[low, low - 1]) > negligible:
             low -= 1
-        if high - low <= 2:
-            found += [H[low, low]] if high - low == 1 else _of_two(context, H[low:high, low:high])
-            high, steps = low, 0
+        if high - low > 2:
+            if steps == _STEPS:
+                raise PrecisionError(
+                    f"the eigenvalues of a block of order {A.shape[0]} did not converge in "
+                    f"{_STEPS} steps; give another number of digits"
+                )
+            steps += 1
+            _francis_step(context, H[low:high, low:high], usual=bool(steps % 10))
             continue
-        if steps == _STEPS:
-            raise PrecisionError(
-                f"the eigenvalues of a block of order {A.shape[0]} did not converge in {_STEPS} "
-                "steps; give another number of digits"
-            )
-        steps += 1
-        last = H[high - 2 : high, high - 2 : high]
-        if steps % 10:
-            shift = min(_of_two(context, last), key=lambda value: abs(value - last[1, 1]))
+        if high - low == 1:
+            found.append(context.mpc(H[low, low]))
         else:
-            # A shift out of the ordinary, where the ordinary ones go round in circles.
-            shift = last[1, 1] + abs(last[1, 0])
-        _step(context, H[low:high, low:high], shift)
+            (a, b), (c, d) = H[low:high, low:high]
+            middle, root = (a + d) / 2, context.sqrt(((a - d) / 2) ** 2 + b * c)
+            found += [context.mpc(middle + root), context.mpc(middle - root)]
+        high, steps = low, 0
     return found
 
 
-def _of_two(context: Any, H: Array) -> list[Any]:
-    """Return the eigenvalues of a matrix of order two."""
-    middle = (H[0, 0] + H[1, 1]) / 2
-    root = context.sqrt(((H[0, 0] - H[1, 1]) / 2) ** 2 + H[0, 1] * H[1, 0])
-    return [middle + root, middle - root]
-
-
-def _step(context: Any, H: Array, shift: Any) -> None:
-    """Take one QR step with a shift, in place, on a Hessenberg matrix of complex numbers."""
+def _francis_step(context: Any, H: Array, *, usual: bool) -> None:
+    """Take one step with two shifts, in place, on a Hessenberg matrix of order three or more."""
     size = H.shape[0]
-    diagonal = np.einsum("ii->i", H)
-    diagonal -= shift
-    rotations = []
+    if usual:
+        (a, b), (c, d) = H[-2:, -2:]
+        total, product = a + d, a * d - b * c
+    else:
+        # Shifts out of the ordinary, where the ordinary ones go round in circles.
+        far = abs(H[-1, -2]) + abs(H[-2, -3])
+        total, product = 3 * far / 2, far**2
+    column = [
+        H[0, 0] * (H[0, 0] - total) + H[0, 1] * H[1, 0] + product,
+        H[1, 0] * (H[0, 0] + H[1, 1] - total),
+        H[1, 0] * H[2, 1],
+    ]
     for k in range(size - 1):
-        first, second = H[k, k], H[k + 1, k]
-        length = context.sqrt(abs(first) ** 2 + abs(second) ** 2)
-        c, s = (first / length, second / length) if length else (context.mpc(1), context.mpc(0))
-        rotations.append((c, s))
-        upper, lower = H[k, k:].copy(), H[k + 1, k:]
-        H[k, k:] = context.conj(c) * upper + context.conj(s) * lower
-        H[k + 1, k:] = c * lower - s * upper
-    for k, (c, s) in enumerate(rotations):
-        left, right = H[: k + 2, k].copy(), H[: k + 2, k + 1]
-        H[: k + 2, k] = c * left + s * right
-        H[: k + 2, k + 1] = context.conj(c) * right - context.conj(s) * left
-    diagonal += shift
+        width = min(3, size - k)
+        if k:
+            column = list(H[k : k + width, k - 1])
+        v, factor = reflection(context, np.array(column, dtype=object))
+        last = min(k + 4, size)
+        rows = slice(k, k + width)
+        reflect(context, v, factor, H[rows, max(k - 1, 0) :], H[:last, rows].T)
+        if k:
+            H[k + 1 : k + width, k - 1] = context.zero

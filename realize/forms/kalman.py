@@ -107,9 +107,9 @@ def decompose(opened: Opened[Reach], reach: Reach, sight: Reach) -> Decompositio
     unseen = rest - outside.dimension
     if unseen > order - r:
         raise PrecisionError(
-            f"the rank decisions of the floating path contradict each other: {unseen} unseen "
-            f"states outside a reachable part that leaves room for {order - r}. Give another "
-            "tolerance, or use the exact path"
+            f"the rank decisions contradict each other: {unseen} unseen states outside a reachable "
+            f"part that leaves room for {order - r}. Give another tolerance, or more digits, or "
+            "use the exact path"
         )
     beyond = outside.frame().inverse.T[:, outside.dimension :]
     completion = opened.complete(beyond[visible:, :])

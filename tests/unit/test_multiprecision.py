@@ -157,7 +157,7 @@ def test_names_are_kept() -> None:
 
 
 def test_units_by_powers_of_two_change_nothing() -> None:
-    """States in other units, far beyond the range of doubles: the same decisions, digit by digit."""
+    """States in other units, beyond the range of doubles: the same decisions, digit by digit."""
     model = Realization([[-1, 1, 0], [1, -2, 1], [0, 1, -3]], [1, 0, 0], [0, 0, 1])
     units = [F(2) ** 700, F(1, 2**900), F(1)]
     A = [[model.A[i, j] * units[i] / units[j] for j in range(3)] for i in range(3)]
@@ -242,6 +242,22 @@ def test_multiple_modes_are_one_mode(
         absolute = 1e-24 if stability == "cannot tell" else 0.0
         assert mode.value == pytest.approx(value, rel=1e-8, abs=absolute)
         assert (mode.multiplicity, mode.stability) == (multiplicity, stability)
+
+
+def test_many_eigenvalues_are_not_one() -> None:
+    """Thirty eigenvalues of a random matrix are thirty, also the three that are a million times
+    smaller than the rest.
+    """
+    rng = np.random.default_rng(3)
+    A = rng.normal(size=(30, 30))
+    A[:3, 3:] = 0.0
+    A[:3, :3] *= 1e-6
+    opened = MultiprecisionPath(50).open(Realization(A, A[:, :1], A[:1]))
+    found = opened.judged(opened.A, None)
+    assert [multiplicity for _, multiplicity, _ in found] == [1] * 30
+    wanted = sorted(np.linalg.eigvals(A).tolist(), key=abs)
+    for value, other in zip(sorted((v for v, _, _ in found), key=abs), wanted, strict=True):
+        assert abs(value) == pytest.approx(abs(other), rel=1e-8)
 
 
 @quiet
@@ -488,13 +504,50 @@ def test_polynomials_of_hessenberg_forms() -> None:
         assert abs(numbers.fraction(mine) - theirs) < abs(theirs) * F(1, 10**44)
 
 
-def test_eigenvalues_of_a_real_matrix_come_in_exact_pairs() -> None:
-    """So many reals and exact conjugates, whatever the rounding of the iteration."""
-    A = np.roll(np.eye(7, dtype=int), 1, axis=0)
-    opened = MultiprecisionPath(50).open(Realization(A, A[:, :1], A[:1]))
-    values = opened.eigenvalues(opened.A)
-    assert sum(value.imag == 0 for value in values) == 1
-    assert sorted(map(repr, values)) == sorted(repr(value.conjugate()) for value in values)
+@pytest.mark.parametrize(
+    ("rows", "expected"),
+    [
+        (np.roll(np.eye(7), 1, axis=0), np.exp(2j * np.pi * np.arange(7) / 7)),
+        (np.roll(np.eye(8), 1, axis=0), np.exp(2j * np.pi * np.arange(8) / 8)),
+        (np.zeros((4, 4)), np.zeros(4)),
+        (np.eye(5, k=1), np.zeros(5)),
+        (np.diag([3, 3, -1]), [3, 3, -1]),
+        ([[0, 1, 0, 0], [-1, 0, 0, 0], [0, 0, 0, 1], [0, 0, -1, 0]], [1j, 1j, -1j, -1j]),
+        ([[0, 0, 1], [1, 0, 0], [0, 1, 0]], np.exp(2j * np.pi * np.arange(3) / 3)),
+        (np.zeros((0, 0)), []),
+        ([[5]], [5]),
+    ],
+    ids=["cycle of 7", "cycle of 8", "zero", "nilpotent", "diagonal", "pairs", "cycle of 3",
+         "empty", "one"],
+)  # fmt: skip
+def test_eigenvalues_of_matrices_that_make_iterations_stall(rows: Any, expected: Any) -> None:
+    """Cycles, on which plain shifts stand still, and multiple eigenvalues; pairs are exact."""
+    numbers = Numbers(50)
+    size = len(rows)
+    A = table(numbers, np.asarray(rows, dtype=int).tolist()).reshape(size, size)
+    found = reflections.eigenvalues(numbers.context, A)
+    waiting = list(expected)
+    for value in found:
+        nearest = min(waiting, key=lambda other: abs(other - complex(value)))
+        # An eigenvalue of multiplicity m is good to the m-th part of the digits.
+        assert abs(complex(value) - nearest) < 1e-8
+        waiting.remove(nearest)
+    assert waiting == []
+    assert all(value.conjugate() in found for value in found)
+
+
+def test_eigenvalues_are_good_to_all_digits() -> None:
+    """Those of an integer matrix are roots of its exact polynomial to nearly all digits."""
+    A = np.random.default_rng(11).integers(-9, 10, (12, 12))
+    numbers = Numbers(60)
+    polynomial = exact.transfer_matrix(Realization(A, A[:, :1], A[:1])).denominators[0][0]
+    coefficients = [numbers.number(c) for c in polynomial]
+    found = reflections.eigenvalues(numbers.context, table(numbers, A.tolist()))
+    assert len(found) == 12
+    for value in found:
+        rest = numbers.context.polyval(coefficients, value)
+        slope = numbers.context.polyval(np.polyder(np.array(coefficients)).tolist(), value)
+        assert abs(rest / slope) < 1e-54
 
 
 def test_forced_ranks_are_taken() -> None:
