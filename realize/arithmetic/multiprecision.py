@@ -17,6 +17,7 @@ Those of `realize.arithmetic.floating`. Kailath (1980), Linear Systems, sections
 
 from __future__ import annotations
 
+import cmath
 import math
 from collections.abc import Iterable, Sequence
 from fractions import Fraction
@@ -31,7 +32,7 @@ from realize.arithmetic import reflections
 from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor, frozen
 from realize.arithmetic.scaling import Scaling, scaling_of, unscaled
 from realize.entries import constant_near, fraction_array, is_constant, make_fraction
-from realize.errors import LimitError, PrecisionError, UnsupportedEntryError
+from realize.errors import EntryError, LimitError, PrecisionError, UnsupportedEntryError
 from realize.model.realization import Kind, Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Mode, Part, RankDecision
@@ -100,8 +101,8 @@ class Numbers:
         """Return the number of the context nearest to a float or a rational."""
         if isinstance(value, float):
             return self.context.mpf(value)
-        ratio = from_rational(int(value.numerator), int(value.denominator), self.context.prec)
-        return self.context.make_mpf(ratio)
+        numerator, denominator = int(value.numerator), int(value.denominator)
+        return self.context.make_mpf(from_rational(numerator, denominator, self.context.prec, "n"))
 
     def fraction(self, number: Any) -> Fraction:
         """Return a number of the context as the binary fraction it is."""
@@ -336,8 +337,9 @@ class OpenedMultiprecision:
         """Return eigenvalues, their multiplicity and how far off they may be, in scaled time.
 
         An eigenvalue of multiplicity m is computed as m of them about it, as far away as the m-th
-        root of the rounding. So m that lie that close together are taken for one, at their mean,
-        in which most of that error cancels. What is alone is doubted like a double one.
+        root of the rounding. So m that lie that close together, where that is close at all, are
+        taken for one, at their mean, in which most of that error cancels. What is alone is doubted
+        like a double one.
         """
         context, scale = self.numbers.context, self.scaling.scale
         values = reflections.eigenvalues(context, A)
@@ -377,20 +379,30 @@ class OpenedMultiprecision:
     def judged(self, A: Array, period: Any) -> list[tuple[complex, int, Stability]]:
         """Return the eigenvalues of a block as doubles, multiplicities, and what a mode there does.
 
-        The stability is decided with all digits, before the rounding to doubles.
+        Raises
+        ------
+        EntryError
+            When an eigenvalue is too large for a double.
         """
-        unit = self.numbers.context.ldexp(1, self.scaling.time)
-        return sorted(
-            (
-                (
-                    complex(value * unit),
-                    size,
-                    computed_stability(value * unit, period, doubt * unit),
+        found = []
+        for value, size, stability in self._judged(A, period):
+            rounded = complex(value)
+            if not cmath.isfinite(rounded):
+                raise EntryError(
+                    f"a mode of about 2^{self.numbers.context.mag(value)} is too large for a "
+                    "double; scale the time of the model",
+                    where="mode",
                 )
-                for value, size, doubt in self.eigenvalues(A)
-            ),
-            key=lambda each: (each[0].real, each[0].imag),
-        )
+            found.append((rounded, size, stability))
+        return sorted(found, key=lambda each: (each[0].real, each[0].imag))
+
+    def _judged(self, A: Array, period: Any) -> list[tuple[Any, int, Stability]]:
+        """Return the same with all digits, by which the stability is decided."""
+        unit = self.numbers.context.ldexp(1, self.scaling.time)
+        return [
+            (value * unit, size, computed_stability(value * unit, period, doubt * unit))
+            for value, size, doubt in self.eigenvalues(A)
+        ]
 
     def characteristic_polynomial(self, A: Array) -> tuple[Fraction, ...]:
         numbers = self.numbers
@@ -399,8 +411,8 @@ class OpenedMultiprecision:
         return tuple(numbers.fractions(numbers.shifted(_vector(coefficients), powers)).tolist())
 
     def decays(self, block: Array) -> bool:
-        found = self.modes([(Part.UNCONTROLLABLE_UNOBSERVABLE, block)])
-        return all(mode.stability is Stability.STABLE for mode in found)
+        judged = self._judged(block, self.model.sampling_period)
+        return all(stability is Stability.STABLE for _, _, stability in judged)
 
     def modes(self, blocks: Iterable[tuple[Part, Array]]) -> tuple[Mode, ...]:
         """Return computed eigenvalues, about which nothing is proved."""

@@ -107,6 +107,17 @@ def test_a_thousand_digits() -> None:
 # --------------------------------------------------------------------------- what results hold
 
 
+def test_numbers_are_rounded_to_nearest() -> None:
+    """Rationals on both sides of a middle go to the nearer number of the path."""
+    numbers = Numbers(20)
+    unit = numbers.roundoff
+    for sign in (1, -1):
+        for part, expected in ((F(1, 3), 0), (F(2, 3), 1), (F(4, 3), 1), (F(5, 3), 2)):
+            rounded = numbers.rounded(sign * (1 + part * unit), "entry")
+            assert rounded == sign * (1 + expected * unit)
+    assert numbers.rounded(0.1, "entry") == F(0.1)
+
+
 def test_results_are_rational_models_of_binary_fractions() -> None:
     """Denominators are powers of two, and 1/3 comes back good to the digits asked for."""
     model = Realization([["-1/3", 1], [0, "-1/7"]], [0, 1], [1, 0], ["2/3"], sampling_period="1/10")
@@ -174,6 +185,11 @@ def test_entries_beyond_the_range_of_doubles() -> None:
     model = Realization([["-1e900", 0], ["1e900", "-3e900"]], ["1e-900", 0], [0, "1e900"])
     assert multiprecision.minimal(model).order == 2
     assert multiprecision.kalman_parts(model).dimensions["controllable, observable"] == 2
+    with pytest.warns(realize.HiddenInstabilityWarning):
+        reduced = multiprecision.minimal(Realization([["1e900", 0], [0, -1]], [0, 1], [1, 1]))
+    assert reduced.order == 1
+    with pytest.raises(errors.EntryError, match=r"2\^2990 is too large for a double"):
+        _ = reduced.removed.modes
 
 
 @quiet
@@ -245,9 +261,7 @@ def test_multiple_modes_are_one_mode(
 
 
 def test_many_eigenvalues_are_not_one() -> None:
-    """Thirty eigenvalues of a random matrix are thirty, also the three that are a million times
-    smaller than the rest.
-    """
+    """Thirty eigenvalues are thirty, also the three that are a million times smaller."""
     rng = np.random.default_rng(3)
     A = rng.normal(size=(30, 30))
     A[:3, 3:] = 0.0
