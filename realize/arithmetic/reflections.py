@@ -37,8 +37,9 @@ Array = np.ndarray[Any, Any]
 _SWEEPS: Final = 60
 """Sweeps of rotations at most; they converge quadratically once the rows are nearly orthogonal."""
 
-_STEPS: Final = 200
-"""Steps of a QR iteration for one eigenvalue at most; a few are common, also with many digits."""
+_STEPS: Final = 40
+"""Steps of a QR iteration at most, for each digit and eigenvalue. A few in all are common, but to a
+multiple eigenvalue the iteration converges by less than a digit a step."""
 
 
 def zeros(context: Any, rows: int, columns: int) -> Array:
@@ -227,16 +228,16 @@ def eigenvalues(context: Any, A: Array) -> list[Any]:
     H = hessenberg(context, A)
     negligible = context.eps * context.sqrt(context.fdot(A.flat, A.flat))
     found: list[Any] = []
-    high, steps = H.shape[0], 0
+    high, steps, most = H.shape[0], 0, _STEPS * context.dps
     while high:
         low = high - 1
         while low and abs(H[low, low - 1]) > negligible:
             low -= 1
         if high - low > 2:
-            if steps == _STEPS:
+            if steps == most:
                 raise PrecisionError(
                     f"the eigenvalues of a block of order {A.shape[0]} did not converge in "
-                    f"{_STEPS} steps; give another number of digits"
+                    f"{most} steps; give another number of digits"
                 )
             steps += 1
             _francis_step(context, H[low:high, low:high], usual=bool(steps % 10))

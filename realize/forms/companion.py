@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from itertools import accumulate
 from typing import Any
 
@@ -86,11 +85,8 @@ def _by_columns(path: Path, transfer: TransferMatrix) -> Realization:
         if size:
             B[start + size - 1][j] = 1
         for i in range(outputs):
-            above = _over(path, transfer, i, j, cofactors[i], len(below))
-            D[i][j] = above[0]
-            for k in range(size):
-                # The feedthrough times the denominator leaves the strictly proper part.
-                C[i][start + k] = path.difference(above[size - k], above[0] * below[size - k])
+            D[i][j], rest = _over(path, transfer, i, j, cofactors[i], size)
+            C[i][start : start + size] = rest[::-1]
     return Realization._trusted(
         path.array(A, (order, order)),
         path.array(B, (order, inputs)),
@@ -104,9 +100,13 @@ def _by_columns(path: Path, transfer: TransferMatrix) -> Realization:
 
 
 def _over(
-    path: Path, transfer: TransferMatrix, i: int, j: int, cofactor: tuple[Any, ...], length: int
-) -> Sequence[Any]:
-    """Return an entry's numerator over the common denominator, padded to its length."""
+    path: Path, transfer: TransferMatrix, i: int, j: int, cofactor: tuple[Any, ...], size: int
+) -> tuple[Any, list[Any]]:
+    """Return an entry's feedthrough, and the numerator of the rest over the common denominator.
+
+    The rest is taken before it is brought over the common denominator: in the products rounding
+    would leave traces of what is zero, which a scaling would lift to full size.
+    """
     own = transfer.denominators[i][j]
     above = transfer.numerators[i][j]
     if len(above) > len(own):
@@ -115,5 +115,12 @@ def _over(
             f"{len(above) - 1} over a denominator of degree {len(own) - 1}. A realization has no "
             "such transfer function; divide out the polynomial part first"
         )
-    widened = path.multiply(tuple(value / own[0] for value in above), cofactor)
-    return [0] * (length - len(widened)) + list(widened)
+    direct = above[0] / own[0] if len(above) == len(own) else 0
+    strict = tuple(value / own[0] for value in above[-len(own) + 1 :]) if len(own) > 1 else ()
+    if direct:
+        strict = tuple(
+            path.difference(value, direct * (below / own[0]))
+            for value, below in zip(strict, own[1:], strict=True)
+        )
+    widened = path.multiply(strict, cofactor) if any(strict) else ()
+    return direct, [0] * (size - len(widened)) + list(widened)
