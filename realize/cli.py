@@ -11,6 +11,7 @@ import os
 import sys
 import traceback
 from dataclasses import asdict
+from pathlib import Path
 from typing import Any, NoReturn
 
 import click
@@ -26,7 +27,7 @@ from realize.errors import RealizeError
 from realize.examination import Examination
 from realize.examination.against import differences, read_record
 from realize.examination.examine import DEFAULT_BUDGET, examine
-from realize.examination.page import findings
+from realize.examination.page import findings, page
 from realize.forms import reduce
 from realize.model.files import load, save, to_document
 from realize.model.realization import Realization
@@ -156,7 +157,7 @@ def examine_command(
     if as_json:
         click.echo(json.dumps(examination.to_dict(), indent=2))
     else:
-        _print_page(str(examination))
+        _print_page(page(examination, "" if file == "-" else Path(file).stem))
     sys.exit(examination.status)
 
 

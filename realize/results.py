@@ -6,6 +6,7 @@ kept, and it is computed before a record is pickled.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from enum import StrEnum
@@ -153,6 +154,8 @@ class Mode:
         Time to fall (or, negative, to grow) by a factor e, in the time unit of the model.
     damping : float or None
         Damping ratio, 1 for a real stable mode.
+    doubling_time : float or None
+        Time in which a growing mode doubles, in the same unit; None for any other.
     polynomial : tuple of Fraction, or None
         Monic irreducible factor it is a root of; None on the floating path.
     why : str or None
@@ -160,6 +163,9 @@ class Mode:
         or "by value", with the left or right vector in named states.
     vector : tuple of (str, number)
         That vector: the states it involves, the largest component 1.
+    lost : str or None
+        For a hidden mode of a connected model: whether it was hidden in a block before, or how the
+        connection hid it.
     inputs, outputs : tuple of str, or None
         Names of the inputs that reach the mode and of the outputs that see it, each taken alone;
         None where that was not computed.
@@ -175,8 +181,16 @@ class Mode:
     polynomial: Polynomial | None = None
     why: str | None = None
     vector: tuple[tuple[str, Any], ...] = ()
+    lost: str | None = None
     inputs: tuple[str, ...] | None = None
     outputs: tuple[str, ...] | None = None
+
+    @property
+    def doubling_time(self) -> float | None:
+        """Time in which a growing mode doubles: ln 2 times the time in which it grows e-fold."""
+        if self.time_constant is None or self.time_constant >= 0.0:
+            return None
+        return -math.log(2.0) * self.time_constant
 
     def to_dict(self) -> dict[str, Any]:
         """Return the mode as plain JSON values."""
@@ -188,9 +202,11 @@ class Mode:
             "multiplicity": self.multiplicity,
             "stability": str(self.stability),
             "time_constant": self.time_constant,
+            "doubling_time": self.doubling_time,
             "damping": self.damping,
             "polynomial": None if self.polynomial is None else spelled(self.polynomial),
             "why": self.why,
+            "lost": self.lost,
             "inputs": None if self.inputs is None else list(self.inputs),
             "outputs": None if self.outputs is None else list(self.outputs),
         }

@@ -410,7 +410,8 @@ def hidden_cautions(modes: Iterable[HiddenMode]) -> tuple[str, ...]:
     tuple of str
         One caution for each hidden mode that is not known to decay (a complex pair is named
         once): growing ones first, then those on the boundary, then those that cannot be told.
-        Then, if anything at all is hidden, what hidden is relative to. Empty when nothing is.
+        Then, if anything at all is hidden, what hidden is relative to, and that equal transfer
+        matrices are not equal models. Empty when nothing is.
     """
     hidden = [mode for mode in modes if mode.part != _VISIBLE]
     if not hidden:
@@ -421,7 +422,7 @@ def hidden_cautions(modes: Iterable[HiddenMode]) -> tuple[str, ...]:
         for mode in hidden
         if mode.stability == stability
     ]
-    return (*dict.fromkeys(sentences), HIDDEN_IS_RELATIVE)
+    return (*dict.fromkeys(sentences), HIDDEN_IS_RELATIVE, NOT_INTERCHANGEABLE)
 
 
 def hidden_warning(modes: Iterable[HiddenMode]) -> str:

@@ -23,6 +23,8 @@ from realize.errors import ToleranceError
 __all__ = [
     "DEFAULT_FACTOR",
     "FLOOR_FACTOR",
+    "LOOP_MARGIN",
+    "SAME_MODE",
     "check_tolerance",
     "cutoff",
     "default_tolerance",
@@ -42,6 +44,19 @@ FLOOR_FACTOR: Final = 8.0
 
 UNIT_ROUNDOFF: Final = 2.0**-52
 """Spacing of the doubles next to 1."""
+
+SAME_MODE: Final = 1e-6
+"""Distance, over the largest entry of A, up to which computed modes of two models count as one.
+
+A double root is good to half of the digits; this leaves it two decades more.
+"""
+
+LOOP_MARGIN: Final = 1e-6
+"""An algebraic loop with a smaller margin is called nearly ill-posed, with a warning.
+
+Few measured gains are known to one part in a million, so such data cannot tell the loop from one
+that has no solution; and the connected model has lost six digits of the doubles' sixteen.
+"""
 
 SHARE_OF_DIGITS: Final = Fraction(1, 2)
 """Share of the digits of the multiprecision path within which a number counts as not zero."""

@@ -19,9 +19,10 @@ from realize.errors import (
     UnsupportedEntryError,
 )
 from realize.examination.doubt import with_doubt
+from realize.examination.lost import with_loss
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
-from realize.examination.record import Answer, Examination
+from realize.examination.record import Answer, Examination, peak_memory
 from realize.forms.kalman import decompose, reach_and_see
 from realize.forms.minimal import reduce
 from realize.forms.sources import accept
@@ -123,6 +124,7 @@ def examine(
             else with_doubt(about.hidden_modes(), model, answer.basis)
         )
     )
+    connection = model._connection
     stairs = {word: found.stairs for word, found in exact.items()}
     return Examination(
         model=model,
@@ -144,8 +146,10 @@ def examine(
         routes={word: found.routes for word, found in exact.items()},
         not_done=tuple(not_done),
         seconds={"floating": floating.seconds, "exact": exact_seconds},
+        peak_memory=peak_memory(),
         _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
-        _hidden=hidden,
+        _hidden=Deferred(lambda: with_loss(hidden.get(), model, answer.basis, budget)),
+        _loops=Deferred(lambda: () if connection is None else connection.join().loops),
         _visible=Deferred(lambda: _visible_modes(about, floating, budget, model, answer.basis)),
         _parts=Deferred(lambda: {word: _parts_of(found, budget) for word, found in exact.items()}),
         hidden_parts={

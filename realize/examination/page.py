@@ -29,9 +29,9 @@ _SHORT = 12
 """Up to this order the polynomial of the visible part is shown."""
 
 
-def page(examination: Examination) -> str:
-    """Return the examination as lines of at most 80 columns."""
-    lines = [findings(examination), "", *_tables(examination)]
+def page(examination: Examination, name: str = "") -> str:
+    """Return the examination as lines of at most 80 columns; the name is the model's."""
+    lines = [findings(examination, name), "", *_tables(examination), *_ran(examination)]
     if examination.cautions:
         lines.append("")
         for caution in examination.cautions:
@@ -39,11 +39,11 @@ def page(examination: Examination) -> str:
     return "\n".join(lines)
 
 
-def findings(examination: Examination) -> str:
+def findings(examination: Examination, name: str = "") -> str:
     """Return what the page begins with: the answer, and what follows from it."""
     lines: list[str] = []
     for label, text in (
-        ("Model", _model(examination)),
+        ("Model", (f"{name}: " if name else "") + _model(examination)),
         ("Answer", examination.verdict[0].upper() + examination.verdict[1:] + "."),
         ("Danger", _danger(examination)),
         ("Hidden", _hidden(examination)),
@@ -145,7 +145,9 @@ def _danger(examination: Examination) -> str:
     ):
         found = _named(examination, [mode for mode in hidden if mode.stability is stability])
         if found:
-            named = ", ".join(f"{value} ({mode.part})" for value, mode, _ in found[:4])
+            named = ", ".join(
+                f"{value} ({mode.part}{_doubling(mode)})" for value, mode, _ in found[:4]
+            )
             return (
                 f"{text}: {named}. The transfer function does not show it, the plant has it. "
                 f"Stabilizable: {examination.stabilizable}. Detectable: {examination.detectable}."
@@ -193,10 +195,19 @@ def _why(examination: Examination) -> str:
         return "every state is reached and seen."
     if all(mode.why is None for _, mode, _ in modes):
         return "not told: the exact path did not run."
-    texts = [f"{value}: {mode.why}" for value, mode, _ in modes[:4]]
+    texts = [
+        f"{value}: {mode.why}{'' if mode.lost is None else f', {mode.lost}'}"
+        for value, mode, _ in modes[:4]
+    ]
     if len(modes) > 4:
         texts.append(f"and {len(modes) - 4} more")
     return "; ".join(texts) + "."
+
+
+def _doubling(mode: Mode) -> str:
+    if mode.stability is not Stability.UNSTABLE or mode.doubling_time is None:
+        return ""
+    return f", doubles in {number_text(mode.doubling_time)}"
 
 
 def _basis(examination: Examination) -> str:
@@ -352,6 +363,37 @@ def _channel_table(examination: Examination, modes: tuple[Mode, ...]) -> list[st
     return [*lines, ""]
 
 
+def _mode_table(examination: Examination, modes: tuple[Mode, ...]) -> list[str]:
+    """Return the modes by part, with times in the unit of time of the model."""
+    head = f"  {'value':<26}{'times':<7}{'stability':<13}{'in time':<24}damping"
+    lines = ["Modes of the answer", head]
+    part = None
+    named = _named(examination, modes)
+    for value, mode, times in named[:40]:
+        if mode.part is not part:
+            part = mode.part
+            lines.append(f" {part}")
+        ratio = "-" if mode.damping is None else f"{mode.damping:.3g}"
+        when = _in_time(examination, mode)
+        lines.append(f"  {value:<26}{times:<7}{mode.stability:<13}{when:<24}{ratio}")
+    if len(named) > 40:
+        lines.append(f"  and {len(named) - 40} more")
+    return [*lines, ""]
+
+
+def _in_time(examination: Examination, mode: Mode) -> str:
+    """Return what a mode does in the time unit of the model, in few words."""
+    if _is_delay(examination, mode):
+        return "a delay, over at once"
+    if mode.stability in (Stability.MARGINAL, Stability.CANNOT_TELL):
+        return "-"
+    if mode.doubling_time is not None:
+        return f"doubles in {mode.doubling_time:.4g}"
+    if mode.time_constant is not None:
+        return f"time constant {mode.time_constant:.4g}"
+    return "slower than can be told"
+
+
 def _tables(examination: Examination) -> list[str]:
     lines: list[str] = []
     if examination.minimal_order:
@@ -369,14 +411,7 @@ def _tables(examination: Examination) -> list[str]:
             lines.extend(block_text.split("\n"))
         lines.append("")
     modes = examination.modes
-    lines.append("Modes of the answer")
-    lines.append(f"  {'value':<26}{'times':<7}{'stability':<13}part")
-    named = _named(examination, modes)
-    for value, mode, times in named[:40]:
-        lines.append(f"  {value:<26}{times:<7}{mode.stability:<13}{mode.part}")
-    if len(named) > 40:
-        lines.append(f"  and {len(named) - 40} more")
-    lines.append("")
+    lines.extend(_mode_table(examination, modes))
     lines.extend(_channel_table(examination, modes))
     lines.append("Rank decisions of the floating path")
     readings = list(examination.minimal_order)
@@ -397,3 +432,11 @@ def _tables(examination: Examination) -> list[str]:
         for reading, found in examination.routes.items():
             lines.append(f"  {reading:<12}" + ", ".join(f"{k} {v}" for k, v in found.items()))
     return lines
+
+
+def _ran(examination: Examination) -> list[str]:
+    """Return what the examination took."""
+    seconds = ", ".join(f"{path} {used:.2g} s" for path, used in examination.seconds.items())
+    memory = examination.peak_memory
+    used = "not measured on this system" if memory is None else f"{memory / 2**20:.0f} MiB"
+    return ["", *_field("Took", f"{seconds}; most memory the process held: {used}.")]

@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 import os
+import sys
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any, Final
@@ -12,12 +13,19 @@ from typing import Any, Final
 import numpy as np
 
 from realize.examination.nearest import Nearest
+from realize.model.connections import AlgebraicLoop
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
 from realize.results import Deferred, Mode, Part, RankDecision, Reduction, ResponseChange, spelled
-from realize.stability import Stability, hidden_cautions
+from realize.stability import (
+    NEARLY_ILL_POSED_LOOP,
+    WEAK_IS_NOT_HIDDEN,
+    Stability,
+    hidden_cautions,
+)
+from realize.tolerance import LOOP_MARGIN
 
-__all__ = ["Answer", "Examination", "environment"]
+__all__ = ["Answer", "Examination", "environment", "peak_memory"]
 
 NEAR_EDGE: Final = 1000.0
 """Factor between the cutoff and another answer below which the answer counts as fragile."""
@@ -79,6 +87,8 @@ class Examination:
         Reading -> hidden part -> exact characteristic polynomial.
     seconds : dict
         Path -> wall-clock seconds.
+    peak_memory : int or None
+        Bytes, the most that the process has held so far; None where the system does not tell.
     """
 
     model: Realization
@@ -96,6 +106,7 @@ class Examination:
     routes: dict[str, dict[str, int]]
     not_done: tuple[str, ...]
     seconds: dict[str, float]
+    peak_memory: int | None
     within_uncertainty: str | None = None
     witness: Realization | None = None
     _decisions: Deferred[tuple[RankDecision, ...]]
@@ -105,6 +116,12 @@ class Examination:
     hidden_parts: dict[str, dict[str, Polynomial]]
     _unsimple: Deferred[int]
     _reduction: Deferred[Reduction | None]
+    _loops: Deferred[tuple[AlgebraicLoop, ...]]
+
+    @property
+    def algebraic_loops(self) -> tuple[AlgebraicLoop, ...]:
+        """The algebraic loops of a connected model; none where feedthroughs run in no circle."""
+        return self._loops.get()
 
     @property
     def decisions(self) -> tuple[RankDecision, ...]:
@@ -161,8 +178,13 @@ class Examination:
 
     @property
     def cautions(self) -> tuple[str, ...]:
-        """What must be said of the hidden modes of the answer."""
-        return hidden_cautions(self.hidden_modes)
+        """What must be said of the hidden modes of the answer, and of what is nearly another."""
+        said = hidden_cautions(self.hidden_modes)
+        if self.nearest is not None and self.nearest.order < self.answer.order:
+            said += (WEAK_IS_NOT_HIDDEN,)
+        if any(found.margin < LOOP_MARGIN for found in self.algebraic_loops):
+            said += (NEARLY_ILL_POSED_LOOP,)
+        return said
 
     @property
     def entries_without_simple_fraction(self) -> int:
@@ -270,6 +292,11 @@ class Examination:
             "cautions": list(self.cautions),
             "not_done": list(self.not_done),
             "seconds": dict(self.seconds),
+            "peak_memory": self.peak_memory,
+            "algebraic_loops": [
+                {"ports": list(found.ports), "margin": _finite(found.margin)}
+                for found in self.algebraic_loops
+            ],
             "environment": environment(),
             "digest": self.digest,
         }
@@ -281,6 +308,16 @@ class Examination:
 
     def __repr__(self) -> str:
         return f"<Examination: {self.verdict}>"
+
+
+def peak_memory() -> int | None:
+    """Return the most bytes that the process has held so far, where the system tells."""
+    try:
+        import resource
+    except ImportError:  # not every system has it
+        return None
+    held = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
+    return held if sys.platform == "darwin" else 1024 * held
 
 
 def _finite(value: float) -> float | None:

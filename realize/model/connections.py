@@ -26,7 +26,7 @@ from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from enum import StrEnum
 from fractions import Fraction
-from typing import TYPE_CHECKING, Any, Final, NoReturn
+from typing import TYPE_CHECKING, Any, NoReturn
 
 import numpy as np
 
@@ -53,29 +53,22 @@ from realize.errors import (
 )
 from realize.model.base import Names, Period, count_text, entry_reader, own_names, parse_names
 from realize.model.realization import Matrix, Realization
-from realize.tolerance import UNIT_ROUNDOFF
+from realize.tolerance import LOOP_MARGIN, UNIT_ROUNDOFF
 
 if TYPE_CHECKING:
     from flint import fmpq_mat
 
 __all__ = [
-    "LOOP_MARGIN",
     "AlgebraicLoop",
     "Connection",
     "Feedback",
     "assemble",
     "block_diagonal",
     "cascade",
+    "listed",
     "loop",
     "sum_of",
 ]
-
-LOOP_MARGIN: Final = 1e-6
-"""An algebraic loop with a smaller margin is called nearly ill-posed, with a warning.
-
-Few measured gains are known to one part in a million, so such data cannot tell the loop from one
-that has no solution; and the connected model has lost six digits of the doubles' sixteen.
-"""
 
 Link = tuple[int, int, Entry]
 """A gain from a column (where a signal comes from) to a row (where it goes)."""
@@ -313,14 +306,14 @@ def _transposed(links: tuple[Link, ...]) -> tuple[Link, ...]:
 def _ill_posed(ports: tuple[str, ...], rational: bool) -> AlgebraicLoopError:
     within = "" if rational else "within the rounding of doubles "
     return AlgebraicLoopError(
-        f"the direct feedthroughs around {_listed(ports)} form an algebraic loop that is "
+        f"the direct feedthroughs around {listed(ports)} form an algebraic loop that is "
         f"ill-posed: {within}its equations have no unique solution. Change a gain, or give a block "
         "around the loop no direct feedthrough",
         ports=ports,
     )
 
 
-def _listed(names: Sequence[str]) -> str:
+def listed(names: Sequence[str]) -> str:
     """Return names for a message, the first of them when there are many."""
     shown = ", ".join(names[:_SHOWN])
     return shown if len(names) <= _SHOWN else f"{shown} and {len(names) - _SHOWN} more"
@@ -702,7 +695,7 @@ def loop(plant: Realization, controller: Realization, *, feedback: str = "negati
     -----
     AlgebraicLoopWarning
         When the loop is nearly ill-posed: its margin is below
-        `realize.model.connections.LOOP_MARGIN`.
+        `realize.tolerance.LOOP_MARGIN`.
 
     Notes
     -----
@@ -802,7 +795,7 @@ def assemble(
     -----
     AlgebraicLoopWarning
         When a loop is nearly ill-posed: its margin is below
-        `realize.model.connections.LOOP_MARGIN`.
+        `realize.tolerance.LOOP_MARGIN`.
 
     References
     ----------
@@ -872,7 +865,7 @@ def _connected(connection: Connection, input_names: Names, output_names: Names) 
     for found in joined.loops:
         if found.margin < LOOP_MARGIN:
             warnings.warn(
-                f"the algebraic loop around {_listed(found.ports)} is nearly ill-posed: a relative "
+                f"the algebraic loop around {listed(found.ports)} is nearly ill-posed: a relative "
                 f"change of its direct gains by {found.margin:.2g} can leave it without a solution",
                 AlgebraicLoopWarning,
                 stacklevel=3,  # the caller of the public function
@@ -1043,7 +1036,7 @@ class _Ends:
         if block is None:
             allowed = [*self.outside, *allowed]
         raise UnknownWordError(
-            f"{place}: {what}; known here: {_listed(allowed) or 'none'}",
+            f"{place}: {what}; known here: {listed(allowed) or 'none'}",
             argument="wires",
             found=text,
             allowed=allowed,

@@ -7,8 +7,10 @@ connection at a rational point from the responses of its blocks, and orders from
 from __future__ import annotations
 
 import warnings
+from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import reduce
 from typing import Any
 
 import numpy as np
@@ -28,6 +30,7 @@ from realize import (
     sum_of,
 )
 from realize.entries import EXACT_READINGS
+from realize.polynomials import divide_exact, multiply
 from tests.helpers import (
     Polynomial,
     assert_close,
@@ -399,3 +402,21 @@ def test_nesting_forgets_nothing(data: st.DataObject, reading: str) -> None:
     assert model.read(reading) == expected
     assert model.to_float().read(reading) == expected
     assert model.dual().read(reading) == expected.dual()
+
+
+@given(data=st.data())
+def test_what_blocks_hide_stays_hidden(data: st.DataObject) -> None:
+    """The unreached polynomials of the blocks divide that of the connection; so do the unseen."""
+
+    def hidden(model: Realization, side: Callable[[str], bool]) -> Polynomial:
+        parts = exact.kalman_parts(model).polynomials
+        return reduce(multiply, (p for part, p in parts.items() if side(part)), (Fraction(1),))
+
+    first, second = data.draw(systems(1, 1)), data.draw(systems(1, 1))
+    for model in (cascade(first, second), sum_of(first, second)):
+        for side in (
+            lambda part: part.startswith("un"),
+            lambda part: part.endswith("unobservable"),
+        ):
+            before = multiply(hidden(first, side), hidden(second, side))
+            divide_exact(hidden(model, side), before)  # raises where it does not divide

@@ -37,7 +37,7 @@ from realize import (
     sum_of,
 )
 from realize.entries import EXACT_READINGS
-from realize.model.connections import LOOP_MARGIN
+from realize.tolerance import LOOP_MARGIN
 
 F = Fraction
 

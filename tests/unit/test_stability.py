@@ -491,11 +491,11 @@ def test_the_words_unstable_and_marginal_are_kept_for_hidden_modes_that_are() ->
 def test_hidden_modes_are_named_worst_first() -> None:
     """Growing, then on the boundary, then not to be told; a pair once; then what hidden means."""
     cautions = hidden_cautions(ALL_KINDS)
-    assert len(cautions) == 4
+    assert len(cautions) == 5
     assert cautions[0].startswith("Hidden unstable mode at 0.5 +/- 2j (controllable, unobservable)")
     assert cautions[1].startswith("Hidden marginal mode at 0 +/- 3j (uncontrollable, observable)")
     assert cautions[2].startswith("Hidden mode at 2 (uncontrollable, observable)")
-    assert cautions[3] == stability.HIDDEN_IS_RELATIVE
+    assert cautions[3:] == (stability.HIDDEN_IS_RELATIVE, stability.NOT_INTERCHANGEABLE)
     for caution in cautions[:3]:
         assert "transfer function does not show it" in caution
         assert "Do not judge the stability of the plant from the reduced model." in caution
@@ -503,7 +503,10 @@ def test_hidden_modes_are_named_worst_first() -> None:
 
 def test_a_hidden_stable_mode_is_relative_only() -> None:
     """It brings no alarm, but says what it is hidden from."""
-    assert hidden_cautions(ALL_KINDS[:1]) == (stability.HIDDEN_IS_RELATIVE,)
+    assert hidden_cautions(ALL_KINDS[:1]) == (
+        stability.HIDDEN_IS_RELATIVE,
+        stability.NOT_INTERCHANGEABLE,
+    )
 
 
 def test_visible_modes_bring_no_caution() -> None:
