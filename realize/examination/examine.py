@@ -23,6 +23,7 @@ from realize.examination.lost import with_loss
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
 from realize.examination.record import Answer, Examination, peak_memory
+from realize.examination.why import by_pattern
 from realize.forms.kalman import decompose, reach_and_see
 from realize.forms.minimal import reduce
 from realize.forms.sources import accept
@@ -119,7 +120,7 @@ def examine(
     answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
     hidden = Deferred(
         lambda: (
-            floating.hidden_modes()
+            by_pattern(floating.hidden_modes(), model)
             if about is None
             else with_doubt(about.hidden_modes(), model, answer.basis)
         )

@@ -193,14 +193,20 @@ def _why(examination: Examination) -> str:
     modes = _named(examination, examination.hidden_modes)
     if not modes:
         return "every state is reached and seen."
+    untold = "not told, because the exact path did not run"
     if all(mode.why is None for _, mode, _ in modes):
-        return "not told: the exact path did not run."
+        return f"{untold}."
+    grouped: dict[str, list[str]] = {}
+    for value, mode, _ in modes:
+        reason = (mode.why or untold) + ("" if mode.lost is None else f", {mode.lost}")
+        grouped.setdefault(reason, []).append(value)
     texts = [
-        f"{value}: {mode.why}{'' if mode.lost is None else f', {mode.lost}'}"
-        for value, mode, _ in modes[:4]
+        f"{', '.join(values[:4])}{f' and {len(values) - 4} more' if len(values) > 4 else ''}: {why}"
+        for why, values in list(grouped.items())[:4]
     ]
-    if len(modes) > 4:
-        texts.append(f"and {len(modes) - 4} more")
+    if len(grouped) > 4:
+        rest = sum(len(values) for values in list(grouped.values())[4:])
+        texts.append(f"and {rest} more")
     return "; ".join(texts) + "."
 
 

@@ -19,13 +19,17 @@ from realize.arithmetic.scaling import scaling_of
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
 from realize.results import Mode, Part
+from realize.tolerance import SAME_MODE
 
-__all__ = ["Coordinates", "explained"]
+__all__ = ["Coordinates", "by_pattern", "explained"]
 
 Array = np.ndarray[Any, Any]
 
 _EXACT_VECTORS: Final = 32
 """Up to this order vectors of rational modes are exact; beyond, they are computed in doubles."""
+
+_UNREACHED: Final = (Part.UNCONTROLLABLE_OBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
+_UNSEEN: Final = (Part.CONTROLLABLE_UNOBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
 
 _AT_ZERO: Final[Polynomial] = (Fraction(1), Fraction(0))
 
@@ -70,6 +74,27 @@ def explained(
         found.append(
             replace(mode, why=f"by value, {side} vector {_combination(shown)}", vector=shown)
         )
+    return tuple(found)
+
+
+def by_pattern(modes: Iterable[Mode], model: Realization) -> tuple[Mode, ...]:
+    """Return computed hidden modes, with the reason of those that the zero pattern alone hides.
+
+    Needs no exact path, so it serves models that are too large for it: graph reachability is
+    exact, and which computed mode belongs to the states cut off is told by its value.
+    """
+    found = list(modes)
+    A, B, C = (np.asarray(M != 0) for M in (model.A, model.B, model.C))
+    near = SAME_MODE * float(np.abs(model.A).max(initial=0.0))
+    for states, parts in _cuts(A, B, C):
+        values = np.linalg.eigvals(np.asarray(model.A[np.ix_(states, states)], dtype=float))
+        inside = [mode for mode in found if mode.part in parts]
+        for k, mode in enumerate(found):
+            if mode.part in parts:
+                copies = np.count_nonzero(np.abs(values - mode.value) <= near)
+                hidden = sum(abs(other.value - mode.value) <= near for other in inside)
+                if hidden <= copies:
+                    found[k] = replace(mode, why="structural")
     return tuple(found)
 
 
@@ -119,17 +144,9 @@ def _structural(modes: Sequence[Mode], opened: OpenedExact) -> set[tuple[Part, P
     meant.
     """
     model = opened.model
-    A, B, C = model.A != 0, model.B != 0, model.C != 0
-    unreached, unseen = _cut_off(A, B.any(axis=1)), _cut_off(A.T, C.any(axis=0))
-    neither = Part.UNCONTROLLABLE_UNOBSERVABLE
+    A, B, C = (np.asarray(M != 0) for M in (model.A, model.B, model.C))
     found: set[tuple[Part, Polynomial | None]] = set()
-    for states, parts in (
-        (unreached, (Part.UNCONTROLLABLE_OBSERVABLE, neither)),
-        (unseen, (Part.CONTROLLABLE_UNOBSERVABLE, neither)),
-        ([i for i in unreached if i in set(unseen)], (neither,)),
-    ):
-        if not states:
-            continue
+    for states, parts in _cuts(A, B, C):
         block = opened.A.take(states, states).characteristic_polynomial()
         for factor, copies in polynomials.factor(block):
             # Every root of a factor is a mode of its own; one root of each part tells how many.
@@ -140,9 +157,24 @@ def _structural(modes: Sequence[Mode], opened: OpenedExact) -> set[tuple[Part, P
             }
             if sum(hidden.values()) <= copies:
                 found |= {(part, factor) for part in hidden}
-    found |= _dilations(modes, A, B, (Part.UNCONTROLLABLE_OBSERVABLE, neither))
-    found |= _dilations(modes, A.T, C.T, (Part.CONTROLLABLE_UNOBSERVABLE, neither))
+    found |= _dilations(modes, A, B, _UNREACHED)
+    found |= _dilations(modes, A.T, C.T, _UNSEEN)
     return found
+
+
+def _cuts(A: Array, B: Array, C: Array) -> list[tuple[list[int], tuple[Part, ...]]]:
+    """Return the states cut off from the inputs, the outputs, or both, and the parts they are in.
+
+    Takes the zero patterns; leaves out what holds no state.
+    """
+    unreached, unseen = _cut_off(A, np.any(B, axis=1)), _cut_off(A.T, np.any(C, axis=0))
+    both = sorted(set(unreached) & set(unseen))
+    cuts = (
+        (unreached, _UNREACHED),
+        (unseen, _UNSEEN),
+        (both, (Part.UNCONTROLLABLE_UNOBSERVABLE,)),
+    )
+    return [(states, parts) for states, parts in cuts if states]
 
 
 def _dilations(

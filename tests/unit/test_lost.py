@@ -225,3 +225,40 @@ def test_the_page_says_what_it_took() -> None:
     took = str(found).split("\nTook ")[1]
     assert "floating" in took
     assert "exact" in took
+
+
+@pytest.mark.parametrize("side", ["input", "output"])
+def test_the_pattern_tells_without_the_exact_path(side: str) -> None:
+    """With no time for the exact path, modes of states cut off are still told as structural."""
+    rows = [[-1.0, 0.0, 0.0, 0.0], [1.0, -2.0, 0.0, 0.0], [0.0, 0.0, 0.5, 0.0], [0, 0, 1, -0.25]]
+    model = Realization(rows, [1.0, 0.0, 0.0, 0.0], [0.0, 1.0, 0.0, 1.0])
+    if side == "output":
+        model = model.dual()
+    found = examine(model, budget=0)
+    assert found.answer.basis == "floating"
+    values = sorted(mode.value.real for mode in found.hidden_modes)
+    assert values == pytest.approx([-0.25, 0.5])
+    assert {mode.why for mode in found.hidden_modes} == {"structural"}
+    assert ": structural." in " ".join(str(found).split())
+
+
+def test_the_pattern_does_not_tell_what_values_hide() -> None:
+    """Two equal lags on one input: every state is joined to it, so nothing is structural."""
+    model = Realization([[-1.0, 0.0], [0.0, -1.0]], [1.0, 1.0], [1.0, 2.0])
+    found = examine(model, budget=0)
+    assert [mode.why for mode in found.hidden_modes] == [None]
+    assert "not told, because the exact path did not run" in " ".join(str(found).split())
+    # And a copy that is cut off does not make the other one structural.
+    three = Realization(
+        [[-1.0, 0.0, 0.0], [0.0, -1.0, 0.0], [0.0, 0.0, -1.0]], [1.0, 1.0, 0.0], [1.0, 2.0, 3.0]
+    )
+    assert {mode.why for mode in examine(three, budget=0).hidden_modes} == {None}
+
+
+def test_modes_with_one_reason_share_it() -> None:
+    """The page does not say one thing four times."""
+    model = Realization(
+        [[-k if i == k else 0 for i in range(6)] for k in range(6)], [1, *[0] * 5], [1] * 6
+    )
+    words = " ".join(str(examine(model)).split())
+    assert "Why -5, -4, -3, -2 and 1 more: structural. Basis" in words
