@@ -425,7 +425,7 @@ def _by_steps(
     found = _Found(Answer(order=about.order, basis="multiprecision"), best, about, stepped=stepped)
     if model.kind != Kind.FLOATING or floating.order is None or floating.order >= about.order:
         return found
-    pair = _formed(model, floating, lambda shaped, _: SteppedAnswer(shaped, clock), not_done)
+    pair = _formed(model, floating, lambda *near: SteppedAnswer(near[0], clock, near[1]), not_done)
     if pair is None:
         # What the floating path hides may be hidden within the rounding of the data, so the
         # dangers that it names must not be passed over.
@@ -474,7 +474,13 @@ def _stepped_answers(
             read = model if word is Reading.GIVEN else model._with_floats_read(word)
             same = next((other for other in found.values() if other.model == read), None)
             answer = SteppedAnswer(read, clock) if same is None else same
-        except (BudgetError, AlgebraicLoopError, EntryError, LimitError) as error:
+        except (
+            BudgetError,
+            AlgebraicLoopError,
+            EntryError,
+            LimitError,
+            PrecisionError,
+        ) as error:
             late.setdefault(str(error), []).append(str(word))
             continue
         found[str(word)] = answer

@@ -159,6 +159,12 @@ def _danger(examination: Examination) -> str:
                 f"hides {_count(examination.order - near.order, 'mode')}; what those do, the "
                 "transfer function of that model does not show."
             )
+        steps = examination.leading_steps
+        if steps is not None and not steps.is_settled:
+            return (
+                "no hidden mode was found, but the steps of precision are not settled: one may be "
+                "hidden, and may be unstable."
+            )
         return "no mode is hidden, so none can be unstable unseen."
     constants = [mode.time_constant for mode in hidden]
     slowest = max((constant for constant in constants if constant is not None), default=0.0)

@@ -18,6 +18,7 @@ from realize.arithmetic.multiprecision import (
 )
 from realize.arithmetic.steps import PrecisionSteps, precision_steps
 from realize.errors import BudgetError
+from realize.examination.why import Coordinates, explained_from_decimals
 from realize.forms.kalman import hidden_blocks
 from realize.model.realization import Realization
 from realize.results import Mode, Part
@@ -42,7 +43,9 @@ class SteppedAnswer:
     steps : PrecisionSteps
     """
 
-    def __init__(self, model: Realization, clock: Clock) -> None:
+    def __init__(
+        self, model: Realization, clock: Clock, coordinates: Coordinates | None = None
+    ) -> None:
         """Climb until every step is settled, or the time is up.
 
         Raises
@@ -50,7 +53,7 @@ class SteppedAnswer:
         BudgetError
             When the clock does not even leave time for the first steps.
         """
-        self.model = model
+        self.model, self.coordinates = model, coordinates
         self.steps: PrecisionSteps = precision_steps(model, digits=_LADDERS[0], clock=clock)
         self.stopped: str | None = None
         for digits in _LADDERS[1:]:
@@ -77,11 +80,12 @@ class SteppedAnswer:
         return opened, reach, sight
 
     def hidden_modes(self) -> tuple[Mode, ...]:
-        """Return the hidden modes, computed at the highest precision."""
+        """Return the hidden modes, computed at the highest precision, and why they are hidden."""
         if self.order == self.model.order:
             return ()
         opened, reach, sight = self._run
-        return opened.modes(hidden_blocks(opened, reach, sight))
+        modes = opened.modes(hidden_blocks(opened, reach, sight))
+        return explained_from_decimals(modes, opened, self.coordinates)
 
     def visible_modes(self) -> tuple[Mode, ...]:
         """Return the modes that the transfer matrix shows."""
