@@ -116,8 +116,8 @@ _APART: Final = 2 * _SLACK
 _AGREE: Final = 0.01
 """Relative difference up to which two precisions show the same singular value."""
 
-_REFLECTION_SECONDS: Final = 7e-6
-"""Estimated time of one staircase at 128 digits over the cube of the order."""
+_REFLECTION_SECONDS: Final = 1e-5
+"""Estimated time of one staircase at 128 digits over the cube of the order: a generous figure."""
 
 _ROTATION_SECONDS: Final = 4e-4
 """The same for its singular values, over the order times the square of the channels."""

@@ -1,8 +1,9 @@
 """Models made of models: series, parallel, side by side, a loop, any wiring of named blocks.
 
 A connected model remembers its blocks. Its matrices hold what the blocks' entries multiply out to,
-in doubles if any entry is one; `Realization.read` goes back to the blocks, reads each of them as it
-was given, and connects exactly. Two models with equal entries are equal, whatever they remember.
+in doubles if any entry is one, and as expressions if there are irrational constants and no doubles.
+`Realization.read` goes back to the blocks, reads each of them as it was given, and connects
+exactly. Two models with equal entries are equal, whatever they remember.
 
 One text serves all five functions. The inputs v of all blocks, their outputs w, the external
 inputs u and outputs y satisfy ``v = K w + L u`` and ``y = M w + N u`` with the gains of the wires,
@@ -688,7 +689,8 @@ def cascade(first: Realization, second: Realization) -> Realization:
     SamplingPeriodError
         When the sampling periods differ.
     EntryError
-        When a number becomes too large for a double.
+        When a number becomes too large for a double, or one made of irrational constants cannot
+        be told from zero.
     UnsupportedEntryError
         When an argument is no Realization.
 
@@ -752,7 +754,8 @@ def sum_of(first: Realization, second: Realization) -> Realization:
     SamplingPeriodError
         When the sampling periods differ.
     EntryError
-        When a number becomes too large for a double.
+        When a number becomes too large for a double, or one made of irrational constants cannot
+        be told from zero.
     UnsupportedEntryError
         When an argument is no Realization.
 
@@ -877,12 +880,15 @@ def loop(plant: Realization, controller: Realization, *, feedback: str = "negati
         When I + D Dc (I - D Dc for positive feedback) is singular, D being the feedthrough of the
         plant and Dc that of the controller; in doubles also when it is singular to within their
         rounding.
+    LimitError
+        When the loop has more than `LARGEST_LOOP` signals and holds irrational constants.
     ShapeError
         When inputs and outputs of the two do not fit.
     SamplingPeriodError
         When the sampling periods differ.
     EntryError
-        When a number becomes too large for a double.
+        When a number becomes too large for a double, or one made of irrational constants cannot
+        be told from zero.
     UnknownWordError
         When feedback is another word.
     UnsupportedEntryError
@@ -979,8 +985,10 @@ def assemble(
         When direct feedthroughs run in a circle and have no unique solution; in doubles also when
         that is so to within their rounding.
     EntryError
-        When a name cannot serve, a gain is no finite number, or a number becomes too large for a
-        double.
+        When a name cannot serve, a gain is no finite number, a number becomes too large for a
+        double, or one made of irrational constants cannot be told from zero.
+    LimitError
+        When an algebraic loop of more than `LARGEST_LOOP` signals holds irrational constants.
     ShapeError
         When a wire has not two or three items.
     SamplingPeriodError
