@@ -101,6 +101,8 @@ def examine(
         When the three routes to the minimal order differ, which would be a bug.
     NotBuiltError
         For any uncertainty but None.
+    PrecisionError
+        When no path has an answer.
     UnknownWordError
         For an unknown reading, or one that does not fit the model.
 
