@@ -129,7 +129,7 @@ def _print_page(text: str) -> None:
     type=click.FloatRange(min=0),
     default=DEFAULT_BUDGET,
     show_default=True,
-    help="Seconds that the exact path may take.",
+    help="Seconds that the exact path may take, and as many for steps of precision without it.",
 )
 @click.option(
     "--against",

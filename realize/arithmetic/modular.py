@@ -85,12 +85,14 @@ class Clock:
     ----------
     seconds : float or None
         None for no limit.
+    runner : str
+        What spends it, for messages.
     """
 
-    __slots__ = ("_end", "seconds")
+    __slots__ = ("_end", "runner", "seconds")
 
-    def __init__(self, seconds: float | None) -> None:
-        self.seconds = seconds
+    def __init__(self, seconds: float | None, runner: str = "the exact path") -> None:
+        self.seconds, self.runner = seconds, runner
         self._end = math.inf if seconds is None else time.monotonic() + seconds
 
     def check(self, where: str) -> None:
@@ -103,7 +105,7 @@ class Clock:
         """
         if time.monotonic() > self._end:
             raise BudgetError(
-                f"the exact path ran out of its budget of {self.seconds:g} s in: {where}. Give a "
+                f"{self.runner} ran out of its budget of {self.seconds:g} s in: {where}. Give a "
                 "larger budget, or use the floating path alone"
             )
 
@@ -119,7 +121,7 @@ class Clock:
         left = self._end - time.monotonic()
         if estimate > left:
             raise BudgetError(
-                f"the exact path did not begin: {where} is estimated at {estimate:.3g} s, and "
+                f"{self.runner} did not begin: {where} is estimated at {estimate:.3g} s, and "
                 f"{max(left, 0.0):.3g} s of the budget of {self.seconds:g} s are left. Give a "
                 "larger budget, or use the floating path alone"
             )

@@ -33,7 +33,7 @@ class ExactAnswer:
         self.opened = OpenedExact(model, clock)
         opened = self.opened
         self.reach, self.sight = reach_and_see(opened)
-        self.order = self.sight.dimension
+        self.order: int = self.sight.dimension
         self.stairs = (self.reach.stairs, self.sight.stairs)
         self.stairs_proved = self.reach.stairs_proved and self.sight.stairs_proved
         self.routes = routes(opened, self.order)

@@ -7,11 +7,12 @@ import json
 import os
 import sys
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any, Final
 
 import numpy as np
 
+from realize.arithmetic.steps import PrecisionSteps
 from realize.examination.nearest import Nearest
 from realize.model.connections import AlgebraicLoop
 from realize.model.realization import Realization
@@ -40,8 +41,9 @@ class Answer:
     order : int
     basis : str
         "given", "stored", "written": the reading it is proved for; "nearest": proved for an exact
-        model within the rounding floor of the one examined; "floating": the exact path did not
-        run, and nothing is proved.
+        model within the rounding floor of the one examined; "multiprecision": the exact path has
+        no answer, and the steps of precision are the evidence for this one, which is no proof;
+        "floating": by the floating path alone, and nothing is proved.
     """
 
     order: int
@@ -83,6 +85,11 @@ class Examination:
         Kept for data with an uncertainty, which are not built yet. So is `witness`.
     not_done : tuple of str
         What was skipped and why.
+    precision_steps : dict
+        Reading -> the steps of precision that were taken for want of an exact answer: "given" for
+        a model of rationals and constants, "nearest" for the nearest model of lower order. Where
+        the answer's basis is "multiprecision" it rests on the first of them. Empty where the
+        exact path answered.
     hidden_parts : dict
         Reading -> hidden part -> exact characteristic polynomial.
     seconds : dict
@@ -107,6 +114,7 @@ class Examination:
     not_done: tuple[str, ...]
     seconds: dict[str, float]
     peak_memory: int | None
+    precision_steps: dict[str, PrecisionSteps] = field(default_factory=dict)
     within_uncertainty: str | None = None
     witness: Realization | None = None
     _decisions: Deferred[tuple[RankDecision, ...]]
@@ -196,15 +204,15 @@ class Examination:
         """What makes the answer fragile, in words; empty when nothing does.
 
         A floating order that is not the answer's, an answer that no cutoff gives, a cutoff within
-        three decades of one that gives another answer, a hidden mode of which it cannot be told
-        whether it decays.
+        three decades of one that gives another answer, steps of precision that are not settled, a
+        hidden mode of which it cannot be told whether it decays.
         """
         found: list[str] = []
         if self.floating_order is None:
             found.append("the floating path did not run")
         elif self.floating_order != self.answer.order:
             found.append("the floating path has another order")
-        basis = self.answer.basis
+        basis = self.rests_on
         span = self.cutoff_ranges.get(basis)
         cutoff = next((decision.cutoff for decision in self.decisions), 0.0)
         near_edge = basis == "nearest" and self._margin() < NEAR_EDGE
@@ -214,9 +222,26 @@ class Examination:
             found.append("no cutoff gives the answer")
         elif near_edge:
             found.append("a cutoff less than three decades away gives another order")
+        steps = self.leading_steps
+        if steps is not None and not steps.is_settled:
+            found.append("the steps of precision are not settled")
         if any(mode.stability is Stability.CANNOT_TELL for mode in self.hidden_modes):
             found.append("it cannot be told whether a hidden mode decays")
         return tuple(found)
+
+    @property
+    def rests_on(self) -> str:
+        """The reading, or the other model, that the answer is about; "floating" without one."""
+        if self.answer.basis == "multiprecision":
+            return next(iter(self.precision_steps))
+        return self.answer.basis
+
+    @property
+    def leading_steps(self) -> PrecisionSteps | None:
+        """The steps of precision that the answer rests on; None where there are none."""
+        if self.answer.basis == "multiprecision":
+            return self.precision_steps[self.rests_on]
+        return None
 
     def _margin(self) -> float:
         """Return the smallest factor between the cutoff and a singular value it decided on."""
@@ -245,12 +270,12 @@ class Examination:
         """Exit status of the command line.
 
         0: nothing hidden, and nothing in doubt. 1: hidden modes, or paths or readings that
-        disagree. 3: undecided, the exact path did not run. 4: a hidden mode is not known to be
-        stable.
+        disagree. 3: undecided, nothing is proved, though steps of precision may be evidence.
+        4: a hidden mode is not known to be stable.
         """
         if any(mode.stability is not Stability.STABLE for mode in self.hidden_modes):
             return 4
-        if self.answer.basis == "floating":
+        if self.answer.basis in ("floating", "multiprecision"):
             return 3
         clean = self.answer.order == self.order and self.paths_agree and self.readings_agree
         return 0 if clean else 1
@@ -291,6 +316,9 @@ class Examination:
             "witness": None,
             "cautions": list(self.cautions),
             "not_done": list(self.not_done),
+            "precision_steps": {
+                reading: steps.to_dict() for reading, steps in self.precision_steps.items()
+            },
             "seconds": dict(self.seconds),
             "peak_memory": self.peak_memory,
             "algebraic_loops": [

@@ -67,20 +67,22 @@ def encode_entry(entry: Entry | Constant) -> float | str:
 
 
 def expression(entry: Entry | Constant) -> Any:
-    """Return a rational or a constant as an expression of sympy."""
+    """Return an entry as an expression of sympy, a float as the number it is."""
     import sympy
 
+    if isinstance(entry, float):
+        entry = Fraction(entry)
     if isinstance(entry, Fraction):
         return sympy.Rational(entry.numerator, entry.denominator)
     return entry
 
 
-def entry_reader(reading: Reading) -> Callable[[Entry], Fraction]:
-    """Return the function that reads floats by a reading and leaves rationals alone."""
+def entry_reader(reading: Reading) -> Callable[[Entry | Constant], Fraction | Constant]:
+    """Return the function that reads floats by a reading and leaves other entries alone."""
     zero = Fraction(0)
 
-    def read(entry: Entry) -> Fraction:
-        if isinstance(entry, Fraction):
+    def read(entry: Entry | Constant) -> Fraction | Constant:
+        if not isinstance(entry, float):
             return entry
         return read_float(entry, reading) if entry else zero
 
@@ -266,8 +268,22 @@ class SystemModel:
         """Yield the numbers as they were given, with places in words; none if all are doubles."""
         raise NotImplementedError
 
-    def _refuse_constants(self, advice: str) -> None:
+    def _readable(self) -> Iterator[tuple[str, Entry | Constant]]:
+        """Yield the numbers that `read` goes back to, with places; none if all are doubles."""
+        return self._placed()
+
+    def _holds_constants(self) -> bool:
+        """Whether `read` would meet an irrational constant."""
+        return self._kind is not Kind.RATIONAL and any(
+            is_constant(entry) for _, entry in self._readable()
+        )
+
+    def _refuse_constants(
+        self, advice: str, placed: Iterator[tuple[str, Entry | Constant]] | None = None
+    ) -> None:
         """Refuse a model that holds irrational constants, naming the first.
+
+        ``placed``: the numbers to look at, unless they are those of the model itself.
 
         Raises
         ------
@@ -276,7 +292,7 @@ class SystemModel:
         """
         if self._kind is Kind.RATIONAL:
             return
-        for where, entry in self._placed():
+        for where, entry in self._placed() if placed is None else placed:
             if is_constant(entry):
                 raise UnsupportedEntryError(
                     f"{where}: found the irrational constant {entry}; {advice}",
@@ -314,7 +330,8 @@ class SystemModel:
         word = known_word(Reading, reading, "reading")
         self._refuse_constants(
             "no rational number is what it stands for, so the model has no reading. Use "
-            "realize.multiprecision, which takes any number of digits of it, or to_float()"
+            "realize.multiprecision, which takes any number of digits of it, or to_float()",
+            self._readable(),
         )
         if self._kind is Kind.RATIONAL:
             return None if word is Reading.GIVEN else word
