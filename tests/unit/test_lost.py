@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import sys
 from fractions import Fraction
 
 import pytest
@@ -27,6 +28,7 @@ from realize.stability import (
 )
 
 F = Fraction
+ROOM = sys.modules["realize.examination.examine"]
 
 
 def fraction(numerator: list[object], denominator: list[object]) -> Realization:
@@ -236,7 +238,7 @@ def test_the_pattern_tells_without_the_exact_path(
     model = Realization(rows, [1.0, 0.0, 0.0, 0.0], [0.0, 1.0, 0.0, 1.0])
     if side == "output":
         model = model.dual()
-    monkeypatch.setattr("realize.examination.examine.STEPS_BUDGET", 0.0)
+    monkeypatch.setattr(ROOM, "STEPS_BUDGET", 0.0)
     found = examine(model, budget=0)
     assert found.answer.basis == "floating"
     values = sorted(mode.value.real for mode in found.hidden_modes)
@@ -247,7 +249,7 @@ def test_the_pattern_tells_without_the_exact_path(
 
 def test_the_pattern_does_not_tell_what_values_hide(monkeypatch: pytest.MonkeyPatch) -> None:
     """Two equal lags on one input: every state is joined to it, so nothing is structural."""
-    monkeypatch.setattr("realize.examination.examine.STEPS_BUDGET", 0.0)
+    monkeypatch.setattr(ROOM, "STEPS_BUDGET", 0.0)
     model = Realization([[-1.0, 0.0], [0.0, -1.0]], [1.0, 1.0], [1.0, 2.0])
     found = examine(model, budget=0)
     assert [mode.why for mode in found.hidden_modes] == [None]
