@@ -200,7 +200,7 @@ def _why(examination: Examination) -> str:
     modes = _named(examination, examination.hidden_modes)
     if not modes:
         return "every state is reached and seen."
-    untold = "not told, because the exact path has no answer"
+    untold = "not told, because no exact polynomial stands behind it"
     if all(mode.why is None for _, mode, _ in modes):
         return f"{untold}."
     grouped: dict[str, list[str]] = {}
@@ -391,7 +391,7 @@ def _shown_parts(examination: Examination) -> dict[str, dict[str, Polynomial | i
         if examination.order <= _SHORT:
             visible = examination.parts[word][Part.CONTROLLABLE_OBSERVABLE]
         known = {**hidden, str(Part.CONTROLLABLE_OBSERVABLE): visible}
-        shown[word] = {str(part): known[str(part)] for part in Part}
+        shown[word] = {str(part): known.get(str(part)) for part in Part}
     return shown
 
 

@@ -834,9 +834,14 @@ def test_time_may_run_out_anywhere(name: str, monkeypatch: pytest.MonkeyPatch) -
         plain(found)
         assert str(found)
         done = list(found.minimal_order)
-        assert done + [w for w in words if any(w in text for text in found.not_done)] == words
+        named = [w for w in words if any(w in text for text in found.not_done)]
+        assert done + [w for w in named if w not in done] == words
         assert all(found.minimal_order[word] == whole.minimal_order[word] for word in done)
-        assert all(found.hidden_parts[word] == whole.hidden_parts[word] for word in done)
+        # An order may be proved in time, and the polynomials of what it hides not be.
+        parts = found.hidden_parts
+        unnamed = [word for word in done if not parts[word] and whole.hidden_parts[word]]
+        assert set(unnamed) <= set(named)
+        assert all(parts[w] == whole.hidden_parts[w] for w in done if w not in unnamed)
         proved = any(word != "intended" for word in done)
         assert (found.answer.basis in ("floating", "multiprecision")) is (not proved)
         if done == words and found.answer == whole.answer:
