@@ -185,10 +185,14 @@ class Examination:
         basis = self.answer.basis
         span = self.cutoff_ranges.get(basis)
         cutoff = next((decision.cutoff for decision in self.decisions), 0.0)
-        near_edge = basis == "nearest" and self._margin() < NEAR_EDGE
-        if span is not None:
+        conflict = basis in self.cutoff_ranges and span is None
+        if span is None:
+            near_edge = (basis == "nearest" or conflict) and self._margin() < NEAR_EDGE
+        else:
             near_edge = not span[0] * NEAR_EDGE <= cutoff <= span[1] / NEAR_EDGE
-        if basis in self.cutoff_ranges and span is None and self.decisions:
+        # Rounding makes the exact ranks of single stages the largest that there can be, which no
+        # cutoff gives; where the order is the answer's all the same, only its margin counts.
+        if conflict and self.floating_order != self.answer.order and self.decisions:
             found.append("no cutoff gives the answer")
         elif near_edge:
             found.append("a cutoff less than three decades away gives another order")
