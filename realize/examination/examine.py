@@ -19,6 +19,7 @@ from realize.errors import (
     UnsupportedEntryError,
 )
 from realize.examination.doubt import with_doubt
+from realize.examination.eigenvectors import nearly_hidden
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
 from realize.examination.record import Answer, Examination
@@ -160,6 +161,7 @@ def examine(
                 else None
             )
         ),
+        _nearly_hidden=Deferred(floating.nearly_hidden),
     )
 
 
@@ -200,6 +202,10 @@ class _Floating:
             return ()
         _, run = self._ran()
         return run[0].decisions() + run[1].decisions()
+
+    def nearly_hidden(self) -> int:
+        """Return how many modes eigenvectors show within the cutoff of being hidden."""
+        return 0 if self.failed is not None else nearly_hidden(self._ran()[0])
 
     def hidden_modes(self) -> tuple[Mode, ...]:
         opened, (reach, sight) = self._ran()

@@ -105,6 +105,7 @@ class Examination:
     hidden_parts: dict[str, dict[str, Polynomial]]
     _unsimple: Deferred[int]
     _reduction: Deferred[Reduction | None]
+    _nearly_hidden: Deferred[int]
 
     @property
     def decisions(self) -> tuple[RankDecision, ...]:
@@ -174,7 +175,8 @@ class Examination:
         """What makes the answer fragile, in words; empty when nothing does.
 
         A floating order that is not the answer's, an answer that no cutoff gives, a cutoff within
-        three decades of one that gives another answer, a hidden mode of which it cannot be told
+        three decades of one that gives another answer, eigenvectors that show more modes within
+        the cutoff of being hidden than the answer hides, a hidden mode of which it cannot be told
         whether it decays.
         """
         found: list[str] = []
@@ -196,6 +198,8 @@ class Examination:
             found.append("no cutoff gives the answer")
         elif near_edge:
             found.append("a cutoff less than three decades away gives another order")
+        if self._nearly_hidden.get() > self.order - self.answer.order:
+            found.append("eigenvectors show a nearly hidden mode that the staircase does not")
         if any(mode.stability is Stability.CANNOT_TELL for mode in self.hidden_modes):
             found.append("it cannot be told whether a hidden mode decays")
         return tuple(found)

@@ -266,7 +266,7 @@ def _small(draw: st.DrawFn, largest: int) -> Small:
 
 
 def _change_units(draw: st.DrawFn, draft: Draft, units: Sequence[Fraction]) -> None:
-    if tuple(units) != (1,):
+    if any(unit != 1 for unit in units):
         for i in range(draft.order):
             draft.scale(i, draw(st.sampled_from(units)))
 
