@@ -18,7 +18,17 @@ from realize.model.realization import Realization
 from realize.polynomials import Polynomial
 from realize.results import Part
 
-__all__ = ["Chain", "Draft", "Planted", "Small", "companion_block", "plant", "times", "zeros"]
+__all__ = [
+    "Chain",
+    "Draft",
+    "Planted",
+    "Small",
+    "companion_block",
+    "plant",
+    "shown",
+    "times",
+    "zeros",
+]
 
 Array = np.ndarray[Any, Any]
 Chain = Mapping[str, Sequence[Polynomial]]
@@ -30,7 +40,7 @@ _REACHED = (Part.CONTROLLABLE_OBSERVABLE, Part.CONTROLLABLE_UNOBSERVABLE)
 _SEEN = (Part.CONTROLLABLE_OBSERVABLE, Part.UNCONTROLLABLE_OBSERVABLE)
 
 
-@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False, repr=False)
 class Planted:
     """A model with what was planted in it.
 
@@ -67,17 +77,20 @@ class Planted:
         return sum(self.dimensions[part] for part in _SEEN)
 
     def __repr__(self) -> str:
-        tables = ", ".join(
-            f"{name}={_shown(matrix)}"
-            for name, matrix in zip("ABCD", self.model.matrices(), strict=True)
-        )
-        period = self.model.sampling_period
-        timed = "" if period is None else f", sampling_period={period}"
         held = ", ".join(f"{part}: {count}" for part, count in self.dimensions.items())
-        return f"<Planted: {tables}{timed}; {held}>"
+        return f"<Planted: {shown(self.model)}; {held}>"
 
 
-def _shown(matrix: Array) -> str:
+def shown(model: Realization) -> str:
+    """Return all numbers of a model on one line."""
+    tables = ", ".join(
+        f"{name}={_rows(matrix)}" for name, matrix in zip("ABCD", model.matrices(), strict=True)
+    )
+    period = model.sampling_period
+    return tables if period is None else f"{tables}, sampling_period={period}"
+
+
+def _rows(matrix: Array) -> str:
     return "[" + ", ".join(f"[{', '.join(map(str, row))}]" for row in matrix.tolist()) + "]"
 
 
