@@ -77,18 +77,22 @@ def flags() -> dict[str, dict[str, int]]:
     """Examine every problem; count wrong orders, those not flagged, and right ones flagged."""
     found = {}
     for family in families():
-        counts = dict.fromkeys(("problems", "wrong", "unflagged", "answer_wrong"), 0)
-        counts |= dict.fromkeys(("clean", "false_alarms"), 0)
+        counts = dict.fromkeys(
+            ("problems", "wrong", "unflagged", "answer_wrong", "and_unflagged", "clean", "alarms"),
+            0,
+        )
         for problem in family.problems():
             examination = examine(problem.model)
             wrong = examination.floating_order != problem.order
             counts["problems"] += 1
             counts["wrong"] += wrong
             counts["unflagged"] += wrong and not examination.fragile
-            counts["answer_wrong"] += examination.answer.order != problem.order
+            wrong = examination.answer.order != problem.order
+            counts["answer_wrong"] += wrong
+            counts["and_unflagged"] += wrong and not examination.fragile
         for problem in family.problems(difficulties=[0], seeds=CLEAN_SEEDS):
             counts["clean"] += 1
-            counts["false_alarms"] += bool(examine(problem.model).fragile)
+            counts["alarms"] += bool(examine(problem.model).fragile)
         found[family.name] = counts
     return found
 
@@ -109,8 +113,15 @@ def main() -> int:
     print(table(("examined", *columns), rows))
     content = {
         "clean_seeds": [CLEAN_SEEDS.start, CLEAN_SEEDS.stop],
-        "cards": {
-            name: {k: v for k, v in card.to_dict().items() if k != "results"}
+        "right_by_difficulty": {
+            name: {
+                family: [card.count("right", family, d) for d in card.difficulties]
+                for family in card.families
+            }
+            for name, card in cards.items()
+        },
+        "counts": {
+            name: {"right": card.right, "wrong": card.wrong, "crashed": card.crashed}
             for name, card in cards.items()
         },
         "examined": counts,

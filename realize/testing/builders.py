@@ -57,17 +57,16 @@ class _Block:
 
 
 def hidden_modes(difficulty: int, rng: np.random.Generator) -> Plan:
-    """Modes of all four parts, in coordinates of condition 10**(difficulty / 2).
+    """Modes of all four parts, in coordinates of condition 10**difficulty.
 
-    A and the inverse of the coordinates both grow by that, so that the relative distance to a model
-    of lower order shrinks by 10**difficulty.
+    A change of B or C by about 10**-difficulty of its size hides one mode more.
     """
     draft, period = _with_hidden_modes(rng)
     _turn(draft, rng)
     # Powers of two, between two turns: no choice of units undoes them.
     last = max(draft.order - 1, 1)
     for i in range(draft.order):
-        draft.scale(i, Fraction(1, 2 ** round(difficulty / 2 * i / last * np.log2(10.0))))
+        draft.scale(i, Fraction(1, 2 ** round(difficulty * i / last * np.log2(10.0))))
     _turn(draft, rng)
     return Plan(draft=draft, sampling_period=period)
 
@@ -109,8 +108,8 @@ def wilkinson_chain(difficulty: int, rng: np.random.Generator) -> Plan:
 def common_factor(difficulty: int, rng: np.random.Generator) -> Plan:
     """The companion form of n consecutive integer poles, n = 2 + difficulty, some cancelled.
 
-    Zeros lie half way between poles. A change of the coefficients by 1e-8 of their size is enough
-    to make such a pair meet when there are eleven.
+    Zeros lie half way between poles. A change of the coefficients by 1e-9 of their size is enough
+    to make such a pair meet when there are eleven; with twenty it would be within rounding.
     """
     order = 2 + difficulty
     hidden = 1 + difficulty // 3
