@@ -82,9 +82,7 @@ def wilkinson_chain(difficulty: int, rng: np.random.Generator) -> Plan:
             A[i, i - 1] = Fraction(length)
     B[0, 0] = C[0, length - 1] = ONE
     # Between two poles of the chain, so that no two modes are equal.
-    unreached, unseen = (
-        Fraction(2 * int(k) + 1, 2) for k in rng.choice(length, 2, replace=length < 2)
-    )
+    unreached, unseen = (Fraction(2 * int(k) + 1, 2) for k in rng.choice(length, 2, replace=False))
     A[length, length] = -unreached
     A[0, length] = _digit(rng)
     A[length + 1, length + 1] = -unseen
@@ -136,8 +134,8 @@ def near_cancellation(difficulty: int, rng: np.random.Generator) -> Plan:
     poles = [Fraction(2 * int(k)) for k in rng.choice(np.arange(1, 8), 4, replace=False)]
     order = 4
     A, B, C = zeros(order, order), zeros(order, 1), zeros(1, order)
-    # (s + a + gap) / (s + a): a state that is reached fully, and passed on by the gap only. With
-    # the other side first it is driven by the gap only.
+    # (s + a + gap) / (s + a): a state that is driven fully, and passed on by the gap only; in the
+    # dual it is driven by the gap only.
     A[0, 0] = -poles[0]
     for i in range(1, order):
         A[i, i] = -poles[i]
@@ -164,7 +162,7 @@ def near_cancellation(difficulty: int, rng: np.random.Generator) -> Plan:
 
 
 def weak_cascade(difficulty: int, rng: np.random.Generator) -> Plan:
-    """Four subsystems in series, each link 10**-difficulty; for odd draws the last link is cut."""
+    """Four subsystems in series, each link 10**-difficulty; by chance the last is cut."""
     link = Fraction(1, 10**difficulty)
     cut = bool(rng.integers(2))
     blocks = _distinct(rng, 4)

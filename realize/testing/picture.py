@@ -12,7 +12,7 @@ if TYPE_CHECKING:
 __all__ = ["draw"]
 
 _INK: Final = "#1b1b1b"
-_ROW: Final = 0.34  # inches
+_ROW: Final = 0.4  # inches
 _MAP: Final = "cividis"  # tells light from dark also without colour vision
 
 
@@ -37,16 +37,19 @@ def draw(card: Scorecard) -> Any:
     image = axes.imshow(shares or [[0.0]], vmin=0.0, vmax=1.0, cmap=_MAP, aspect="auto")
     for i, name in enumerate(names):
         for j, d in enumerate(columns):
+            ink = _INK if shares[i][j] > 0.5 else "white"
             right, crashed = card.count("right", name, d), card.count("crashed", name, d)
-            axes.text(
-                j,
-                i,
-                f"{right}" + (f" (-{crashed})" if crashed else ""),
-                ha="center",
-                va="center",
-                fontsize=8,
-                color=_INK if shares[i][j] > 0.5 else "white",
-            )
+            axes.text(j, i, str(right), ha="center", va="center", fontsize=8, color=ink)
+            if crashed:
+                axes.text(
+                    j,
+                    i + 0.34,
+                    f"{crashed} crashed",
+                    ha="center",
+                    va="center",
+                    fontsize=5,
+                    color=ink,
+                )
     axes.set_xticks(range(len(columns)), [str(d) for d in columns])
     axes.set_yticks(range(len(names)), [name.replace("_", " ") for name in names])
     axes.tick_params(length=0)
@@ -58,5 +61,5 @@ def draw(card: Scorecard) -> Any:
         loc="left",
     )
     bar = figure.colorbar(image, ax=axes, pad=0.02)
-    bar.set_label("share of right answers" + (", (-crashed)" if card.crashed else ""))
+    bar.set_label("share of right answers")
     return figure

@@ -2,10 +2,11 @@
 
 What is the right order of a table of doubles? A problem asks for the order of the exact model that
 was planted, whose entries, correctly rounded, the doubles are. That is a question with one answer:
-the exact model is the same or within half a unit in the last place of every entry, and whatever
-else is planted, a near cancellation or a weak link, is larger than that by a factor of a million
-at the least. How far the doubles alone *show* the answer is another matter; it is what makes a
-problem hard, and at high difficulty a routine that is backward stable may fail on all of a family.
+the doubles lie within half a unit in the last place of the exact model, entry by entry, and
+whatever else is planted, a near cancellation or a weak link, is larger than that by a factor of a
+thousand at the least. How far the doubles alone *show* the answer is another matter; it is what
+makes a problem hard, and at high difficulty a routine that is backward stable may fail on all of a
+family.
 """
 
 from __future__ import annotations

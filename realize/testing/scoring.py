@@ -487,7 +487,9 @@ def _text(card: Scorecard) -> str:
 
 def _off_text(results: Sequence[Result]) -> str:
     found = [result.off_by for result in results if result.off_by is not None]
-    low, high = min(found, default=0), max(found, default=0)
+    if not found:
+        return "-"
+    low, high = min(found), max(found)
     if low == high == 0:
         return "0"
     return f"{low:+d}" if low == high else f"{low:+d}..{high:+d}".replace("+0", "0")

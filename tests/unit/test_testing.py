@@ -352,6 +352,7 @@ def test_a_routine_that_raises_has_crashed() -> None:
     assert (card.right, card.wrong, card.crashed) == (0, 0, 6)
     assert {r.reason for r in card.results} == {"ValueError: no luck"}
     assert "crash: ValueError: no luck" in str(card)
+    assert str(card).split("\n")[5].split()[-2:] == ["-", "-"]
 
 
 def test_what_stops_a_program_stops_the_score() -> None:
@@ -461,7 +462,7 @@ def test_the_picture_shows_the_counts(tmp_path: Path) -> None:
     card = score(raises, ["hidden_modes", "buried_mode"], **EASY)
     figure = card.picture()
     axes = figure.axes[0]
-    assert [text.get_text() for text in axes.texts] == ["0 (-3)"] * 4
+    assert [text.get_text() for text in axes.texts] == ["0", "3 crashed"] * 4
     assert [label.get_text() for label in axes.get_yticklabels()] == ["hidden modes", "buried mode"]
     for ending in (".png", ".svg", ".pdf"):
         target = tmp_path / f"card{ending}"
