@@ -1,4 +1,4 @@
-"""The command line: `realize examine`, `realize minimal`, `realize demo`.
+"""The command line: `realize examine`, `realize minimal`, `realize score`, `realize demo`.
 
 Data go to stdout, messages to stderr. Exit statuses: 0 clean; 1 findings; 2 usage or input error;
 3 undecided; 4 something hidden is not known to be stable.
@@ -10,6 +10,7 @@ import json
 import os
 import sys
 import traceback
+from contextlib import ExitStack
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any, NoReturn
@@ -34,6 +35,8 @@ from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Mode, Reduction, spelled
 from realize.stability import Stability, hidden_cautions
+from realize.testing.problems import DIFFICULTIES, families
+from realize.testing.scoring import check_picture_name, load_routine, score
 
 __all__ = ["main"]
 
@@ -230,6 +233,66 @@ def _report(reduction: Reduction, modes: tuple[Mode, ...]) -> dict[str, Any]:
         "decisions": [decision.to_dict() for decision in reduction.decisions],
         "model": to_document(reduction.model),
     }
+
+
+@main.command("score")
+@click.argument("routine", metavar="MODULE:FUNCTION")
+@click.option(
+    "--family",
+    "names",
+    multiple=True,
+    type=click.Choice([family.name for family in families()]),
+    help="Which families of problems; may be repeated. Default: all.",
+)
+@click.option(
+    "--hardest",
+    type=click.IntRange(DIFFICULTIES[0], DIFFICULTIES[-1]),
+    default=DIFFICULTIES[-1],
+    show_default=True,
+    help="Difficulties go from 0 to this one.",
+)
+@click.option(
+    "--seeds",
+    type=click.IntRange(min=1),
+    default=10,
+    show_default=True,
+    help="Problems of each family and difficulty.",
+)
+@click.option("--picture", metavar="FILE", help="Also draw it; needs the extra plot.")
+@click.option("--json", "as_json", is_flag=True, help="Print the stable form.")
+def score_command(
+    routine: str,
+    names: tuple[str, ...],
+    hardest: int,
+    seeds: int,
+    picture: str | None,
+    as_json: bool,
+) -> None:
+    """Score a routine of yours on families of problems with known answers.
+
+    It takes float arrays A, B, C, D and returns an order, or A, B, C, D of a reduced model. Exit
+    status: 0 all right; 1 some wrong or crashed; 2 usage or input error.
+    """
+    if picture is not None:
+        check_picture_name(picture)
+    called = load_routine(routine)
+    total = len(names or families()) * (hardest + 1) * seeds
+    with ExitStack() as stack:
+        bar: Any = None
+        if sys.stderr.isatty():
+            bar = stack.enter_context(click.progressbar(length=total, file=sys.stderr))
+        card = score(
+            called,
+            names or None,
+            difficulties=range(hardest + 1),
+            seeds=range(seeds),
+            name=routine,
+            progress=None if bar is None else lambda done, of: bar.update(1),
+        )
+    if picture is not None:
+        card.save_picture(picture)
+    click.echo(json.dumps(card.to_dict(), indent=2) if as_json else str(card))
+    sys.exit(0 if card.right == len(card.results) else FINDINGS)
 
 
 @main.command("demo")

@@ -23,6 +23,7 @@ from realize.errors import (
     UnsupportedEntryError,
 )
 from realize.examination.doubt import with_doubt
+from realize.examination.eigenvectors import nearly_hidden
 from realize.examination.lost import with_loss
 from realize.examination.nearest import Answered, Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, replayed, with_exact_ranks
@@ -205,6 +206,7 @@ def examine(
                 else None
             )
         ),
+        _nearly_hidden=Deferred(floating.nearly_hidden),
     )
 
 
@@ -247,6 +249,10 @@ class _Floating:
             return ()
         _, run = self._ran()
         return run[0].decisions() + run[1].decisions()
+
+    def nearly_hidden(self) -> int:
+        """Return how many modes eigenvectors show within the cutoff of being hidden."""
+        return 0 if self.failed is not None else nearly_hidden(self._ran()[0])
 
     def hidden_modes(
         self, stairs: tuple[tuple[int, ...], tuple[int, ...]] | None = None

@@ -124,6 +124,7 @@ class Examination:
     hidden_parts: dict[str, dict[str, Polynomial]]
     _unsimple: Deferred[int]
     _reduction: Deferred[Reduction | None]
+    _nearly_hidden: Deferred[int]
     _loops: Deferred[tuple[AlgebraicLoop, ...]]
 
     @property
@@ -204,8 +205,9 @@ class Examination:
         """What makes the answer fragile, in words; empty when nothing does.
 
         A floating order that is not the answer's, an answer that no cutoff gives, a cutoff within
-        three decades of one that gives another answer, steps of precision that are not settled, a
-        hidden mode of which it cannot be told whether it decays.
+        three decades of one that gives another answer, steps of precision that are not settled,
+        eigenvectors that show more modes within the cutoff of being hidden than the answer hides,
+        a hidden mode of which it cannot be told whether it decays.
         """
         found: list[str] = []
         if self.floating_order is None:
@@ -215,16 +217,22 @@ class Examination:
         basis = self.rests_on
         span = self.cutoff_ranges.get(basis)
         cutoff = next((decision.cutoff for decision in self.decisions), 0.0)
-        near_edge = basis == "nearest" and self._margin() < NEAR_EDGE
-        if span is not None:
+        conflict = basis in self.cutoff_ranges and span is None
+        if span is None:
+            near_edge = (basis == "nearest" or conflict) and self._margin() < NEAR_EDGE
+        else:
             near_edge = not span[0] * NEAR_EDGE <= cutoff <= span[1] / NEAR_EDGE
-        if basis in self.cutoff_ranges and span is None and self.decisions:
+        # Rounding makes the exact ranks of single stages the largest that there can be, which no
+        # cutoff gives; where the order is the answer's all the same, only its margin counts.
+        if conflict and self.floating_order != self.answer.order and self.decisions:
             found.append("no cutoff gives the answer")
         elif near_edge:
             found.append("a cutoff less than three decades away gives another order")
         steps = self.leading_steps
         if steps is not None and not steps.is_settled:
             found.append("the steps of precision are not settled")
+        if self._nearly_hidden.get() > self.order - self.answer.order:
+            found.append("eigenvectors show a nearly hidden mode that the staircase does not")
         if any(mode.stability is Stability.CANNOT_TELL for mode in self.hidden_modes):
             found.append("it cannot be told whether a hidden mode decays")
         return tuple(found)

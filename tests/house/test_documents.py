@@ -68,11 +68,13 @@ def test_every_command_of_the_readme_runs(
 ) -> None:
     """With a file of its own for each FILE: no usage error, nothing on the error stream."""
     monkeypatch.chdir(tmp_path)
+    monkeypatch.syspath_prepend(str(tmp_path))
     realize.save(hidden_in_every_part(), "model.json")
+    (tmp_path / "module.py").write_text("def function(A, B, C, D):\n    return len(A)\n", "utf-8")
     words = shlex.split(line)[1:]
-    targets = {"-o": "out.json"}
+    stands_for = {"FILE": "model.json", "MODULE:FUNCTION": "module:function"}
     arguments = [
-        targets.get(words[i - 1], "model.json") if word == "FILE" else word
+        "out.json" if words[i - 1] == "-o" else stands_for.get(word, word)
         for i, word in enumerate(words)
     ]
     done = click.testing.CliRunner().invoke(main, arguments)

@@ -24,6 +24,7 @@ ROOMS: tuple[tuple[str, ...], ...] = (
     ("convert",),
     ("examination",),
     ("",),
+    ("testing",),
     ("cli", "demo", "__main__"),
 )
 FLOOR = {name: floor for floor, names in enumerate(ROOMS) for name in names}

@@ -292,4 +292,5 @@ def test_a_proved_order_stands_without_the_polynomials(monkeypatch: pytest.Monke
     assert found.status == 4
     assert "not computed within the budget" in str(found)
     assert any("named by the floating path" in text for text in found.not_done)
-    assert set(found.to_dict()["parts"]["stored"].values()) >= {None}
+    told = list(found.to_dict()["parts"]["stored"].values())
+    assert told.count(None) == 3  # all but what shows
