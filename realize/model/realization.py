@@ -299,7 +299,7 @@ class Realization(SystemModel):
                 ),
                 self._given or self.matrices(),
             )
-        return self._like(matrices, Kind.RATIONAL, period, connection)
+        return self._like(matrices, Kind.RATIONAL, period, connection)._read_from(word, self)
 
     def to_float(self) -> Realization:
         """Return the model in doubles, each entry correctly rounded.
