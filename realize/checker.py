@@ -47,13 +47,13 @@ if TYPE_CHECKING:
 FORMAT, VERSION = "realize-certificate", 1
 MAX_BYTES, MAX_ITEMS, MAX_DEPTH = 64_000_000, 1_000_000, 8
 MAX_DIGITS, MAX_COUNT, MAX_MODULUS = 20_000, 10_000, 2**64
-MAX_WORK = 1_000_000_000  # products of short numbers: about two minutes
+MAX_WORK = 300_000_000  # products of short numbers: about a minute
 MAX_BITS = 2**32  # of all numbers made: half a gigabyte
 RATIONAL = re.compile(r"0|-?[1-9][0-9]*(?:/[1-9][0-9]*)?")
-TOKEN = re.compile(r'"(?:[^"\\]|\\.)*+"?|[\[\]{}]', re.DOTALL)
+STRING = re.compile(r'"(?:[^"\\]|\\.)*+"?', re.DOTALL)  # closed or not; never goes back
 TABLES = ("A", "B", "C", "D")
 PORTS = ("order", "input_count", "output_count", "sampling_period", "input_names", "output_names")
-ENDING = "This is about these exact numbers, not about a plant; named tables were not seen."
+ENDING = "This is a statement about these exact numbers, and not about a plant."
 
 Matrix = list[tuple[list[int], int]]  # rows: numerators, and their common denominator
 
@@ -86,9 +86,13 @@ def check(text: str) -> str:
 
 def sealed(claim: Any, evidence: Any) -> tuple[str, str]:
     """Return the canonical JSON of claim and evidence, and its digest."""
-    body = {"claim": claim, "evidence": evidence}
-    canonical = json.dumps(body, sort_keys=True, separators=(",", ":"), ensure_ascii=True)
-    return canonical, hashlib.sha256(canonical.encode("ascii")).hexdigest()
+    text = canonical({"claim": claim, "evidence": evidence})
+    return text, hashlib.sha256(text.encode("ascii")).hexdigest()
+
+
+def canonical(value: Any) -> str:
+    """Return JSON with sorted keys and no spaces, in ASCII."""
+    return json.dumps(value, sort_keys=True, separators=(",", ":"), ensure_ascii=True)
 
 
 def parse(text: str) -> Any:
@@ -99,9 +103,10 @@ def parse(text: str) -> Any:
     items = text.count(",") + text.count("[") + text.count("{")
     demand(items <= MAX_ITEMS, f"found {items} items, at most {MAX_ITEMS} are allowed")
     depth = 0
-    for match in TOKEN.finditer(text):
-        depth += (match[0] in "[{") - (match[0] in "]}")
-        demand(depth <= MAX_DEPTH, f"nested deeper than {MAX_DEPTH}")
+    for mark in re.findall(r"[\[\]{}]", STRING.sub("", text)):
+        depth += 1 if mark in "[{" else -1
+        if depth > MAX_DEPTH:
+            raise Refused(f"nested deeper than {MAX_DEPTH}")
 
     def integer(digits: str) -> int:
         demand(len(digits) <= 20 and digits != "-0", "found a number that is no short integer")
@@ -144,10 +149,11 @@ def number(digits: str) -> int:
 
 def rational(text: Any, where: str) -> tuple[int, int]:
     """Return (p, q) of a text "p" or "p/q"."""
-    demand(type(text) is str and RATIONAL.fullmatch(text), f"{where}: found no rational")
+    if type(text) is not str or not RATIONAL.fullmatch(text):
+        raise Refused(f"{where}: found no rational")
     above, _, below = text.partition("/")
-    longest = max(len(above), len(below))
-    demand(longest <= MAX_DIGITS, f"{where}: found {longest} digits, at most {MAX_DIGITS} allowed")
+    if max(len(above), len(below)) > MAX_DIGITS:
+        raise Refused(f"{where}: found a number of more than {MAX_DIGITS} digits")
     size = number(above.removeprefix("-"))
     return (-size if above[0] == "-" else size), number(below or "1")
 
@@ -201,7 +207,32 @@ class Model:
             demand(known, f"{where}.reading: not a reading")
             table = type(value["table"]) is str and re.fullmatch("[0-9a-f]{64}", value["table"])
             demand(table, f"{where}.table: wanted a digest")
-            self.words.append(f"    read as {value['reading']} from table {value['table']}.")
+            self.words.append(f"    read as {value['reading']} from table {value['table']}")
+            if value["reading"] == "given":
+                digest = hashlib.sha256(self.file(value).encode("ascii")).hexdigest()
+                demand(value["table"] == digest, f"{where}.table: as given it is {digest}")
+            else:
+                self.words.append("    (what was read is not in the certificate, its digest is).")
+
+    def file(self, value: Any) -> str:
+        """Return the canonical model file of a model that stands for itself."""
+        named = [("input_names", "u"), ("output_names", "y")]
+        sizes = {"inputs": self.m, "outputs": self.p}
+        if self.transfer is None:
+            named.append(("state_names", "x"))
+            sizes["states"] = self.n
+        file = {
+            "format": "realize-model",
+            "version": 1,
+            "sampling_period": value["sampling_period"],
+        }
+        file |= {} if all(sizes.values()) else sizes
+        for key, letter in named:
+            if value[key] != [f"{letter}{i + 1}" for i in range(len(value[key]))]:
+                file[key] = value[key]
+        body = {key: value[key] for key in TABLES} if self.transfer is None else self.transfer
+        file["realization" if self.transfer is None else "transfer"] = body
+        return canonical(file)
 
     def same_time(self, other: Model) -> bool:
         """Whether the sampling periods are equal as numbers."""
@@ -237,8 +268,8 @@ class Arithmetic:
 
     def row(self, pairs: list[tuple[int, int]]) -> tuple[list[int], int]:
         """Return pairs (p, q) over one denominator."""
-        below = self.common(q for _, q in pairs)
-        self.spend(2 * len(pairs), len(pairs), below.bit_length(), bits(p for p, _ in pairs))
+        below, longest = self.common(q for _, q in pairs), max(map(bits, pairs), default=0)
+        self.spend(6 * len(pairs), len(pairs), below.bit_length(), longest)
         return [p * (below // q) for p, q in pairs], below
 
     def matrix(self, rows: Any, height: int, width: int, where: str) -> Matrix:
@@ -254,11 +285,13 @@ class Arithmetic:
         for above, below in left:
             used = [j for j, x in enumerate(above) if x]
             common = self.common(right[j][1] for j in used)
-            self.spend(2 * len(used), len(used), bits(above), common.bit_length())
+            size = max(bits(above), bits(right[j][1] for j in used))
+            self.spend(4 * len(used), len(used), size, common.bit_length())
             weights = [above[j] * (common // right[j][1]) for j in used]
-            self.spend((len(used) + 1) * width + 4, width + 4, bits(weights), longest)
-            columns = zip(*(right[j][0] for j in used), strict=True) if used else [()] * width
-            result.append(([sum(map(mul, weights, column)) for column in columns], below * common))
+            self.spend((len(used) + 4) * width + 20, width + 4, bits(weights), longest)
+            rows = [right[j][0] for j in used]
+            sums = [sum(map(mul, weights, column)) for column in zip(*rows, strict=True)]
+            result.append((sums if used else [0] * width, below * common))
         return result
 
     def equal(self, left: Matrix, right: Matrix) -> bool:
@@ -352,8 +385,8 @@ class Arithmetic:
         for i, j in ((i, j) for i in range(model.p) for j in range(model.m)):
             n, a = self.row([rational(x, where) for x in above[i][j]])
             d, b = self.row([rational(x, where) for x in below[i][j]])
-            h, c = self.row([(step[i][0][j], step[i][1]) for step in markov])
             top = len(d) - 1
+            h, c = self.row([(step[i][0][j], step[i][1]) for step in markov[: top + other.n + 1]])
             demand(d[0] != 0 and len(n) <= len(d), f"{where}: not a proper fraction")
             n = [0] * (len(d) - len(n)) + n + [0] * other.n
             self.spend((top + 1) * (top + other.n + 2), 0, bits(h), max(bits(d), a.bit_length()))

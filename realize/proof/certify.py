@@ -101,6 +101,11 @@ def _of_reduction(result: Reduction, reading: Reading | None) -> Certificate:
         )
     if result.model.kind is Kind.FLOATING:
         return _of_floating(result, source, reading)
+    if isinstance(source.sampling_period, float):
+        raise CertificateError(
+            f"the sampling period is the float {source.sampling_period!r}, and a certificate is "
+            "about exact numbers; reduce source.read(reading), which reads it too"
+        )
     evidence = result._evidence.get()
     if evidence is None or evidence.reached is None:
         raise CertificateError(
