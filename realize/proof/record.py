@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from enum import StrEnum
 from fractions import Fraction
 from typing import Any
@@ -15,7 +15,7 @@ from realize.entries import spell_fraction
 from realize.errors import CertificateError
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
-from realize.results import Deferred, Reduction, RemovedModes
+from realize.results import Reduction, RemovedModes
 
 __all__ = ["Certificate", "Comparison", "Counterexample", "Difference", "Side", "check"]
 
@@ -37,7 +37,6 @@ class Certificate:
     kind: str
     digest: str
     _text: str
-    _claim: Deferred[str] = field(repr=False)
 
     def to_json(self) -> str:
         """Return the certificate as one line of JSON, for a file, for `check` or the checker."""
@@ -45,11 +44,8 @@ class Certificate:
 
     @property
     def claim(self) -> str:
-        """The claim in words, as the checker tells it once it has found it proved.
-
-        The checker runs at first access.
-        """
-        return self._claim.get()
+        """The claim in words, as the checker tells it: each access runs the checker."""
+        return check(self)
 
     def __eq__(self, other: object) -> bool:
         if not isinstance(other, Certificate):
@@ -72,9 +68,7 @@ class Certificate:
             f'{{"format":"{checker.FORMAT}","version":{checker.VERSION},{body[1:-1]},'
             f'"digest":"{digest}","about":{json.dumps(about, separators=(",", ":"))}}}\n'
         )
-        return cls(
-            kind=claim["kind"], digest=digest, _text=text, _claim=Deferred(lambda: check(text))
-        )
+        return cls(kind=claim["kind"], digest=digest, _text=text)
 
 
 def check(certificate: Certificate | str) -> str:
@@ -112,8 +106,8 @@ def check(certificate: Certificate | str) -> str:
     >>> model = realize.Realization([[-1, 0], [0, -2]], [1, 0], [1, 1])
     >>> certificate = realize.certify(realize.minimal(model))
     >>> print(realize.check(certificate).splitlines()[0])
-    Proved: these two exact models have the same transfer matrix, and no realization of order
-    below 1 has it.
+    Proved: these two exact models have the same transfer matrix, and no realization of
+    smaller order has it.
     """
     text = certificate.to_json() if isinstance(certificate, Certificate) else certificate
     if not isinstance(text, str):
