@@ -365,8 +365,8 @@ class Arithmetic:
         self.rank(inputs, A, model.n, N, f"{model.where}: [B, A B, ...]")
         self.rank(C, list(map(list, turned)), model.n, N, f"{model.where}: [C; C A; ...]")
 
-    def realizes(self, model: Model, other: Model) -> list[str]:
-        """Test paragraph 3 on another model, which has the same transfer matrix."""
+    def realizes(self, model: Model) -> list[str]:
+        """Test paragraph 3, where there are fractions beside the model."""
         if model.transfer is None:
             return []
         where = f"{model.where}.transfer"
@@ -378,19 +378,19 @@ class Arithmetic:
             fits = fits and all(type(each) is list and each for line in table for each in line)
             demand(fits, f"{where}: wanted {model.p} rows of {model.m} lists of coefficients")
         degree = max((len(each) - 1 for line in below for each in line), default=0)
-        markov, power = [other.D], other.B
-        for _ in range(degree + other.n):
-            markov.append(self.product(other.C, power, other.m))
-            power = self.product(other.A, power, other.m)
+        markov, power = [model.D], model.B
+        for _ in range(degree + model.n):
+            markov.append(self.product(model.C, power, model.m))
+            power = self.product(model.A, power, model.m)
         for i, j in ((i, j) for i in range(model.p) for j in range(model.m)):
             n, a = self.row([rational(x, where) for x in above[i][j]])
             d, b = self.row([rational(x, where) for x in below[i][j]])
             top = len(d) - 1
-            h, c = self.row([(step[i][0][j], step[i][1]) for step in markov[: top + other.n + 1]])
+            h, c = self.row([(step[i][0][j], step[i][1]) for step in markov[: top + model.n + 1]])
             demand(d[0] != 0 and len(n) <= len(d), f"{where}: not a proper fraction")
-            n = [0] * (len(d) - len(n)) + n + [0] * other.n
-            self.spend((top + 1) * (top + other.n + 2), 0, bits(h), max(bits(d), a.bit_length()))
-            for e in range(top, -other.n - 1, -1):
+            n = [0] * (len(d) - len(n)) + n + [0] * model.n
+            self.spend((top + 1) * (top + model.n + 2), 0, bits(h), max(bits(d), a.bit_length()))
+            for e in range(top, -model.n - 1, -1):
                 total = sum(d[top - k] * h[k - e] for k in range(max(e, 0), top + 1))
                 holds = total * a == n[top - e] * b * c
                 demand(holds, f"{where}: entry {i + 1}, {j + 1} is not realized")
@@ -436,7 +436,7 @@ def minimal_realization(arithmetic: Arithmetic, claim: Any, evidence: Any) -> li
     demand(ports == (reduced.inputs, reduced.outputs), "claim: the names of the ports differ")
     arithmetic.one_transfer_matrix(model, evidence["reduction"], reduced, "evidence.reduction")
     arithmetic.minimal(reduced, modulus(evidence))
-    words = arithmetic.realizes(model, reduced)
+    words = arithmetic.realizes(model)
     if near:
         words += arithmetic.near(claim["delivered"], reduced, claim["distance"])
     return [
@@ -461,13 +461,12 @@ def same_transfer_matrix(arithmetic: Arithmetic, claim: Any, evidence: Any) -> l
     """Two models have one transfer matrix; with a change of coordinates where there is one."""
     first, second = two(arithmetic, claim, "transformation")
     demand(first.matches(second), "claim: sizes or sampling periods differ")
-    words, through = first.words + second.words, [first, second]
+    words = first.words + second.words
     if claim["transformation"] is None:
         keys(evidence, ("first", "second", "common"), (), "evidence")
         common = Model(arithmetic, evidence["common"], "evidence.common", source=False)
         arithmetic.one_transfer_matrix(first, evidence["first"], common, "evidence.first")
         arithmetic.one_transfer_matrix(second, evidence["second"], common, "evidence.second")
-        through = [common, common]
     else:
         keys(evidence, ("modulus",), (), "evidence")
         n, N, where = first.n, modulus(evidence), "claim.transformation"
@@ -479,8 +478,7 @@ def same_transfer_matrix(arithmetic: Arithmetic, claim: Any, evidence: Any) -> l
             demand(arithmetic.equal(left, right), f"{where}: an identity of 5 does not hold")
         arithmetic.rank(arithmetic.modulo(T, N, where), [], n, N, where)
         words.append(f"  State of the first = {where} @ state of the second; it is invertible.")
-    for model, other in zip((first, second), through, strict=True):
-        words += arithmetic.realizes(model, other)
+    words += arithmetic.realizes(first) + arithmetic.realizes(second)
     return ["Proved: these two exact models have the same transfer matrix.", *words]
 
 
@@ -506,7 +504,7 @@ def different_transfer_matrices(arithmetic: Arithmetic, claim: Any, evidence: An
         A = arithmetic.modulo(model.A, N, model.where)
         rows = [[(at * (i == j) - x) % N for j, x in enumerate(row)] for i, row in enumerate(A)]
         arithmetic.rank(rows, [], n, N, f"{model.where}: z - A")
-        words += model.words + arithmetic.realizes(model, model)
+        words += model.words + arithmetic.realizes(model)
         values.append(value)
     demand(not arithmetic.equal(*values), "claim.values: the two values are equal")
     differ = f"differ at {short(*z)}, where neither has a pole"
@@ -521,7 +519,7 @@ def different_ports(arithmetic: Arithmetic, claim: Any, evidence: Any) -> list[s
     if claim["kind"] == "different sampling periods":
         equal = first.same_time(second)
     demand(not equal, f"claim: it does not have {claim['kind']}")
-    words = [line for x in (first, second) for line in x.words + arithmetic.realizes(x, x)]
+    words = [line for x in (first, second) for line in x.words + arithmetic.realizes(x)]
     return [f"Proved: these two exact models have {claim['kind']}.", *words]
 
 

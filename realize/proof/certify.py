@@ -53,6 +53,8 @@ def certify(result: Reduction | Comparison, *, reading: str | None = None) -> Ce
     CertificateError
         When the exact minimal order under the reading is not the order delivered, or when a
         result does not know what it was made of.
+    LimitError
+        When the certificate would be longer than the checker reads.
     UnsupportedEntryError
         When the result is of another kind.
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from dataclasses import dataclass
 from enum import StrEnum
 from fractions import Fraction
@@ -12,7 +13,7 @@ import numpy as np
 
 from realize import checker
 from realize.entries import spell_fraction
-from realize.errors import CertificateError
+from realize.errors import CertificateError, LimitError
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
 from realize.results import Reduction, RemovedModes
@@ -68,7 +69,30 @@ class Certificate:
             f'{{"format":"{checker.FORMAT}","version":{checker.VERSION},{body[1:-1]},'
             f'"digest":"{digest}","about":{json.dumps(about, separators=(",", ":"))}}}\n'
         )
+        _check_limits(text)
         return cls(kind=claim["kind"], digest=digest, _text=text)
+
+
+def _check_limits(text: str) -> None:
+    """Refuse to hand out what the checker would refuse to read."""
+    parts = text.split(",")
+    longest = max(map(len, parts))
+    if longest > checker.MAX_DIGITS:
+        longest = max(map(len, re.findall("[0-9]+", text)))
+    for what, found, limit in (
+        ("characters", len(text), checker.MAX_BYTES),
+        ("items", len(parts) + text.count("[") + text.count("{"), checker.MAX_ITEMS),
+        ("digits in a number", longest, checker.MAX_DIGITS),
+    ):
+        if found > limit:
+            raise LimitError(
+                f"the certificate would hold {found} {what}, and the checker reads at most {limit};"
+                " certify a smaller model, or one with shorter numbers",
+                what=what,
+                where="certificate",
+                found=found,
+                limit=limit,
+            )
 
 
 def check(certificate: Certificate | str) -> str:

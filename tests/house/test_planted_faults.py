@@ -212,3 +212,27 @@ def test_a_hidden_polynomial_that_does_not_divide_is_caught(
     monkeypatch.setattr(RationalMatrix, "characteristic_polynomial", wrong)
     with pytest.raises(errors.VerificationError):
         realize.examine(subject)
+
+
+@pytest.mark.parametrize("first", [2, 3, 5, 7, 11])
+def test_small_primes_do_not_decide_wrongly(first: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Equal and different models, with primes that lose ranks and divide denominators first."""
+    genuine = modular.primes
+    small = [prime for prime in (2, 3, 5, 7, 11, 13) if prime >= first]
+    monkeypatch.setattr(modular, "primes", lambda: itertools.chain(small, genuine()))
+    rng = np.random.default_rng(first)
+    for _ in range(15):
+        order = int(rng.integers(1, 4))
+        A, B = rng.integers(-3, 4, (order, order)), rng.integers(-3, 4, (order, 1))
+        C, T = rng.integers(-3, 4, (1, order)), np.eye(order, dtype=int)
+        T[0, -1] += order > 1
+        back = np.eye(order, dtype=int)
+        back[0, -1] -= order > 1
+        model = Realization(A, B, C)
+        other = back @ A @ T, back @ B, C @ T
+        found = realize.same_transfer(model, Realization(*other))
+        assert found
+        realize.check(realize.certify(found))
+        changed = realize.same_transfer(model, Realization(*other, [[30030]]))
+        assert not changed
+        realize.check(realize.certify(changed))

@@ -226,7 +226,7 @@ WEAKNESSES: list[tuple[str, tuple[str, str], Callable[[], Document]]] = [
     ),
     (
         "fractions, what vanishes",
-        ("for e in range(top, -other.n - 1, -1)", "for e in range(top, -1, -1)"),
+        ("for e in range(top, -model.n - 1, -1)", "for e in range(top, -1, -1)"),
         fractions(["1"], ["1", "5"]),
     ),
     (

@@ -33,8 +33,8 @@ from realize import (
 )
 from realize.arithmetic import modular
 from realize.arithmetic.exact import OpenedExact
-from realize.errors import UnknownWordError, UnsupportedEntryError
-from tests.helpers import assert_same_response
+from realize.errors import LimitError, UnknownWordError, UnsupportedEntryError
+from tests.helpers import assert_same_response, walk
 from tests.house.oracle import truth
 
 CHECKER = Path(checker.__file__)
@@ -339,6 +339,30 @@ def test_long_numbers_are_read_whatever_python_allows() -> None:
         assert checker.number("9" * 20_000) == 10**20_000 - 1
     finally:
         sys.set_int_max_str_digits(kept)
+
+
+@pytest.mark.parametrize(
+    ("limit", "value", "what"),
+    [("MAX_DIGITS", 20_000, "digits in a number"), ("MAX_ITEMS", 50, "items")],
+)
+def test_what_the_checker_would_not_read(
+    limit: str, value: int, what: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """No certificate is handed out that exceeds a limit of the checker."""
+    model = Realization([[Fraction(1, 10**20_000 + 7)]], [1], [1])
+    monkeypatch.setattr(checker, limit, value)
+    with pytest.raises(LimitError, match=what) as caught:
+        certify(exact.minimal(model))
+    assert caught.value.limit == value
+
+
+def test_results_are_plain_values() -> None:
+    """No object of another library is reachable from a certificate or a comparison."""
+    comparison = same_transfer(hidden(), TransferMatrix(["1"], ["1", "2"], sampling_period="1/10"))
+    for thing in (comparison, certify(comparison), pickle.loads(pickle.dumps(comparison))):
+        for where, value in walk(thing):
+            library = type(value).__module__.split(".")[0]
+            assert library not in ("flint", "sympy", "mpmath"), where
 
 
 def test_a_comparison_can_be_certified() -> None:
