@@ -16,7 +16,8 @@ at. Models are (A, B, C, D), of order n; H = D + C (z - A)^-1 B is the transfer 
    image. Elimination picks r vectors of the span modulo N, triangular with units for pivots; some
    determinant is then a unit modulo N, hence not zero modulo N, for N >= 2 (modulo 1 zero is a
    unit, and everything has every rank), hence not zero. N need not be prime: an element that is
-   no unit is never used as a pivot, so a composite N can only make the test fail.
+   no unit is never used as a pivot, so a composite N can only make the test fail. Order 0 needs
+   no ranks; where k = 0, B = V B1 says that B vanishes.
 3. *A realization has the transfer matrix written beside it.* With h_0 = D, h_j = C A^(j-1) B and
    d h = sum of d_l h_j z^(l-j), n/d = h when the coefficients of z^e in d h are those of n for
    e >= 0 and vanish for e < 0. The latter are c A^(-e-1) x for some vectors c and x, so if the
@@ -493,6 +494,7 @@ def different_transfer_matrices(arithmetic: Arithmetic, claim: Any, evidence: An
     for model, key in ((first, "first"), (second, "second")):
         n, m, at = model.n, model.m, z[0] * pow(z[1], -1, N)
         X = arithmetic.matrix(evidence[key], n, m, f"evidence.{key}")
+        arithmetic.spend(m * m, m * m, 1, 1)
         below = X + [([int(i == j) for j in range(m)], 1) for i in range(m)]
         left = arithmetic.product(arithmetic.beside(model.A, model.B), below, m)
         diagonal = [([z[0] * (i == j) for j in range(n)], z[1]) for i in range(n)]

@@ -227,3 +227,18 @@ def test_degrees_without_states() -> None:
         "evidence": {},
     }
     refused(seal(document), "too much")
+
+
+@pytest.mark.usefixtures("small_allowance")
+def test_ports_without_states() -> None:
+    """Ten thousand inputs cost nothing in the file when there is neither state nor output."""
+    document = original("different")
+    for key in ("first", "second"):
+        document["claim"][key] |= {
+            "A": [], "B": [], "C": [], "D": [], "order": 0, "input_count": 10_000,
+            "output_count": 0, "state_names": [], "output_names": [],
+            "input_names": [f"u{i}" for i in range(10_000)],
+        }  # fmt: skip
+        document["claim"]["values"][key] = []
+        document["evidence"][key] = []
+    refused(seal(document), "too much")
