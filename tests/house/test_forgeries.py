@@ -70,10 +70,10 @@ FORGERIES = {
     "word, different": 950,
     "parts": 600,
     "sizes": 1800,
-    "moduli": 1000,
+    "moduli": 530,
     "coordinates": 186,
     "poles": 372,
-    "many": 2000,
+    "many": 1250,
 }
 
 
@@ -320,7 +320,7 @@ def inner(value: Any, path: tuple[Any, ...] = ()) -> Iterator[tuple[tuple[Any, .
 def test_not_minimal_under_any_modulus() -> None:
     """True identities, a reduced model that is not minimal, and every modulus that may help."""
     found = 0
-    moduli = [*range(200), 2**31 - 1, 2**61 - 1, 2**64 - 1, 2**64, 561, 6 * 35, 10**6]
+    moduli = [*range(100), 2**31 - 1, 2**61 - 1, 2**64 - 1, 2**64, 561, 6 * 35, 10**6]
     for A, B, C in (
         ([["-1", "0"], ["0", "-2"]], [["1"], ["0"]], [["1", "1"]]),
         ([["-1", "0"], ["0", "-2"]], [["1"], ["1"]], [["1", "0"]]),
@@ -386,7 +386,7 @@ def test_many_changes_at_once() -> None:
     found = 0
     documents = [original(name) for name in NAMES]
     places = [list(leaves({k: d[k] for k in ("claim", "evidence")})) for d in documents]
-    for _ in range(2500):
+    for _ in range(1500):
         which = draw.randrange(len(documents))
         forged = documents[which]
         for path, leaf in draw.sample(places[which], draw.randint(2, 4)):
