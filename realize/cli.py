@@ -1,7 +1,7 @@
-"""The command line: `realize examine`, `realize minimal`, `realize score`, `realize demo`.
+"""The command line: `examine`, `minimal`, `certify`, `check`, `score`, `demo`.
 
-Data go to stdout, messages to stderr. Exit statuses: 0 clean; 1 findings; 2 usage or input error;
-3 undecided; 4 something hidden is not known to be stable.
+Data go to stdout, messages to stderr. Exit statuses: 0 clean or proved; 1 findings or not proved;
+2 usage or input error; 3 undecided; 4 something hidden is not known to be stable.
 """
 
 from __future__ import annotations
@@ -19,12 +19,12 @@ import click
 from rich.console import Console
 from rich.text import Text
 
-from realize import __version__
+from realize import __version__, checker
 from realize.convert import as_realization
 from realize.demo import stories
 from realize.dispatch import path_for
 from realize.entries import Reading
-from realize.errors import RealizeError
+from realize.errors import CertificateError, RealizeError
 from realize.examination import Examination
 from realize.examination.against import differences, read_record
 from realize.examination.examine import DEFAULT_BUDGET, examine
@@ -33,6 +33,8 @@ from realize.forms import reduce
 from realize.model.files import load, save, to_document
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
+from realize.proof.certify import certify
+from realize.proof.record import check
 from realize.results import Mode, Reduction, spelled
 from realize.stability import Stability, hidden_cautions
 from realize.testing.problems import DIFFICULTIES, families
@@ -46,6 +48,12 @@ _EXIT_TEXT = (
     "Exit status: 0 nothing hidden and nothing in doubt; 1 hidden modes, or paths or readings "
     "that disagree; 2 usage or input error; 3 undecided; 4 something hidden is not known to be "
     "stable (4 outranks the others)."
+)
+
+
+_CERTIFICATE_TEXT = (
+    "Exit status: 0 proved; 1 not proved; 2 usage or input error; 4 proved, and something hidden "
+    "is not known to be stable (certify)."
 )
 
 
@@ -293,6 +301,66 @@ def score_command(
         card.save_picture(picture)
     click.echo(json.dumps(card.to_dict(), indent=2) if as_json else str(card))
     sys.exit(0 if card.right == len(card.results) else FINDINGS)
+
+
+@main.command("certify", epilog=_CERTIFICATE_TEXT)
+@click.argument("file", metavar="FILE")
+@click.option(
+    "-o",
+    "--output",
+    metavar="FILE",
+    default="-",
+    help='Where to write the certificate; "-", the default, is standard output.',
+)
+@click.option(
+    "--reading",
+    type=click.Choice([str(word) for word in Reading]),
+    help="Reduce exactly, with floats read so. Default: the arithmetic follows the data.",
+)
+def certify_command(file: str, output: str, reading: str | None) -> None:
+    """Write a certificate of the minimal realization of the model in FILE."""
+    source = _read(file)
+    if reading is not None:
+        source = source.read(reading)
+    reduction = reduce(path_for(source), source)
+    try:
+        certificate = certify(reduction)
+    except CertificateError as error:
+        _not_proved(error)
+    if output == "-":
+        click.echo(certificate.to_json(), nl=False)
+    else:
+        with open(output, "w", encoding="ascii", newline="\n") as stream:
+            stream.write(certificate.to_json())
+    modes = reduction.removed.modes
+    click.echo(
+        f"order {reduction.source_order} to {reduction.order}, certificate {certificate.digest}",
+        err=True,
+    )
+    for caution in hidden_cautions(modes):
+        click.echo(f"caution: {caution}", err=True)
+    sys.exit(NOT_STABLE if _status_of(reduction, modes) == NOT_STABLE else 0)
+
+
+@main.command("check", epilog=_CERTIFICATE_TEXT)
+@click.argument("file", metavar="FILE")
+def check_command(file: str) -> None:
+    """Check the certificate in FILE and print its claim in words."""
+    if file == "-":
+        content = sys.stdin.buffer.read(checker.MAX_BYTES + 1)
+    else:
+        with open(file, "rb") as stream:
+            content = stream.read(checker.MAX_BYTES + 1)
+    try:
+        # A certificate is ASCII; whatever is not stays visible, and is refused.
+        click.echo(check(content.decode("latin-1")))
+    except CertificateError as error:
+        _not_proved(error)
+
+
+def _not_proved(error: CertificateError) -> NoReturn:
+    click.echo(f"realize: not proved: {error}", err=True)
+    sys.exit(FINDINGS)
 
 
 @main.command("demo")

@@ -182,7 +182,14 @@ class SystemModel:
     object), `_key` (its numbers as something hashable) and the pair `_state` and `_restore`.
     """
 
-    __slots__ = ("_digest", "_input_names", "_kind", "_output_names", "_sampling_period")
+    __slots__ = (
+        "_digest",
+        "_input_names",
+        "_kind",
+        "_origin",
+        "_output_names",
+        "_sampling_period",
+    )
 
     _KEY: ClassVar[str]
     """The name of the numbers in a document: "realization" or "transfer"."""
@@ -190,6 +197,9 @@ class SystemModel:
     _digest: str | None
     _input_names: Names | None
     _kind: Kind
+    # The reading that made this model, and the model that was read; filled by `read` alone. No
+    # part of the model's identity.
+    _origin: tuple[Reading, SystemModel]
     _output_names: Names | None
     _sampling_period: Period
 
@@ -244,6 +254,22 @@ class SystemModel:
             )
             self._digest = hashlib.sha256(text.encode("ascii")).hexdigest()
         return self._digest
+
+    @property
+    def provenance(self) -> tuple[str, str]:
+        """The reading that made this model, and the digest of the table that was read.
+
+        "given" and its own digest for a model that is no reading of another.
+        """
+        if hasattr(self, "_origin"):
+            reading, table = self._origin
+            return str(reading), table.digest
+        return str(Reading.GIVEN), self.digest
+
+    def _read_from(self, reading: Reading, table: SystemModel) -> Self:
+        """Remember where this model comes from, and return it."""
+        self._origin = reading, table
+        return self
 
     def _body(self) -> dict[str, Any]:
         """Return the numbers of the model as a JSON object, entries by `encode_entry`."""
@@ -369,7 +395,12 @@ class SystemModel:
         return hash((self._kind, self._period_key(), self._key()))
 
     def __reduce__(self) -> tuple[Any, ...]:
+        if hasattr(self, "_origin"):
+            return type(self)._restore, self._state(), self._origin
         return type(self)._restore, self._state()
+
+    def __setstate__(self, origin: tuple[Reading, SystemModel]) -> None:
+        self._origin = origin
 
     # A model cannot change, so it is its own copy.
     def __copy__(self) -> Self:

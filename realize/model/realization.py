@@ -290,7 +290,7 @@ class Realization(SystemModel):
             if period is self._sampling_period:
                 return self
             return self._like(self.matrices(), Kind.RATIONAL, period, connection)
-        return self._joined_or_read(word, Kind.RATIONAL, period, connection)
+        return self._joined_or_read(word, Kind.RATIONAL, period, connection)._read_from(word, self)
 
     def _joined_or_read(
         self, word: Reading, kind: Kind, period: Period, connection: Connection | None

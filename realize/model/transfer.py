@@ -328,7 +328,7 @@ class TransferMatrix(SystemModel):
                 return tuple(map(reader, polynomial))
 
             tables = _map(change, numerators), _map(change, denominators)
-        return self._like(*tables, Kind.RATIONAL, period)
+        return self._like(*tables, Kind.RATIONAL, period)._read_from(word, self)
 
     def to_float(self) -> TransferMatrix:
         """Return the transfer matrix in doubles, each coefficient correctly rounded.

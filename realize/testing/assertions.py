@@ -13,8 +13,9 @@ from realize.errors import ToleranceError
 from realize.forms import reduce
 from realize.forms.response import response_change
 from realize.model.realization import Realization
+from realize.proof.compare import same_transfer
+from realize.proof.record import Counterexample
 from realize.results import Mode, ResponseChange
-from realize.testing.comparing import same_transfer
 from realize.testing.reading import rational_model
 
 __all__ = ["assert_minimal", "assert_same_transfer", "response_error"]
@@ -50,8 +51,7 @@ def assert_same_transfer(
 
     Notes
     -----
-    The exact question is decided by D and n1 + n2 Markov parameters in rational arithmetic, and a
-    rational point where the two differ is then looked for.
+    The exact question is that of `realize.same_transfer`.
 
     Examples
     --------
@@ -61,15 +61,15 @@ def assert_same_transfer(
     >>> assert_same_transfer(whole, Realization([[-1]], [1], [1]))
     >>> assert_same_transfer(whole, Realization([[-1]], [2], [1]))
     Traceback (most recent call last):
-    AssertionError: the transfer matrices differ at s = 0: from input u1 to output y1 the first has
-    1, the second 2: off by 1 (100 %)
+    AssertionError: the transfer matrices differ at s = 1: from input u1 to output y1 the first has
+    1/2, the second 1: off by 1/2 (100 %)
     """
     __tracebackhide__ = True
     if within is None:
         left, right = (rational_model(thing, reading) for thing in (first, second))
         _assert_one_shape(left, right)
         compared = same_transfer(left, right, reading=reading)
-        if not compared:
+        if compared.counterexample is not None:
             raise AssertionError(_differing(left, compared.counterexample))
         return
     if isinstance(within, bool) or not isinstance(within, (int, float)) or not within >= 0:
@@ -174,9 +174,9 @@ def _assert_one_shape(first: Realization, second: Realization) -> None:
         )
 
 
-def _differing(first: Realization, counterexample: Any) -> str:
+def _differing(first: Realization, found: Counterexample) -> str:
     """Return what differs, where, and by how much: the worst entry first."""
-    point, left, right = counterexample
+    left, right = found.first, found.second
     differing = sorted(
         ((abs(left[i, j] - right[i, j]), -i, -j) for i, j in np.ndindex(left.shape)), reverse=True
     )
@@ -186,8 +186,8 @@ def _differing(first: Realization, counterexample: Any) -> str:
     variable = "s" if first.sampling_period is None else "z"
     share = f" ({_short(100 * size / abs(left[i, j]))} %)" if left[i, j] else ""
     text = (
-        f"the transfer matrices differ at {variable} = {point}: from input {first.input_names[j]} "
-        f"to output {first.output_names[i]} the first has {_short(left[i, j])}, the second "
+        f"the transfer matrices differ at {variable} = {found.point}: from input "
+        f"{first.input_names[j]} to output {first.output_names[i]} the first has {_short(left[i, j])}, the second "
         f"{_short(right[i, j])}: off by {_short(size)}{share}"
     )
     if left.size > 1:

@@ -15,14 +15,14 @@ TESTS = Path(__file__).parent.parent
 #: The rooms from the ground up; a module belongs to the one that its first part names. "" is the
 #: package itself, the public names, which only what is made for people may use.
 ROOMS: tuple[tuple[str, ...], ...] = (
-    ("entries", "tolerance", "errors", "polynomials"),
+    ("entries", "tolerance", "errors", "polynomials", "checker"),
     ("model",),
     ("results", "stability"),
     ("arithmetic",),
     ("forms",),
     ("exact", "floating", "multiprecision", "dispatch"),
     ("convert",),
-    ("examination",),
+    ("examination", "proof"),
     ("",),
     ("testing",),
     ("cli", "demo", "__main__"),
