@@ -187,8 +187,8 @@ def _differing(first: Realization, found: Counterexample) -> str:
     share = f" ({_short(100 * size / abs(left[i, j]))} %)" if left[i, j] else ""
     text = (
         f"the transfer matrices differ at {variable} = {found.point}: from input "
-        f"{first.input_names[j]} to output {first.output_names[i]} the first has {_short(left[i, j])}, the second "
-        f"{_short(right[i, j])}: off by {_short(size)}{share}"
+        f"{first.input_names[j]} to output {first.output_names[i]} the first has "
+        f"{_short(left[i, j])}, the second {_short(right[i, j])}: off by {_short(size)}{share}"
     )
     if left.size > 1:
         text += f"; {len(differing)} of {left.size} entries differ there"
