@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 from typing import Final
 
 import numpy as np
@@ -23,7 +24,7 @@ from realize.errors import (
     UnsupportedEntryError,
 )
 from realize.examination.doubt import with_doubt
-from realize.examination.eigenvectors import nearly_hidden
+from realize.examination.eigenvectors import Eigenvectors
 from realize.examination.lost import with_loss
 from realize.examination.nearest import Answered, Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, replayed, with_exact_ranks
@@ -48,6 +49,10 @@ STEPS_BUDGET: Final = 5.0
 
 They run only where the exact path has no answer, and are most wanted where its budget is small.
 """
+
+LARGEST_FOR_EIGENVECTORS: Final = 300
+"""Up to this order eigenvectors are always asked for hidden modes that no staircase shows; they
+cost some twenty times as much as a staircase."""
 
 _VISIBLE_ORDER: Final = 24
 """Up to this order the modes that show are computed with many digits where nothing is exact."""
@@ -240,9 +245,21 @@ class _Floating:
 
     def nearest(
         self, model: Realization, answered: Callable[[Realization, Coordinates], Answered]
-    ) -> tuple[Nearest, Answered]:
-        """Return the nearest model of lower order, and what it hides."""
+    ) -> tuple[Nearest, Answered] | None:
+        """Return the nearest model of lower order that the staircases show, and what it hides."""
         return nearest_of(model, *self._ran(), answered)
+
+    def nearest_by_eigenvectors(
+        self, model: Realization, answered: Callable[[Realization, Coordinates], Answered]
+    ) -> tuple[Nearest, Answered] | None:
+        """Return a model of lower order within rounding that only eigenvectors show, if any."""
+        opened, _ = self._ran()
+        within = rounding_floor(model.order, 1.0)
+        for run in self.eigenvectors.splits():
+            found = nearest_of(model, opened, run, answered, within)
+            if found is not None:
+                return found
+        return None
 
     def decisions(self) -> tuple[RankDecision, ...]:
         if self.failed is not None:
@@ -250,9 +267,14 @@ class _Floating:
         _, run = self._ran()
         return run[0].decisions() + run[1].decisions()
 
+    @cached_property
+    def eigenvectors(self) -> Eigenvectors:
+        """The eigenvectors of the scaled model."""
+        return Eigenvectors.of(self._ran()[0])
+
     def nearly_hidden(self) -> int:
         """Return how many modes eigenvectors show within the cutoff of being hidden."""
-        return 0 if self.failed is not None else nearly_hidden(self._ran()[0])
+        return 0 if self.failed is not None else self.eigenvectors.nearly_hidden()
 
     def hidden_modes(
         self, stairs: tuple[tuple[int, ...], tuple[int, ...]] | None = None
@@ -438,15 +460,13 @@ def _or_nearest(
 ) -> _Found:
     """Return the answer found, or that about the nearest model where this is within rounding."""
     above = model.order if found.about is None else found.answer.order
-    if floating.order is None or floating.order >= above:
-        return found
 
     def proved(shaped: Realization, coordinates: Coordinates) -> ExactAnswer:
         answer = ExactAnswer(shaped, Clock(budget), coordinates)
         answer.find_hidden()
         return answer
 
-    pair = _formed(model, floating, proved, not_done)
+    pair = _formed(model, floating, above, proved, not_done)
     if pair is None:
         return found
     nearest, near = pair
@@ -467,10 +487,16 @@ def _by_steps(
     stepped = {best: stepped[best], **stepped}
     about = stepped[best]
     found = _Found(Answer(order=about.order, basis="multiprecision"), best, about, stepped=stepped)
-    if model.kind != Kind.FLOATING or floating.order is None or floating.order >= about.order:
+    if model.kind != Kind.FLOATING:
         return found
-    pair = _formed(model, floating, lambda *near: SteppedAnswer(near[0], clock, near[1]), not_done)
+
+    def answered(shaped: Realization, coordinates: Coordinates) -> SteppedAnswer:
+        return SteppedAnswer(shaped, clock, coordinates)
+
+    pair = _formed(model, floating, about.order, answered, not_done)
     if pair is None:
+        if floating.order is None or floating.order >= about.order:
+            return found
         # What the floating path hides may be hidden within the rounding of the data, so the
         # dangers that it names must not be passed over.
         order = floating.order
@@ -490,15 +516,37 @@ def _by_steps(
 def _formed(
     model: Realization,
     floating: _Floating,
+    above: int,
     answered: Callable[[Realization, Coordinates], Answered],
     not_done: list[str],
 ) -> tuple[Nearest, Answered] | None:
-    """Return the nearest model of lower order and what it hides, or say why not."""
+    """Return the nearest model of an order below one, and what it hides, or say why not.
+
+    The one that the staircases show; where that is none, or lies beyond rounding, one within
+    rounding that eigenvectors show.
+    """
+    pair = None
     try:
-        return floating.nearest(model, answered)
+        if floating.order is not None and floating.order < above:
+            pair = floating.nearest(model, answered)
+            if pair is not None and _within_rounding(model, pair[0]):
+                return pair
+        if _has_more_nearly_hidden(model, floating, above):
+            closer = floating.nearest_by_eigenvectors(model, answered)
+            if closer is not None and closer[1].order < above:
+                return closer
     except (BudgetError, PrecisionError) as error:
         not_done.append(f"the nearest model of lower order was not formed: {error}")
-        return None
+    return pair
+
+
+def _has_more_nearly_hidden(model: Realization, floating: _Floating, above: int) -> bool:
+    """Whether eigenvectors of doubles show more hidden modes than an order leaves."""
+    return (
+        model.kind == Kind.FLOATING
+        and 0 < model.order <= LARGEST_FOR_EIGENVECTORS
+        and floating.nearly_hidden() > model.order - above
+    )
 
 
 def _within_rounding(model: Realization, nearest: Nearest) -> bool:

@@ -11,11 +11,11 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any, Protocol, TypeVar
 
-from realize.arithmetic.floating import FloatingReach, OpenedFloating
+from realize.arithmetic.floating import OpenedFloating
 from realize.arithmetic.rational import RationalMatrix
 from realize.entries import Reading
 from realize.examination.why import Coordinates
-from realize.forms.nearby import nearby
+from realize.forms.nearby import Nearby, Spanned, nearby
 from realize.model.realization import Kind, Realization
 from realize.results import Deferred
 
@@ -69,16 +69,27 @@ class Answering(Protocol):
 Answered = TypeVar("Answered", bound=Answering)
 
 
+def _scaled_share(near: Nearby, opened: OpenedFloating) -> float:
+    """Return the largest share of the change in scaled units, where no entry is lost in a norm."""
+    scaled = Realization._trusted(
+        opened.A, opened.B, opened.C, opened.model.D, kind=Kind.FLOATING
+    ).read(Reading.STORED)
+    return near.in_units(opened.scaling).distances(scaled)[1]
+
+
 def nearest_of(
     user: Realization,
     opened: OpenedFloating,
-    run: tuple[FloatingReach, FloatingReach],
+    run: tuple[Spanned, Spanned],
     answered: Callable[[Realization, Coordinates], Answered],
-) -> tuple[Nearest, Answered]:
+    within: float = math.inf,
+) -> tuple[Nearest, Answered] | None:
     """Return the nearby model that the floating reduction reduces exactly, and what it hides.
 
     The distance is from the user's model as stored, or as given; ``opened`` is its rounded copy.
-    ``answered`` says what the nearby model hides, by one path or another.
+    ``answered`` says what the nearby model hides, by one path or another. None where the largest
+    share of the change, in the user's units or in the scaled ones, is above ``within``; nothing is
+    asked then.
 
     Raises
     ------
@@ -88,12 +99,14 @@ def nearest_of(
         When the rank decisions of the floating path contradict each other.
     """
     near = nearby(opened, run)
-    shaped = near.model.read(Reading.STORED)
-    answer = answered(shaped, Coordinates(opened.model, near.T))
     # Irrational constants are rounded for it, which is far below what doubles can tell.
     plain = user.to_float() if user._holds_constants() else user
     rational = plain if plain.kind == Kind.RATIONAL else plain.read(Reading.STORED)
     distance, share = near.distances(rational)
+    if share > within or (within < math.inf and _scaled_share(near, opened) > within):
+        return None
+    shaped = near.model.read(Reading.STORED)
+    answer = answered(shaped, Coordinates(opened.model, near.T))
 
     def witness() -> Realization:
         A, B, C = (RationalMatrix.from_array(M) for M in shaped.matrices()[:3])

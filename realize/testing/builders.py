@@ -162,8 +162,11 @@ def near_cancellation(difficulty: int, rng: np.random.Generator) -> Plan:
 
 
 def weak_cascade(difficulty: int, rng: np.random.Generator) -> Plan:
-    """Four subsystems in series, each link 10**-difficulty; by chance the last is cut."""
-    link = Fraction(1, 10**difficulty)
+    """Four subsystems in series, each link 10**(-0.4 difficulty); by chance the last is cut.
+
+    A change of B by about the product of three links hides the last; at difficulty 9 that is 1e-11.
+    """
+    link = Fraction(1, round(10 ** (0.4 * difficulty)))
     cut = bool(rng.integers(2))
     blocks = _distinct(rng, 4)
     places = _places(blocks)
