@@ -234,7 +234,7 @@ def transfer_matrix(model: Realization) -> TransferMatrix:
     return forms.transfer_matrix(path_for(model), model)
 
 
-def cancel(transfer: TransferMatrix, *, uncertainty: None = None) -> Cancellation:
+def cancel(transfer: TransferMatrix, *, uncertainty: Any = None) -> Cancellation:
     """Cancel the common factors of a transfer matrix, entry by entry.
 
     Parameters

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import cmath
 import math
+from collections.abc import Callable
+from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
@@ -11,7 +14,7 @@ import scipy.linalg
 from realize.model.realization import Realization
 from realize.results import ResponseChange
 
-__all__ = ["response_change"]
+__all__ = ["Factored", "dropping_change", "response_change"]
 
 Array = np.ndarray[Any, Any]
 
@@ -48,6 +51,16 @@ def _searched(model: Realization, reduced: Realization) -> ResponseChange:
         point = first.beside(second.beside(_point(frequency, period)))
         return _norm(first.at(point) - second.at(point))
 
+    def size(frequency: float) -> float:
+        return _norm(first.at(first.beside(_point(frequency, period))))
+
+    return _highest_of(change, size, grid)
+
+
+def _highest_of(
+    change: Callable[[float], float], size: Callable[[float], float], grid: Array
+) -> ResponseChange:
+    """Return where a change is largest, about the highest points of a grid of frequencies."""
     changes = np.array([change(frequency) for frequency in grid])
     largest, where = float(changes.max()), float(grid[int(changes.argmax())])
     for k in np.argsort(changes)[::-1][:_PEAKS]:
@@ -55,14 +68,83 @@ def _searched(model: Realization, reduced: Realization) -> ResponseChange:
         frequency, value = _highest(change, float(low), float(high))
         if value > largest:
             largest, where = value, frequency
-    size = max(
-        _norm(first.at(first.beside(_point(frequency, period)))) for frequency in (*grid, where)
-    )
+    whole = max(size(frequency) for frequency in (*grid, where))
     return ResponseChange(
         size=largest,
-        relative=largest / size if size else 0.0,
+        relative=largest / whole if whole else 0.0,
         frequency=where,
     )
+
+
+@dataclass(frozen=True, slots=True)
+class Factored:
+    """gain * product(s - zeros) / product(s - poles)."""
+
+    gain: float
+    zeros: Array
+    poles: Array
+
+    def at(self, point: complex) -> complex:
+        """Return the value; factors are paired, so that products stay in range."""
+        paired = min(self.zeros.size, self.poles.size)
+        value = self.gain * np.prod((point - self.zeros[:paired]) / (point - self.poles[:paired]))
+        rest = np.prod(point - self.zeros[paired:]) / np.prod(point - self.poles[paired:])
+        return complex(value * rest)
+
+
+def dropping_change(
+    whole: Factored, kept: Factored, dropped: Factored | None, period: Any
+) -> ResponseChange:
+    """Return how much a fraction changes on the frequency axis when factors are dropped.
+
+    Parameters
+    ----------
+    whole, kept : Factored
+        The fraction before and after.
+    dropped : Factored or None
+        What was dropped, whole = kept * dropped. Then the gain of what is kept is that of the
+        whole at infinity, or at zero frequency, whichever changes less, and the change is computed
+        without cancellation. None: kept is compared as it is.
+    period : number or None
+        None for continuous time.
+    """
+    if dropped is not None:
+        margins = dropped.poles.real if period is None else np.abs(dropped.poles) - 1.0
+        if (margins == 0.0).any():
+            on = complex(dropped.poles[margins == 0.0][0])
+            where = on.imag if period is None else cmath.phase(on) / float(period)
+            return ResponseChange(size=math.inf, relative=math.inf, frequency=abs(where))
+    grid = _frequencies(whole.poles, None if period is None else float(period))
+
+    def beside(frequency: float) -> complex:
+        point = _point(frequency, period)
+        return point + 1e-9 * max(abs(point), 1e-300) if (whole.poles == point).any() else point
+
+    def size(frequency: float) -> float:
+        return _finite(whole.at(beside(frequency)))
+
+    def change(frequency: float, factor: float) -> float:
+        point = beside(frequency)
+        if dropped is None:
+            return _finite(whole.at(point) - kept.at(point))
+        below = np.prod(point - dropped.poles)
+        moved = np.prod(point - dropped.zeros) - factor * below
+        return _finite(kept.at(point) * complex(moved / below))
+
+    factors = [1.0]
+    with np.errstate(all="ignore"):
+        if dropped is not None:
+            level = dropped.at(0.0 if period is None else 1.0).real
+            if math.isfinite(level) and level:
+                factors.append(level)
+        found = [_highest_of(lambda w, k=k: change(w, k), size, grid) for k in factors]  # type: ignore[misc]
+    return min(found, key=lambda each: each.size)
+
+
+def _finite(value: complex) -> float:
+    """Return the modulus; 0.0 where doubles do not reach, so that it is passed over."""
+    size = float(abs(value))
+    return size if math.isfinite(size) else 0.0
 
 
 class _Response:

@@ -1,0 +1,646 @@
+"""The nearest pair of polynomials with a common factor: how far it is, and an exact witness.
+
+Given f, g and a degree k, change the coefficients as little as possible so that both have one
+factor h of degree k. For a fixed h the changes that work form a plane, so the nearest one is a
+linear problem: with C(h) the matrix of the powers x^i modulo h, and changes L xi measured by the
+length of xi,
+
+    minimise ||xi||  subject to  C(h) L xi = -(f mod h, g mod h).
+
+What is left is a search over the k coefficients of h, by Gauss-Newton on the manifold of pairs
+with a common factor: (f + df) mod h changes with h at the rate -(quotient times power) mod h, so
+each step is a least-squares problem with k unknowns. L is diagonal for independent coefficients
+(its zeros are coefficients that are fixed) and a square root of the covariance for correlated
+ones; what is proved or taken to be common already, c, stays common: changes are then c times
+something.
+
+Remainders are computed in rational arithmetic and only then rounded, and h is kept with many
+digits. Where f mod h is a thousand million million times smaller than f, doubles would see
+rounding alone. The answer is therefore not limited by the precision of a double, and its witness
+is exact: h divides both of its polynomials, term by term.
+
+A lower bound comes from a Sylvester matrix: a pair with a common factor of degree k has a
+singular k-th one, so sigma_min(S_k(f, g)) <= ||S_k(df, dg)||.
+
+References
+----------
+Corless, Gianni, Trager, Watt (1995), The singular value decomposition for polynomial systems,
+ISSAC. Karmarkar and Lakshman (1998), On approximate GCDs of univariate polynomials, J. Symbolic
+Computation 26. Zeng (2011), The numerical greatest common divisor of univariate polynomials,
+Contemporary Mathematics 556. Golub and Pereyra (1973), The differentiation of pseudo-inverses and
+nonlinear least squares problems whose variables separate, SIAM J. Numerical Analysis 10.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Any, Final
+
+import numpy as np
+import scipy.linalg
+
+from realize import polynomials
+from realize import tolerance as rule
+from realize.arithmetic.divisors import convolution, sylvester
+from realize.polynomials import Polynomial
+
+__all__ = [
+    "Metric",
+    "NearDivisors",
+    "Trial",
+    "is_out_of_reach",
+    "least_change",
+    "relative_change",
+]
+
+Array = np.ndarray[Any, Any]
+
+_STEPS: Final = 40
+"""Gauss-Newton steps at most. Convergence is fast when the change is small, linear when not."""
+
+_HALVINGS: Final = 12
+"""How often a step that does not lower the change is halved."""
+
+_GRID: Final = 2**400
+"""Coefficients of h are kept to one part in this, in units where they are of size one."""
+
+_SINGULAR: Final = 2.0**-44
+"""Singular value over the largest one below which fixed coefficients leave a direction no room."""
+
+_MET: Final = 2.0**-40
+"""Relative size of a remainder that counts as zero where no coefficient is free to take it up."""
+
+_SETTLED: Final = 1e-12
+"""Relative gain of a step below which the search ends."""
+
+_ROUNDS: Final = 12
+"""Linear programs at most in a search for the smallest box."""
+
+
+@dataclass(frozen=True, slots=True)
+class Metric:
+    """What a change of the coefficients is measured by.
+
+    Attributes
+    ----------
+    f, g : sequences of Fraction
+        The size that counts as one for each coefficient, 0 where it is fixed.
+    covariance : float array, or None
+        Of all coefficients, those of f first; then f and g hold standard deviations.
+    """
+
+    f: Sequence[Fraction]
+    g: Sequence[Fraction]
+    covariance: Array | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class _System:
+    """For a fixed factor: whole xi = -target, rows in `units`; powers of x modulo the factor."""
+
+    powers: Array
+    units: Array
+    whole: Array
+    target: Array
+
+
+@dataclass(slots=True)
+class Trial:
+    """A trial factor in the scaled variable, what it costs, and the step that lowers the cost.
+
+    Attributes
+    ----------
+    h : tuple of Fraction
+        Monic.
+    cost : float
+        Size of the smallest change that makes it common.
+    unmet : float
+        Relative size of what is left where no coefficient is free.
+    xi : array
+        That change, in the coordinates of the metric.
+    step : array
+        Gauss-Newton step of the coefficients of h, the leading one left out.
+    """
+
+    h: Polynomial
+    cost: float
+    unmet: float
+    xi: Array
+    step: Array
+
+    @property
+    def is_met(self) -> bool:
+        """Whether the conditions that no coefficient is free to take up hold."""
+        return self.unmet <= _MET
+
+    @property
+    def merit(self) -> float:
+        """Cost, and a penalty for conditions that are not met."""
+        return self.cost + (self.unmet / _MET if self.unmet > _MET else 0.0)
+
+
+class NearDivisors:
+    """The pairs near (f, g) with a common factor beyond the one they have.
+
+    Parameters
+    ----------
+    f, g : tuple of Fraction
+        Descending powers, leading coefficients not zero.
+    common, f_rest, g_rest : tuple of Fraction
+        f = common * f_rest and g = common * g_rest, exactly or to within a tolerance.
+    """
+
+    def __init__(
+        self,
+        f: Polynomial,
+        g: Polynomial,
+        common: Polynomial,
+        f_rest: Polynomial,
+        g_rest: Polynomial,
+    ) -> None:
+        self.originals = f, g
+        self.common = common
+        longer = f_rest if len(f_rest) >= len(g_rest) else g_rest
+        self.unit = _unit(longer)
+        self.shifts = [_size_exponent(_graded(p, -self.unit)) for p in (f_rest, g_rest)]
+        self.rests = [
+            _scaled(_graded(p, -self.unit), -shift)
+            for p, shift in zip((f_rest, g_rest), self.shifts, strict=True)
+        ]
+        self.flint = [polynomials.to_flint(p) for p in self.rests]
+        graded = _graded(common, -self.unit)
+        self.convolutions = [
+            convolution(_floats(graded), len(rest)) if len(common) > 1 else None
+            for rest in self.rests
+        ]
+        self.degree_limit = min(len(p) for p in self.rests) - 1
+
+    # Scaling
+
+    def scaled_factor(self, h: Polynomial) -> Polynomial:
+        """Return a monic factor in the scaled variable."""
+        return _graded(h, -self.unit)
+
+    def weights(self, metric: Metric) -> list[Array]:
+        """Return the weights of both sides in scaled coefficients, as doubles."""
+        return [
+            _floats(_scaled(_graded(tuple(w), -self.unit), -shift))
+            for w, shift in zip((metric.f, metric.g), self.shifts, strict=True)
+        ]
+
+    def root(self, metric: Metric) -> Array:
+        """Return L: changes of the scaled rests are L xi, and ||xi|| is their size."""
+        weights = np.concatenate(self.weights(metric))
+        if metric.covariance is None:
+            base = np.diag(weights)
+        else:
+            base = _square_root(metric.covariance, weights)
+        if self.convolutions[0] is None:
+            return base
+        # Changes of the originals are base eta = convolution delta; find the eta that fit.
+        whole = scipy.linalg.block_diag(*self.convolutions)
+        size = float(np.abs(base).max()) or 1.0
+        null = scipy.linalg.null_space(np.hstack([base / size, -whole]))
+        eta, delta = null[: base.shape[1]], null[base.shape[1] :] * size
+        triangle = np.linalg.qr(eta, mode="r")
+        return np.asarray(scipy.linalg.solve_triangular(triangle, delta.T, trans="T").T)
+
+    # The search
+
+    def descend(self, start: Polynomial, root: Array) -> Trial:
+        """Return the nearest local solution from a start, by Gauss-Newton.
+
+        Parameters
+        ----------
+        start : tuple of Fraction
+            Monic, in the scaled variable.
+        root : array
+            L of `root`.
+        """
+        point = self.point(start, root)
+        for _ in range(_STEPS):
+            better = self._shortened(point, root)
+            if better is None:
+                break
+            gain = point.merit - better.merit
+            settled = gain <= _SETTLED * point.merit
+            point = better
+            if settled:
+                break
+        return point
+
+    def _shortened(self, point: Trial, root: Array) -> Trial | None:
+        """Return the first of the step, its half, ... that lowers the merit."""
+        step = point.step
+        for _ in range(_HALVINGS):
+            if not np.isfinite(step).all() or not step.any():
+                return None
+            trial = self.point(_moved(point.h, step), root)
+            if trial.merit < point.merit:
+                return trial
+            step = step / 2
+        return None
+
+    def point(self, h: Polynomial, root: Array) -> Trial:
+        """Return the least change for a fixed factor, and the Gauss-Newton step of the factor."""
+        system = self._linear(h, root)
+        left, values, right = np.linalg.svd(system.whole, full_matrices=True)
+        largest = max(float(values.max(initial=0.0)), 1e-300)
+        kept = int(np.count_nonzero(values > _SINGULAR * largest))
+        inside, outside = left[:, :kept], left[:, kept:]
+        unmet = outside.T @ system.target
+        costs = (inside.T @ system.target) / values[:kept]
+        xi = -(right[:kept].T @ costs)
+        slope = self._slope(h, root @ xi, system)
+        rates = (inside.T @ slope) / values[:kept, None]
+        return Trial(
+            h=h,
+            cost=float(np.linalg.norm(costs)),
+            unmet=float(np.linalg.norm(unmet)),
+            xi=xi,
+            step=_constrained(rates, -costs, outside.T @ slope, -unmet),
+        )
+
+    def _linear(self, h: Polynomial, root: Array) -> _System:
+        """Return the conditions for a fixed factor, each side in units of its own."""
+        divisor = polynomials.to_flint(h)
+        degree = len(h) - 1
+        tail = _floats(h[1:])
+        powers = np.zeros((degree, max(len(p) for p in self.rests)))
+        power = np.zeros(degree)
+        power[-1] = 1.0
+        for k in range(powers.shape[1]):
+            powers[:, k] = power
+            power = np.append(power[1:], 0.0) - power[0] * tail
+        first, second = (len(rest) for rest in self.rests)
+        halves = [powers[:, first - 1 :: -1] @ root[:first]]
+        halves.append(powers[:, second - 1 :: -1] @ root[first:])
+        units = np.repeat([float(np.abs(half).max()) or 1.0 for half in halves], degree)
+        rho = [_floats(_padded(divmod(p, divisor)[1], degree)) for p in self.flint]
+        return _System(
+            powers=powers,
+            units=units,
+            whole=np.vstack(halves) / units[:, None],
+            target=np.concatenate(rho) / units,
+        )
+
+    def _slope(self, h: Polynomial, delta: Array, system: _System) -> Array:
+        """Return how the remainders of the changed pair move with the coefficients of h.
+
+        The coefficient of x^j changes the remainder by -(x^j times the quotient) mod h.
+        """
+        divisor = polynomials.to_flint(h)
+        degree = len(h) - 1
+        count = len(self.rests[0])
+        slopes = []
+        for rest, change in zip(self.rests, (delta[:count], delta[count:]), strict=True):
+            quotient = divmod(polynomials.to_flint(_changed(rest, change)), divisor)[0]
+            u = _floats(polynomials.from_flint(quotient))[::-1]
+            slopes.append(
+                -np.column_stack(
+                    [system.powers[:, j : j + u.size] @ u for j in range(degree - 1, -1, -1)]
+                )
+            )
+        return np.vstack(slopes) / system.units[:, None]
+
+    def smallest_box(
+        self, point: Trial, metric: Metric, root: Array
+    ) -> tuple[Polynomial, Array, float]:
+        """Return a factor and changes whose largest ratio to the weights is a local minimum.
+
+        A sequence of linear programs, each with a bound on how far the factor may move.
+
+        Returns
+        -------
+        factor, changes of the scaled rests (concatenated), ratio
+        """
+        weights = np.concatenate(self.weights(metric))
+        changes = root
+        if self.convolutions[0] is not None:
+            changes = scipy.linalg.block_diag(*self.convolutions) @ root
+        free = weights > 0
+        ratios = changes[free] / weights[free, None]
+        h, delta = point.h, root @ point.xi
+        best = float(np.abs(ratios @ point.xi).max(initial=0.0))
+        reach = 10.0
+        for _ in range(_ROUNDS):
+            if best <= 1.0:
+                # Inside the box, which is all that is asked.
+                break
+            moved = self._program(h, delta, root, ratios, reach)
+            trial = None if moved is None else _moved(h, moved[1])
+            settled = None if trial is None else self._program(trial, delta, root, ratios, 0.0)
+            if trial is not None and settled is not None and settled[2] < best:
+                gain = best - settled[2]
+                h, delta, best = trial, root @ settled[0], settled[2]
+                if gain <= 1e-6 * best:
+                    break
+            else:
+                reach /= 8
+        return h, delta, best
+
+    def _program(
+        self, h: Polynomial, delta: Array, root: Array, ratios: Array, reach: float
+    ) -> tuple[Array, Array, float] | None:
+        """Return xi, the change of the factor and the ratio that a linear program finds.
+
+        `reach` bounds what the change of the factor does to the remainder, in units of the
+        larger of the remainder and of what the weights can take up.
+        """
+        from scipy.optimize import linprog
+
+        degree = len(h) - 1
+        system = self._linear(h, root)
+        slope = self._slope(h, delta, system)
+        rates = np.abs(slope).max(axis=0)
+        slope = slope / rates
+        moves = degree if reach else 0
+        reach *= max(1.0, float(np.abs(system.target).max()))
+        size = root.shape[1]
+        equal = np.hstack([system.whole, slope[:, :moves], np.zeros((2 * degree, 1))])
+        one = np.hstack([ratios, np.zeros((len(ratios), moves)), -np.ones((len(ratios), 1))])
+        other = np.hstack([-one[:, :-1], one[:, -1:]])
+        found = linprog(
+            np.append(np.zeros(size + moves), 1.0),
+            A_ub=np.vstack([one, other]),
+            b_ub=np.zeros(2 * len(ratios)),
+            A_eq=equal,
+            b_eq=-system.target,
+            bounds=[(None, None)] * size + [(-reach, reach)] * moves + [(0, None)],
+        )
+        if found.x is None:
+            return None
+        return found.x[:size], found.x[size : size + moves] / rates[:moves], float(found.x[-1])
+
+    # The witness
+
+    def witness(
+        self, h: Polynomial, delta: Array, metric: Metric
+    ) -> tuple[Polynomial, Polynomial, Polynomial] | None:
+        """Return the factor and an exact pair that it divides, with fixed coefficients as given.
+
+        None when the fixed coefficients leave no room for an exact pair of rationals.
+        """
+        count = len(self.rests[0])
+        for factor in _tidied(h):
+            pair = []
+            sides = (delta[:count], delta[count:])
+            for k, (change, weights) in enumerate(zip(sides, (metric.f, metric.g), strict=True)):
+                found = self._divisible(k, factor, change, weights)
+                if found is None:
+                    break
+                pair.append(found)
+            if len(pair) == 2:
+                return _graded(factor, self.unit), pair[0], pair[1]
+        return None
+
+    def _divisible(
+        self, side: int, h: Polynomial, change: Array, weights: Sequence[Fraction]
+    ) -> Polynomial | None:
+        """Return an exact multiple of common * h near one side plus a change."""
+        rest = _changed(self.rests[side], change)
+        remainder = divmod(polynomials.to_flint(rest), polynomials.to_flint(h))[1]
+        if all(weights):
+            # The last coefficients are free to take the rest up.
+            left = tuple(-c for c in polynomials.from_flint(remainder))
+            rest = polynomials.add(rest, left)
+        else:
+            solved = self._corrected(side, rest, h, weights)
+            if solved is None:
+                return None
+            rest = solved
+        if len(rest) != len(self.rests[side]) or not rest[0]:
+            return None
+        rest = _graded(_scaled(rest, self.shifts[side]), self.unit)
+        return polynomials.multiply(self.common, rest)
+
+    def _corrected(
+        self, side: int, rest: Polynomial, h: Polynomial, weights: Sequence[Fraction]
+    ) -> Polynomial | None:
+        """Return the rest changed a little, so that h divides it and fixed coefficients hold.
+
+        The conditions are solved exactly in as many coefficients as there are conditions, chosen
+        by pivoting for large weights.
+        """
+        from flint import fmpq, fmpq_mat
+
+        common = _graded(self.common, -self.unit)
+        wanted = _scaled(_graded(self.originals[side], -self.unit), -self.shifts[side])
+        size, degree = len(rest), len(h) - 1
+        fixed = [k for k, weight in enumerate(weights) if not weight]
+        rows: list[list[Fraction]] = []
+        right: list[Fraction] = []
+        for k in fixed:
+            row = [common[k - j] if 0 <= k - j < len(common) else Fraction(0) for j in range(size)]
+            if any(row):
+                rows.append(row)
+                right.append(wanted[k] - sum(a * b for a, b in zip(row, rest, strict=True)))
+        divisor = polynomials.to_flint(h)
+        columns = []
+        for j in range(size):
+            monomial = (Fraction(1), *[Fraction(0)] * (size - 1 - j))
+            columns.append(_padded(divmod(polynomials.to_flint(monomial), divisor)[1], degree))
+        rows += [[column[i] for column in columns] for i in range(degree)]
+        right += [-c for c in _padded(divmod(polynomials.to_flint(rest), divisor)[1], degree)]
+        graded = _graded(tuple(weights), -self.unit)
+        sizes = _floats(_scaled(graded, -self.shifts[side]))[:size]
+        table = np.array([[float(c) for c in row] for row in rows]) * np.maximum(
+            sizes, 1e-3 * sizes.max()
+        )
+        kept = _independent(table)
+        chosen = _independent(table[kept].T)
+        if len(chosen) < len(kept):
+            return None
+        matrix = fmpq_mat(
+            len(kept),
+            len(kept),
+            [fmpq(rows[i][j].numerator, rows[i][j].denominator) for i in kept for j in chosen],
+        )
+        vector = fmpq_mat(
+            len(kept), 1, [fmpq(right[i].numerator, right[i].denominator) for i in kept]
+        )
+        if not matrix.det():
+            return None
+        solution = matrix.solve(vector)
+        moved = list(rest)
+        for position, j in enumerate(chosen):
+            entry = solution[position, 0]
+            moved[j] += Fraction(int(entry.p), int(entry.q))
+        # Rows left out as dependent must hold too.
+        for row, before in zip(rows, right, strict=True):
+            after = before - sum(
+                a * (new - old) for a, new, old in zip(row, moved, rest, strict=True)
+            )
+            if after:
+                return None
+        return tuple(moved)
+
+
+# Lower bounds
+
+
+def least_change(f: Polynomial, g: Polynomial, degree: int) -> float:
+    """Return a lower bound of the relative change that gives a common factor of this degree.
+
+    The change is measured as by `relative_change`. The smallest singular value is lowered by the
+    rounding floor of its computation.
+    """
+    first, second = (_normed(p) for p in (f, g))
+    table = sylvester(first, second, degree)
+    least = float(np.linalg.svd(table, compute_uv=False)[-1])
+    least -= rule.rounding_floor(len(table), float(np.linalg.norm(table)))
+    columns = max(first.size, second.size) - degree
+    return float(max(least, 0.0) / math.sqrt(columns))
+
+
+def is_out_of_reach(f: Polynomial, g: Polynomial, metric: Metric, degree: int, unit: int) -> bool:
+    """Return whether no pair within the box has a common factor of this degree.
+
+    S_k(f, g) keeps full rank when its smallest singular value exceeds the norm of S_k of the
+    radii, which bounds that of every S_k(df, dg). Measured in the scaled variable.
+    """
+    sides = []
+    for p, weights in ((f, metric.f), (g, metric.g)):
+        graded = _graded(p, -unit)
+        shift = -_size_exponent(graded)
+        sides.append(
+            (
+                _floats(_scaled(graded, shift)),
+                _floats(_scaled(_graded(tuple(weights), -unit), shift)),
+            )
+        )
+    table = sylvester(sides[0][0], sides[1][0], degree)
+    radii = sylvester(sides[0][1], sides[1][1], degree)
+    least = float(np.linalg.svd(table, compute_uv=False)[-1])
+    least -= rule.rounding_floor(len(table), float(np.linalg.norm(table)))
+    return bool(least > float(np.linalg.norm(radii, 2)) * (1 + 1e-10))
+
+
+def relative_change(original: Sequence[Polynomial], changed: Sequence[Polynomial]) -> float:
+    """Return the change of two polynomials, each over its norm, as one 2-norm."""
+    parts = []
+    for p, q in zip(original, changed, strict=True):
+        largest = max(abs(c) for c in p)
+        norm = float(np.linalg.norm([float(c / largest) for c in p]))
+        difference = [(b - a) / largest for a, b in zip(p, q, strict=True)]
+        top = max(abs(d) for d in difference)
+        if top:
+            parts.append(
+                float(top) * float(np.linalg.norm([float(d / top) for d in difference])) / norm
+            )
+    return math.hypot(*parts)
+
+
+# Small helpers
+
+
+def _unit(polynomial: Polynomial) -> int:
+    """Return the power of two for the variable that levels the coefficients."""
+    kept = [k for k, c in enumerate(polynomial) if c]
+    span = kept[-1] - kept[0]
+    if not span:
+        return 0
+    first, last = (_log2(polynomial[k]) for k in (kept[0], kept[-1]))
+    return round((last - first) / span)
+
+
+def _log2(number: Fraction) -> float:
+    return math.log2(abs(number.numerator)) - math.log2(number.denominator)
+
+
+def _graded(polynomial: Polynomial, unit: int) -> Polynomial:
+    """Return the coefficients k times 2^(unit k): the variable in another unit."""
+    if not unit:
+        return polynomial
+    return tuple(c * Fraction(2) ** (unit * k) for k, c in enumerate(polynomial))
+
+
+def _scaled(polynomial: Polynomial, shift: int) -> Polynomial:
+    return tuple(c * Fraction(2) ** shift for c in polynomial)
+
+
+def _size_exponent(polynomial: Polynomial) -> int:
+    return round(max(_log2(c) for c in polynomial if c))
+
+
+def _changed(polynomial: Polynomial, change: Array) -> Polynomial:
+    """Return the polynomial with doubles added to its coefficients, exactly."""
+    return tuple(c + Fraction(float(d)) for c, d in zip(polynomial, change, strict=True))
+
+
+def _floats(polynomial: Iterable[Fraction]) -> Array:
+    return np.array([float(c) for c in polynomial])
+
+
+def _normed(polynomial: Polynomial) -> Array:
+    largest = max(abs(c) for c in polynomial)
+    values = _floats(c / largest for c in polynomial)
+    return values / float(np.linalg.norm(values))
+
+
+def _padded(remainder: Any, degree: int) -> list[Fraction]:
+    """Return the coefficients of a remainder modulo a polynomial of this degree, all of them."""
+    coefficients = polynomials.from_flint(remainder)
+    return [Fraction(0)] * (degree - len(coefficients)) + list(coefficients)
+
+
+def _moved(h: Polynomial, step: Array) -> Polynomial:
+    """Return a monic factor with its other coefficients changed, on the grid."""
+    return (
+        h[0],
+        *(
+            Fraction(round((c + Fraction(float(d))) * _GRID), _GRID)
+            for c, d in zip(h[1:], step, strict=True)
+        ),
+    )
+
+
+def _tidied(h: Polynomial) -> Iterator[Polynomial]:
+    """Yield the factor, and before it the one without coefficients that are rounding noise."""
+    largest = max(abs(c) for c in h)
+    tidy = tuple(c if abs(c) > largest / 2**60 else Fraction(0) for c in h)
+    if tidy != h:
+        yield tidy
+    yield h
+
+
+def _square_root(covariance: Array, deviations: Array) -> Array:
+    """Return a root of a covariance, given in units where its deviations are these."""
+    own = np.sqrt(np.diagonal(covariance))
+    free = own > 0
+    correlations = covariance[np.ix_(free, free)] / np.outer(own[free], own[free])
+    values, vectors = np.linalg.eigh(correlations)
+    kept = values > _SINGULAR * max(float(values.max(initial=0.0)), 1e-300)
+    root = np.zeros((own.size, int(kept.sum())))
+    root[free] = deviations[free, None] * vectors[:, kept] * np.sqrt(values[kept])
+    return root
+
+
+def _constrained(A: Array, b: Array, E: Array, d: Array) -> Array:
+    """Return x that minimises ||A x - b|| among those with E x = d (least squares in both)."""
+    if not len(E):
+        return np.asarray(np.linalg.lstsq(A, b, rcond=None)[0])
+    size = float(np.abs(E).max(initial=0.0))
+    if not size:
+        return np.asarray(np.linalg.lstsq(A, b, rcond=None)[0])
+    left, values, right = np.linalg.svd(E)
+    kept = int(np.count_nonzero(values > _SINGULAR * values[0]))
+    particular = right[:kept].T @ ((left[:, :kept].T @ d) / values[:kept])
+    null = right[kept:].T
+    if not null.shape[1]:
+        return np.asarray(particular)
+    free = np.linalg.lstsq(A @ null, b - A @ particular, rcond=None)[0]
+    return np.asarray(particular + null @ free)
+
+
+def _independent(table: Array) -> list[int]:
+    """Return rows that span the row space, by pivoting."""
+    if not table.size:
+        return []
+    _, triangle, order = scipy.linalg.qr(table.T, mode="economic", pivoting=True)
+    diagonal = np.abs(np.diagonal(triangle))
+    rank = int(np.count_nonzero(diagonal > _SINGULAR * max(diagonal.max(initial=0.0), 1e-300)))
+    return [int(k) for k in order[:rank]]

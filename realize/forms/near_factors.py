@@ -1,0 +1,449 @@
+"""Poles and zeros of a transfer matrix that nearly cancel."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Any, Final
+
+import numpy as np
+
+from realize import polynomials
+from realize.arithmetic.divisors import split
+from realize.arithmetic.nearby_divisors import (
+    Metric,
+    NearDivisors,
+    Trial,
+    is_out_of_reach,
+    least_change,
+    relative_change,
+)
+from realize.arithmetic.path import SharedFactor
+from realize.forms.response import Factored, dropping_change
+from realize.model.realization import Kind
+from realize.model.transfer import TransferMatrix
+from realize.polynomials import Polynomial
+from realize.results import NearFactor, ResponseChange
+from realize.stability import Stability, computed_stability, judge
+from realize.tolerance import root_doubt
+from realize.uncertainty import CoefficientRadii, Uncertainty
+
+__all__ = ["near_factors"]
+
+Array = np.ndarray[Any, Any]
+
+NEAR: Final = 1e-4
+"""Relative change of the coefficients below which a factor that it would make cancel is reported
+as near, uncertainty or none. A heuristic for what is worth a line; it decides nothing."""
+
+_STARTS: Final = 40
+"""Pairs at most from which a search starts; the nearest come first."""
+
+_SAME: Final = 1e-9
+"""Relative difference of coefficients below which two factors found are one."""
+
+_ONE: Polynomial = (Fraction(1),)
+_WORST: Final = (Stability.UNSTABLE, Stability.MARGINAL, Stability.CANNOT_TELL, Stability.STABLE)
+
+
+@dataclass(frozen=True, slots=True)
+class _Measures:
+    """What one fraction is measured by: its own size; and bounds, or a spread."""
+
+    plain: Metric
+    box: Metric | None
+    spread: Metric | None
+    confidence: float
+
+
+def near_factors(
+    given: TransferMatrix,
+    transfer: TransferMatrix,
+    shared: Sequence[Sequence[SharedFactor]],
+    uncertainty: Uncertainty | None,
+) -> tuple[NearFactor, ...]:
+    """Return what nearly cancels in each entry, smallest change first.
+
+    Parameters
+    ----------
+    given, transfer : TransferMatrix
+        As the caller gave it, and as the path takes it.
+    shared : table of SharedFactor
+        What was found common in each entry.
+    uncertainty : Uncertainty or None
+    """
+    found: list[NearFactor] = []
+    for output, input_, measures in _entries(given, transfer, uncertainty):
+        item = shared[output][input_]
+        if min(len(item.numerator), len(item.denominator)) < 2:
+            continue
+        whole = transfer.numerators[output][input_], transfer.denominators[output][input_]
+        entry = _Entry(
+            [_exact(p) for p in whole],
+            _exact(item.common),
+            [_exact(item.numerator), _exact(item.denominator)],
+            measures,
+            transfer.sampling_period,
+            exact=transfer.kind == Kind.RATIONAL,
+        )
+        found += [entry.record(output, input_, candidate) for candidate in entry.candidates()]
+    return tuple(sorted(found, key=lambda each: (each.change, each.degree)))
+
+
+def _exact(polynomial: Sequence[Any]) -> Polynomial:
+    return tuple(Fraction(c) for c in polynomial)
+
+
+def _entries(
+    given: TransferMatrix, transfer: TransferMatrix, uncertainty: Uncertainty | None
+) -> Iterator[tuple[int, int, _Measures]]:
+    """Yield every entry with its measures."""
+    radii: CoefficientRadii | None = None
+    covariance: Array | None = None
+    if uncertainty is not None:
+        # The entries as given, unless rounding them has dropped a coefficient.
+        source = given if _sizes(given) == _sizes(transfer) else transfer
+        if uncertainty.is_spread:
+            covariance = uncertainty.spread(source)
+        else:
+            radii = uncertainty.radii(source)
+    counts = [
+        [len(p) for row in t for p in row] for t in (transfer.numerators, transfer.denominators)
+    ]
+    ends = np.cumsum([0, *counts[0], *counts[1]])
+    for i in range(transfer.output_count):
+        for j in range(transfer.input_count):
+            above, below = transfer.numerators[i][j], transfer.denominators[i][j]
+            plain = Metric([_norm(above)] * len(above), [_norm(below)] * len(below))
+            box = spread = None
+            if radii is not None:
+                box = Metric(radii.numerators[i][j], radii.denominators[i][j])
+            if covariance is not None:
+                k = i * transfer.input_count + j
+                places = [
+                    *range(ends[k], ends[k + 1]),
+                    *range(ends[len(counts[0]) + k], ends[len(counts[0]) + k + 1]),
+                ]
+                block = covariance[np.ix_(places, places)]
+                sizes = [Fraction(float(d)) for d in np.sqrt(np.diagonal(block))]
+                spread = Metric(sizes[: len(above)], sizes[len(above) :], block)
+            confidence = 0.0 if uncertainty is None else float(uncertainty.confidence or 0)
+            yield i, j, _Measures(plain, box, spread, confidence)
+
+
+def _sizes(transfer: TransferMatrix) -> list[int]:
+    tables = transfer.numerators, transfer.denominators
+    return [len(p) for table in tables for row in table for p in row]
+
+
+def _norm(polynomial: Sequence[Any]) -> Fraction:
+    """Return the 2-norm of coefficients, or 1 where all are zero."""
+    values = _exact(polynomial)
+    largest = max(abs(c) for c in values)
+    if not largest:
+        return Fraction(1)
+    squares = sum(float(c / largest) ** 2 for c in values)
+    return largest * Fraction(math.sqrt(squares))
+
+
+@dataclass(frozen=True, slots=True)
+class _Candidate:
+    """A factor that nearly cancels, with the searches that found it."""
+
+    plain: Trial
+    change: float
+    pair: tuple[Polynomial, Polynomial, Polynomial]
+    allowed: str | None
+    deviations: float | None
+    confidence: float | None
+
+
+class _Entry:
+    """One fraction: where the searches start, and what they find."""
+
+    def __init__(
+        self,
+        whole: list[Polynomial],
+        common: Polynomial,
+        rests: list[Polynomial],
+        measures: _Measures,
+        period: Any,
+        *,
+        exact: bool,
+    ) -> None:
+        self.whole, self.common, self.rests = whole, common, rests
+        self.measures, self.period, self.exact = measures, period, exact
+        self.search = NearDivisors(whole[0], whole[1], common, rests[0], rests[1])
+        self.roots = [self.search.root(measures.plain)]
+        for metric in (measures.box, measures.spread):
+            self.roots.append(np.zeros((0, 0)) if metric is None else self.search.root(metric))
+        self.zeros, self.poles = map(_all_roots, rests)
+
+    # Candidates
+
+    def candidates(self) -> list[_Candidate]:
+        """Return the near factors: each pair alone, then the nearest one of each degree."""
+        singles: list[_Candidate] = []
+        for start in self._starts():
+            found = self._settled(start)
+            if found is not None and not _is_known(found, singles):
+                singles.append(found)
+        singles.sort(key=lambda each: each.change)
+        joint: list[_Candidate] = []
+        missed = 0
+        for degree in range(2, self.search.degree_limit + 1):
+            if self._is_hopeless(degree) or missed > 1:
+                break
+            tried = [self._settled(start) for start in self._joint_starts(degree, singles)]
+            options = [each for each in tried if each is not None]
+            if not options:
+                missed += 1
+                continue
+            # What the uncertainty allows says more than what is nearest in coefficients.
+            best = min(options, key=lambda each: (each.allowed != "yes", each.change))
+            if not _is_known(best, singles):
+                joint.append(best)
+        return singles + joint
+
+    def _starts(self) -> Iterator[Polynomial]:
+        """Yield trial factors of degree one and two from poles and zeros that lie close."""
+        options: list[tuple[float, int, Polynomial]] = []
+
+        def offer(distance: float, factor: Polynomial) -> None:
+            options.append((distance, len(options), factor))
+
+        for p in self.poles[self.poles.imag >= 0]:
+            z = self.zeros[int(np.abs(self.zeros - p).argmin())]
+            size = abs(p) + abs(z) or 1.0
+            distance = abs(p - z) / size
+            middle = (Fraction(p.real) + Fraction(z.real)) / 2
+            if p.imag == 0 or (z.imag == 0 and self.zeros.size < 2):
+                offer(distance, (Fraction(1), -middle if z.imag == 0 else -Fraction(p.real)))
+            if p.imag > 0 and min(self.zeros.size, self.poles.size) > 1:
+                z = z.conjugate() if z.imag < 0 else z
+                height = (Fraction(p.imag) + Fraction(z.imag)) / 2
+                offer(distance, (Fraction(1), -2 * middle, middle**2 + height**2))
+        options.sort()
+        for _, _, factor in options[:_STARTS]:
+            yield self.search.scaled_factor(factor)
+        if self.measures.box is not None or self.measures.spread is not None:
+            # Fixed coefficients may hold a factor as it is.
+            for polynomial in self.rests:
+                for factor, _ in polynomials.factor(polynomial):
+                    if len(factor) - 1 <= min(2, self.search.degree_limit):
+                        yield self.search.scaled_factor(factor)
+
+    def _joint_starts(self, degree: int, singles: list[_Candidate]) -> Iterator[Polynomial]:
+        product: Polynomial = _ONE
+        for each in singles:
+            if len(product) + len(each.plain.h) - 2 <= degree:
+                product = polynomials.multiply(product, each.plain.h)
+        if len(product) - 1 == degree:
+            yield product
+        f, g = (np.array([float(c) for c in p]) for p in self.search.rests)
+        h = split(f, g, degree)[0]
+        if np.isfinite(h).all():
+            yield tuple(Fraction(float(c)) for c in h)
+
+    def _is_hopeless(self, degree: int) -> bool:
+        """Return whether no factor of this degree can be worth a line."""
+        whole = degree + len(self.common) - 1
+        if least_change(self.whole[0], self.whole[1], whole) <= NEAR:
+            return False
+        if self.measures.spread is not None:
+            return False
+        return self.measures.box is None or self._is_refused(degree)
+
+    def _is_refused(self, degree: int) -> bool:
+        assert self.measures.box is not None
+        whole = degree + len(self.common) - 1
+        return is_out_of_reach(
+            self.whole[0], self.whole[1], self.measures.box, whole, self.search.unit
+        )
+
+    def _settled(self, start: Polynomial) -> _Candidate | None:
+        """Return what a search from this start finds, if it is worth a line."""
+        search, measures = self.search, self.measures
+        plain = search.descend(start, self.roots[0])
+        pair = search.witness(plain.h, self.roots[0] @ plain.xi, measures.plain)
+        if pair is None:
+            return None
+        change = relative_change(self.whole, pair[1:])
+        degree = len(start) - 1
+        allowed = deviations = confidence = None
+        if measures.box is not None:
+            within = self._within(plain, start, measures.box)
+            allowed = "yes" if within else "no" if self._is_refused(degree) else "cannot tell"
+            pair = within or pair
+        if measures.spread is not None:
+            trials = [search.descend(h, self.roots[2]) for h in (plain.h, start)]
+            nearest = min(trials, key=lambda trial: trial.merit)
+            if nearest.is_met:
+                from scipy.special import chdtr
+
+                deviations = nearest.cost
+                confidence = float(chdtr(degree, deviations**2))
+                pair = (
+                    search.witness(nearest.h, self.roots[2] @ nearest.xi, measures.spread) or pair
+                )
+        likely = confidence is not None and confidence <= measures.confidence
+        if not (change <= NEAR or allowed == "yes" or likely):
+            return None
+        return _Candidate(plain, change, pair, allowed, deviations, confidence)
+
+    def _within(
+        self, plain: Trial, start: Polynomial, box: Metric
+    ) -> tuple[Polynomial, Polynomial, Polynomial] | None:
+        """Return an exact factor and pair within the box, if the search finds one."""
+        root = self.roots[1]
+        room = math.sqrt(sum(1 for w in (*box.f, *box.g) if w))
+        for h in (plain.h, start):
+            trial = self.search.descend(h, root)
+            # Within the box the 2-norm of the ratios is at most the root of their number.
+            if not trial.is_met or trial.cost > room * (1 + 1e-9):
+                continue
+            factor, delta, ratio = self.search.smallest_box(trial, box, root)
+            if ratio > 1 + 1e-9:
+                continue
+            pair = self.search.witness(factor, delta, box)
+            if pair is not None and _is_inside(self.whole, pair[1:], box):
+                return pair
+        return None
+
+    # Records
+
+    def record(self, output: int, input_: int, found: _Candidate) -> NearFactor:
+        """Return what is told of a candidate."""
+        factor, above, below = found.pair
+        shared = _all_roots(factor)
+        away_zeros, away_poles = (_nearest(r, shared) for r in (self.zeros, self.poles))
+        return NearFactor(
+            output=output,
+            input=input_,
+            poles=tuple(complex(self.poles[k]) for k in away_poles),
+            zeros=tuple(complex(self.zeros[k]) for k in away_zeros),
+            factor=factor,
+            change=found.change,
+            least_change=least_change(
+                self.whole[0], self.whole[1], len(factor) + len(self.common) - 2
+            ),
+            witness=TransferMatrix(
+                [[above]], [[below]], sampling_period=self.period, improper=True
+            ),
+            response_change=self._response_change(found.pair, away_zeros, away_poles),
+            stability=self._worst(away_poles),
+            allowed=found.allowed,
+            deviations=found.deviations,
+            confidence=found.confidence,
+        )
+
+    def _response_change(
+        self,
+        pair: tuple[Polynomial, Polynomial, Polynomial],
+        away_zeros: list[int],
+        away_poles: list[int],
+    ) -> ResponseChange:
+        """Return what dropping these zeros and poles does to the response."""
+        gain = float(self.rests[0][0] / self.rests[1][0])
+        whole = Factored(gain, self.zeros, self.poles)
+        dropped = Factored(1.0, self.zeros[away_zeros], self.poles[away_poles])
+        if all(
+            abs(roots.sum().imag) <= 1e-9 * np.abs(roots).sum()
+            for roots in (dropped.zeros, dropped.poles)
+        ):
+            kept = Factored(
+                gain, np.delete(self.zeros, away_zeros), np.delete(self.poles, away_poles)
+            )
+            return dropping_change(whole, kept, dropped, self.period)
+        # One of a complex pair cannot go alone: what is left is what the witness leaves.
+        divisor = polynomials.multiply(self.common, pair[0])
+        above, below = (polynomials.divide_exact(p, divisor) for p in pair[1:])
+        kept = Factored(float(above[0] / below[0]), _all_roots(above), _all_roots(below))
+        return dropping_change(whole, kept, None, self.period)
+
+    def _worst(self, places: list[int]) -> Stability:
+        """Return the worst stability of some poles."""
+        verdicts = {self._stability(complex(self.poles[k])) for k in places}
+        return next(word for word in _WORST if word in verdicts)
+
+    def _stability(self, pole: complex) -> Stability:
+        """Return what a mode at a pole does, as far as the uncertainty can tell."""
+        doubt = self._reach(pole)
+        if not self.exact:
+            return computed_stability(pole, self.period, max(doubt, root_doubt(pole)))
+        if doubt and computed_stability(pole, self.period, doubt) is Stability.CANNOT_TELL:
+            return Stability.CANNOT_TELL
+        multiplicities = dict(polynomials.factor(self.whole[1]))
+        # A companion form has one eigenvector for each eigenvalue, so a repeated pole is defective.
+        judged = judge(self.rests[1], self.period, lambda f: multiplicities[f] == 1)
+        return min(judged, key=lambda each: abs(each[0].value - pole))[2]
+
+    def _reach(self, pole: complex) -> float:
+        """Return how far the uncertainty of the denominator moves a pole, to first order."""
+        metric = self.measures.box or self.measures.spread
+        if metric is None:
+            return 0.0
+        below = self.whole[1]
+        powers = np.abs(pole) ** np.arange(len(below) - 1, -1, -1)
+        # For a spread twice the standard deviation, as if all coefficients moved together.
+        factor = 1.0 if self.measures.box is not None else 2.0
+        moved = factor * float(np.array([float(w) for w in metric.g]) @ powers)
+        slope = float(abs(np.polyval(np.polyder([float(c) for c in below]), pole)))
+        return float(moved / slope) if slope else math.inf if moved else 0.0
+
+
+def _all_roots(polynomial: Polynomial) -> Array:
+    """Return the roots as often as they occur."""
+    roots = polynomials.roots(polynomial) if len(polynomial) > 1 else ()
+    return np.array([r.value for r in roots for _ in range(r.multiplicity)], dtype=complex)
+
+
+def _nearest(values: Array, targets: Array) -> list[int]:
+    """Return which values lie nearest to the targets, as many, complex pairs together.
+
+    Where pairs leave no way to take as many, the last one is taken alone. Real ones come first.
+    """
+    groups: list[tuple[int, ...]] = []
+    upper = sorted(np.flatnonzero(values.imag > 0).tolist(), key=lambda k: str(values[k]))
+    lower = sorted(
+        np.flatnonzero(values.imag < 0).tolist(), key=lambda k: str(values[k].conjugate())
+    )
+    groups += [(int(k),) for k in np.flatnonzero(values.imag == 0)]
+    groups += list(zip(upper, lower, strict=True))
+
+    def distance(group: tuple[int, ...]) -> float:
+        return sum(float(np.abs(targets - values[k]).min()) for k in group)
+
+    # The cheapest choice of each size, group after group.
+    best: dict[int, tuple[float, list[tuple[int, ...]]]] = {0: (0.0, [])}
+    for group in groups:
+        own = distance(group)
+        for size, (cost, chosen) in sorted(best.items(), reverse=True):
+            grown = size + len(group)
+            if grown <= targets.size + 1 and (grown not in best or cost + own < best[grown][0]):
+                best[grown] = cost + own, [*chosen, group]
+    chosen = best[targets.size if targets.size in best else targets.size + 1][1]
+    taken = [k for group in chosen for k in group][: targets.size]
+    return sorted(taken, key=lambda k: (values[k].imag != 0, values[k].real, -values[k].imag))
+
+
+def _is_known(candidate: _Candidate, others: list[_Candidate]) -> bool:
+    """Return whether another candidate has the same factor, as far as that matters."""
+    h = np.array([float(c) for c in candidate.plain.h])
+    for other in others:
+        if len(other.plain.h) == h.size:
+            difference = np.abs(h - [float(c) for c in other.plain.h]).max()
+            if difference <= _SAME * float(np.abs(h).max()):
+                return True
+    return False
+
+
+def _is_inside(whole: Sequence[Polynomial], pair: Sequence[Polynomial], box: Metric) -> bool:
+    """Return whether a pair lies within the box, entry by entry, exactly."""
+    return all(
+        abs(changed - c) <= radius
+        for p, q, radii in zip(whole, pair, (box.f, box.g), strict=True)
+        for c, changed, radius in zip(p, q, radii, strict=True)
+    )
