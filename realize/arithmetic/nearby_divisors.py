@@ -64,7 +64,7 @@ _STEPS: Final = 40
 _HALVINGS: Final = 12
 """How often a step that does not lower the change is halved."""
 
-_GRID: Final = 2**400
+_GRID: Final = 2**240
 """Coefficients of h are kept to one part in this, in units where they are of size one."""
 
 _SINGULAR: Final = 2.0**-44
@@ -73,7 +73,11 @@ _SINGULAR: Final = 2.0**-44
 _MET: Final = 2.0**-40
 """Relative size of a remainder that counts as zero where no coefficient is free to take it up."""
 
-_SETTLED: Final = 1e-12
+_FAR: Final = 2**10
+"""Size of a coefficient of h, in units where those of the longer polynomial are level, at which a
+search is given up: it has lost its way."""
+
+_SETTLED: Final = 1e-7
 """Relative gain of a step below which the search ends."""
 
 _ROUNDS: Final = 12
@@ -171,6 +175,7 @@ class NearDivisors:
             for p, shift in zip((f_rest, g_rest), self.shifts, strict=True)
         ]
         self.flint = [polynomials.to_flint(p) for p in self.rests]
+        self.floats = [_floats(p) for p in self.rests]
         graded = _graded(common, -self.unit)
         self.convolutions = [
             convolution(_floats(graded), len(rest)) if len(common) > 1 else None
@@ -222,6 +227,8 @@ class NearDivisors:
         """
         point = self.point(start, root)
         for _ in range(_STEPS):
+            if max(abs(c) for c in point.h) > _FAR * max(map(abs, start)):
+                break
             better = self._shortened(point, root)
             if better is None:
                 break
@@ -235,9 +242,12 @@ class NearDivisors:
     def _shortened(self, point: Trial, root: Array) -> Trial | None:
         """Return the first of the step, its half, ... that lowers the merit."""
         step = point.step
+        if not np.isfinite(step).all() or not step.any():
+            return None
+        # Not further than the factor is large: the slope holds nearby only.
+        reach = max(float(abs(c)) for c in point.h)
+        step = step * min(1.0, reach / float(np.abs(step).max()))
         for _ in range(_HALVINGS):
-            if not np.isfinite(step).all() or not step.any():
-                return None
             trial = self.point(_moved(point.h, step), root)
             if trial.merit < point.merit:
                 return trial
@@ -292,16 +302,23 @@ class NearDivisors:
 
         The coefficient of x^j changes the remainder by -(x^j times the quotient) mod h.
         """
-        divisor = polynomials.to_flint(h)
         degree = len(h) - 1
         count = len(self.rests[0])
+        factor = _floats(h)
         slopes = []
-        for rest, change in zip(self.rests, (delta[:count], delta[count:]), strict=True):
-            quotient = divmod(polynomials.to_flint(_changed(rest, change)), divisor)[0]
-            u = _floats(polynomials.from_flint(quotient))[::-1]
+        for rest, change in zip(self.floats, (delta[:count], delta[count:]), strict=True):
+            size = rest.size - degree
+            # Division from the top; doubles do, since only the direction of a step depends on it.
+            u = scipy.linalg.solve_triangular(
+                convolution(factor, size)[:size],
+                (rest + change)[:size],
+                lower=True,
+                unit_diagonal=True,
+                check_finite=False,
+            )[::-1]
             slopes.append(
                 -np.column_stack(
-                    [system.powers[:, j : j + u.size] @ u for j in range(degree - 1, -1, -1)]
+                    [system.powers[:, j : j + size] @ u for j in range(degree - 1, -1, -1)]
                 )
             )
         return np.vstack(slopes) / system.units[:, None]

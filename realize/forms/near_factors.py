@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any, Final
@@ -41,8 +41,9 @@ as near, uncertainty or none. A heuristic for what is worth a line; it decides n
 _STARTS: Final = 40
 """Pairs at most from which a search starts; the nearest come first."""
 
-_SAME: Final = 1e-9
-"""Relative difference of coefficients below which two factors found are one."""
+_SAME: Final = 1e-3
+"""Relative difference of coefficients, and of changes, below which two searches have found one
+factor. Where the change hardly depends on the factor they end some way apart."""
 
 _ONE: Polynomial = (Fraction(1),)
 _WORST: Final = (Stability.UNSTABLE, Stability.MARGINAL, Stability.CANNOT_TELL, Stability.STABLE)
@@ -191,42 +192,58 @@ class _Entry:
             if found is not None and not _is_known(found, singles):
                 singles.append(found)
         singles.sort(key=lambda each: each.change)
-        joint: list[_Candidate] = []
+        best: dict[int, _Candidate] = {}
         missed = 0
         for degree in range(2, self.search.degree_limit + 1):
-            if self._is_hopeless(degree) or missed > 1:
+            if missed > 1 or self._is_hopeless(degree):
                 break
-            tried = [self._settled(start) for start in self._joint_starts(degree, singles)]
-            options = [each for each in tried if each is not None]
-            if not options:
-                missed += 1
-                continue
-            # What the uncertainty allows says more than what is nearest in coefficients.
-            best = min(options, key=lambda each: (each.allowed != "yes", each.change))
-            if not _is_known(best, singles):
-                joint.append(best)
-        return singles + joint
+            missed += self._improve(best, degree, self._joint_starts(degree, singles))
+        # A common factor of higher degree holds those of lower degree.
+        for degree in sorted(best, reverse=True):
+            for lower in (degree - 1, degree - 2):
+                found = best.get(lower)
+                if lower > 1 and (found is None or _rank(best[degree]) < _rank(found)):
+                    self._improve(best, lower, self._parts(best[degree].plain.h, lower))
+        return singles + [each for each in best.values() if not _is_known(each, singles)]
+
+    def _improve(
+        self, best: dict[int, _Candidate], degree: int, starts: Iterable[Polynomial]
+    ) -> bool:
+        """Search from some starts and keep the best factor; return whether nothing was found."""
+        tried = [self._settled(start) for start in starts]
+        options = [each for each in (*tried, best.get(degree)) if each is not None]
+        if options:
+            best[degree] = min(options, key=_rank)
+        return not options
+
+    def _parts(self, h: Polynomial, degree: int) -> list[Polynomial]:
+        """Return the divisor of a factor of this degree that costs least, if there is one."""
+        roots = np.roots([float(c) for c in h]).astype(complex)
+        away = len(h) - 1 - degree
+        drops = roots[roots.imag == 0] if away == 1 else roots[roots.imag > 0]
+        parts = []
+        for root in drops.tolist():
+            kept = roots[(roots != root) & (roots != np.conj(root))]
+            parts.append(tuple(Fraction(float(c)) for c in np.poly(kept).real))
+        parts = [part for part in parts if len(part) - 1 == degree]
+        parts.sort(key=lambda part: self.search.point(part, self.roots[0]).merit)
+        return parts[:1]
 
     def _starts(self) -> Iterator[Polynomial]:
         """Yield trial factors of degree one and two from poles and zeros that lie close."""
-        options: list[tuple[float, int, Polynomial]] = []
-
-        def offer(distance: float, factor: Polynomial) -> None:
-            options.append((distance, len(options), factor))
-
-        for p in self.poles[self.poles.imag >= 0]:
-            z = self.zeros[int(np.abs(self.zeros - p).argmin())]
-            size = abs(p) + abs(z) or 1.0
-            distance = abs(p - z) / size
-            middle = (Fraction(p.real) + Fraction(z.real)) / 2
-            if p.imag == 0 or (z.imag == 0 and self.zeros.size < 2):
-                offer(distance, (Fraction(1), -middle if z.imag == 0 else -Fraction(p.real)))
-            if p.imag > 0 and min(self.zeros.size, self.poles.size) > 1:
-                z = z.conjugate() if z.imag < 0 else z
-                height = (Fraction(p.imag) + Fraction(z.imag)) / 2
-                offer(distance, (Fraction(1), -2 * middle, middle**2 + height**2))
-        options.sort()
-        for _, _, factor in options[:_STARTS]:
+        options: list[tuple[float, Polynomial]] = []
+        for one, two in ((self.poles, self.zeros), (self.zeros, self.poles)):
+            for p in one[one.imag >= 0]:
+                z = complex(two[int(np.abs(two - p).argmin())])
+                distance = abs(p - z) / (abs(p) + abs(z) or 1.0)
+                middle = (Fraction(p.real) + Fraction(z.real)) / 2
+                height = (Fraction(p.imag) + Fraction(abs(z.imag))) / 2
+                if p.imag == 0 or z.imag == 0:
+                    options.append((distance, (Fraction(1), -middle)))
+                if height and self.search.degree_limit > 1:
+                    options.append((distance, (Fraction(1), -2 * middle, middle**2 + height**2)))
+        options = sorted(set(options))
+        for _, factor in options[:_STARTS]:
             yield self.search.scaled_factor(factor)
         if self.measures.box is not None or self.measures.spread is not None:
             # Fixed coefficients may hold a factor as it is.
@@ -317,7 +334,8 @@ class _Entry:
     def record(self, output: int, input_: int, found: _Candidate) -> NearFactor:
         """Return what is told of a candidate."""
         factor, above, below = found.pair
-        shared = _all_roots(factor)
+        # Only to tell which poles and zeros are meant, for which doubles do.
+        shared = np.roots([float(c) for c in factor]).astype(complex)
         away_zeros, away_poles = (_nearest(r, shared) for r in (self.zeros, self.poles))
         return NearFactor(
             output=output,
@@ -394,6 +412,11 @@ class _Entry:
         return float(moved / slope) if slope else math.inf if moved else 0.0
 
 
+def _rank(candidate: _Candidate) -> tuple[bool, float]:
+    """Order: what the uncertainty allows first, since that says more than the size of a change."""
+    return candidate.allowed != "yes", candidate.change
+
+
 def _all_roots(polynomial: Polynomial) -> Array:
     """Return the roots as often as they occur."""
     roots = polynomials.roots(polynomial) if len(polynomial) > 1 else ()
@@ -433,10 +456,12 @@ def _is_known(candidate: _Candidate, others: list[_Candidate]) -> bool:
     """Return whether another candidate has the same factor, as far as that matters."""
     h = np.array([float(c) for c in candidate.plain.h])
     for other in others:
-        if len(other.plain.h) == h.size:
-            difference = np.abs(h - [float(c) for c in other.plain.h]).max()
-            if difference <= _SAME * float(np.abs(h).max()):
-                return True
+        if len(other.plain.h) != h.size:
+            continue
+        difference = np.abs(h - [float(c) for c in other.plain.h]).max()
+        gap = abs(candidate.change - other.change)
+        if difference <= _SAME * np.abs(h).max() and gap <= _SAME * candidate.change:
+            return True
     return False
 
 

@@ -54,21 +54,26 @@ def _searched(model: Realization, reduced: Realization) -> ResponseChange:
     def size(frequency: float) -> float:
         return _norm(first.at(first.beside(_point(frequency, period))))
 
-    return _highest_of(change, size, grid)
+    return _highest_of(
+        change, grid, np.array([change(w) for w in grid]), size, np.array([size(w) for w in grid])
+    )
 
 
 def _highest_of(
-    change: Callable[[float], float], size: Callable[[float], float], grid: Array
+    change: Callable[[float], float],
+    grid: Array,
+    changes: Array,
+    size: Callable[[float], float],
+    sizes: Array,
 ) -> ResponseChange:
     """Return where a change is largest, about the highest points of a grid of frequencies."""
-    changes = np.array([change(frequency) for frequency in grid])
     largest, where = float(changes.max()), float(grid[int(changes.argmax())])
     for k in np.argsort(changes)[::-1][:_PEAKS]:
         low, high = grid[max(k - 1, 0)], grid[min(k + 1, len(grid) - 1)]
         frequency, value = _highest(change, float(low), float(high))
         if value > largest:
             largest, where = value, frequency
-    whole = max(size(frequency) for frequency in (*grid, where))
+    whole = max(float(sizes.max()), size(where))
     return ResponseChange(
         size=largest,
         relative=largest / whole if whole else 0.0,
@@ -84,12 +89,13 @@ class Factored:
     zeros: Array
     poles: Array
 
-    def at(self, point: complex) -> complex:
-        """Return the value; factors are paired, so that products stay in range."""
+    def at(self, points: Array) -> Array:
+        """Return the values; factors are paired, so that products stay in range."""
         paired = min(self.zeros.size, self.poles.size)
-        value = self.gain * np.prod((point - self.zeros[:paired]) / (point - self.poles[:paired]))
-        rest = np.prod(point - self.zeros[paired:]) / np.prod(point - self.poles[paired:])
-        return complex(value * rest)
+        above, below = points[:, None] - self.zeros, points[:, None] - self.poles
+        value = self.gain * np.prod(above[:, :paired] / below[:, :paired], axis=1)
+        rest = np.prod(above[:, paired:], axis=1) / np.prod(below[:, paired:], axis=1)
+        return np.asarray(value * rest)
 
 
 def dropping_change(
@@ -116,35 +122,44 @@ def dropping_change(
             return ResponseChange(size=math.inf, relative=math.inf, frequency=abs(where))
     grid = _frequencies(whole.poles, None if period is None else float(period))
 
-    def beside(frequency: float) -> complex:
-        point = _point(frequency, period)
-        return point + 1e-9 * max(abs(point), 1e-300) if (whole.poles == point).any() else point
+    def points(frequencies: Array) -> Array:
+        found = np.array([_point(float(w), period) for w in frequencies])
+        on = (found[:, None] == whole.poles).any(axis=1)
+        return np.where(on, found + 1e-9 * np.maximum(np.abs(found), 1e-300), found)
 
-    def size(frequency: float) -> float:
-        return _finite(whole.at(beside(frequency)))
+    def sizes(frequencies: Array) -> Array:
+        return _finite(whole.at(points(frequencies)))
 
-    def change(frequency: float, factor: float) -> float:
-        point = beside(frequency)
+    def changes(frequencies: Array, factor: float) -> Array:
+        at = points(frequencies)
         if dropped is None:
-            return _finite(whole.at(point) - kept.at(point))
-        below = np.prod(point - dropped.poles)
-        moved = np.prod(point - dropped.zeros) - factor * below
-        return _finite(kept.at(point) * complex(moved / below))
+            return _finite(whole.at(at) - kept.at(at))
+        below = np.prod(at[:, None] - dropped.poles, axis=1)
+        moved = np.prod(at[:, None] - dropped.zeros, axis=1) - factor * below
+        return _finite(kept.at(at) * (moved / below))
+
+    def found(factor: float) -> ResponseChange:
+        return _highest_of(
+            lambda w: float(changes(np.array([w]), factor)[0]),
+            grid,
+            changes(grid, factor),
+            lambda w: float(sizes(np.array([w]))[0]),
+            sizes(grid),
+        )
 
     factors = [1.0]
     with np.errstate(all="ignore"):
         if dropped is not None:
-            level = dropped.at(0.0 if period is None else 1.0).real
+            level = float(dropped.at(np.array([0.0 if period is None else 1.0]))[0].real)
             if math.isfinite(level) and level:
                 factors.append(level)
-        found = [_highest_of(lambda w, k=k: change(w, k), size, grid) for k in factors]  # type: ignore[misc]
-    return min(found, key=lambda each: each.size)
+        return min(map(found, factors), key=lambda each: each.size)
 
 
-def _finite(value: complex) -> float:
-    """Return the modulus; 0.0 where doubles do not reach, so that it is passed over."""
-    size = float(abs(value))
-    return size if math.isfinite(size) else 0.0
+def _finite(values: Array) -> Array:
+    """Return the moduli; 0.0 where doubles do not reach, so that it is passed over."""
+    sizes = np.abs(values)
+    return np.where(np.isfinite(sizes), sizes, 0.0)
 
 
 class _Response:
