@@ -402,9 +402,11 @@ class NearFactor:
     factor : tuple of Fraction
         Monic, descending powers: the factor that `witness` has more in common.
     change : float
-        Relative size of the smallest change found that makes the factor common: changes of
-        numerator and denominator, each over the norm of its coefficients, as one 2-norm. A local
-        minimum, all coefficients free.
+        Relative size of the smallest change found that makes the factor common: the change of
+        each coefficient over the size at which it counts as large (its own; where it is zero or
+        small by accident, what its neighbours call for), as a root mean square for the numerator
+        and for the denominator, then as one 2-norm. A local minimum, all coefficients free. It
+        depends neither on the unit of time nor on the gain.
     least_change : float
         No smaller change makes a common factor of this degree, whichever it is. Zero where
         doubles cannot tell.

@@ -53,7 +53,9 @@ __all__ = [
     "Trial",
     "is_out_of_reach",
     "least_change",
-    "relative_change",
+    "level_weights",
+    "near_float",
+    "size_of_change",
 ]
 
 Array = np.ndarray[Any, Any]
@@ -72,6 +74,9 @@ _SINGULAR: Final = 2.0**-44
 
 _MET: Final = 2.0**-40
 """Relative size of a remainder that counts as zero where no coefficient is free to take it up."""
+
+_FREE: Final = 2.0**40
+"""Weight, over the largest coefficient, beyond which more freedom changes nothing."""
 
 _FAR: Final = 2**10
 """Size of a coefficient of h, in units where those of the longer polynomial are level, at which a
@@ -191,8 +196,9 @@ class NearDivisors:
 
     def weights(self, metric: Metric) -> list[Array]:
         """Return the weights of both sides in scaled coefficients, as doubles."""
+        # Beyond this a coefficient is as free as can be.
         return [
-            _floats(_scaled(_graded(tuple(w), -self.unit), -shift))
+            np.minimum(_floats(_scaled(_graded(tuple(w), -self.unit), -shift)), _FREE)
             for w, shift in zip((metric.f, metric.g), self.shifts, strict=True)
         ]
 
@@ -499,18 +505,21 @@ class NearDivisors:
 # Lower bounds
 
 
-def least_change(f: Polynomial, g: Polynomial, degree: int) -> float:
-    """Return a lower bound of the relative change that gives a common factor of this degree.
+def least_change(f: Polynomial, g: Polynomial, metric: Metric, degree: int, unit: int) -> float:
+    """Return a lower bound of the size of a change that gives a common factor of this degree.
 
-    The change is measured as by `relative_change`. The smallest singular value is lowered by the
-    rounding floor of its computation.
+    By sigma_min(S_k(f, g)) <= ||S_k(df, dg)|| in the Frobenius norm, in the scaled variable. The
+    singular value is lowered by the rounding floor of its computation.
     """
-    first, second = (_normed(p) for p in (f, g))
+    (first, first_weights), (second, second_weights) = _levelled(f, g, metric, unit)
     table = sylvester(first, second, degree)
-    least = float(np.linalg.svd(table, compute_uv=False)[-1])
-    least -= rule.rounding_floor(len(table), float(np.linalg.norm(table)))
-    columns = max(first.size, second.size) - degree
-    return float(max(least, 0.0) / math.sqrt(columns))
+    least = _least_singular(table)
+    # A change of size one has entries up to the weights, each in as many columns.
+    largest = max(
+        math.sqrt(second.size - degree) * float(first_weights.max()),
+        math.sqrt(first.size - degree) * float(second_weights.max()),
+    )
+    return least / largest
 
 
 def is_out_of_reach(f: Polynomial, g: Polynomial, metric: Metric, degree: int, unit: int) -> bool:
@@ -519,6 +528,14 @@ def is_out_of_reach(f: Polynomial, g: Polynomial, metric: Metric, degree: int, u
     S_k(f, g) keeps full rank when its smallest singular value exceeds the norm of S_k of the
     radii, which bounds that of every S_k(df, dg). Measured in the scaled variable.
     """
+    (first, first_radii), (second, second_radii) = _levelled(f, g, metric, unit)
+    least = _least_singular(sylvester(first, second, degree))
+    reach = float(np.linalg.norm(sylvester(first_radii, second_radii, degree), 2))
+    return bool(least > reach * (1 + 1e-10))
+
+
+def _levelled(f: Polynomial, g: Polynomial, metric: Metric, unit: int) -> list[tuple[Array, Array]]:
+    """Return coefficients and weights of both in the scaled variable, of size about one."""
     sides = []
     for p, weights in ((f, metric.f), (g, metric.g)):
         graded = _graded(p, -unit)
@@ -529,26 +546,72 @@ def is_out_of_reach(f: Polynomial, g: Polynomial, metric: Metric, degree: int, u
                 _floats(_scaled(_graded(tuple(weights), -unit), shift)),
             )
         )
-    table = sylvester(sides[0][0], sides[1][0], degree)
-    radii = sylvester(sides[0][1], sides[1][1], degree)
+    return sides
+
+
+def _least_singular(table: Array) -> float:
+    """Return a lower bound of the smallest singular value."""
     least = float(np.linalg.svd(table, compute_uv=False)[-1])
-    least -= rule.rounding_floor(len(table), float(np.linalg.norm(table)))
-    return bool(least > float(np.linalg.norm(radii, 2)) * (1 + 1e-10))
+    least -= float(rule.rounding_floor(len(table), float(np.linalg.norm(table))))
+    return max(least, 0.0)
 
 
-def relative_change(original: Sequence[Polynomial], changed: Sequence[Polynomial]) -> float:
-    """Return the change of two polynomials, each over its norm, as one 2-norm."""
-    parts = []
-    for p, q in zip(original, changed, strict=True):
-        largest = max(abs(c) for c in p)
-        norm = float(np.linalg.norm([float(c / largest) for c in p]))
-        difference = [(b - a) / largest for a, b in zip(p, q, strict=True)]
-        top = max(abs(d) for d in difference)
-        if top:
-            parts.append(
-                float(top) * float(np.linalg.norm([float(d / top) for d in difference])) / norm
-            )
-    return math.hypot(*parts)
+def size_of_change(
+    original: Sequence[Polynomial], changed: Sequence[Polynomial], metric: Metric
+) -> float:
+    """Return the 2-norm of the changes of two polynomials, each over its weight."""
+    ratios = [
+        (after - before) / weight
+        for p, q, weights in zip(original, changed, (metric.f, metric.g), strict=True)
+        for before, after, weight in zip(p, q, weights, strict=True)
+        if after != before
+    ]
+    largest = max(map(abs, ratios), default=Fraction(0))
+    if not largest:
+        return 0.0
+    return near_float(largest) * float(np.linalg.norm([float(r / largest) for r in ratios]))
+
+
+def level_weights(polynomial: Polynomial) -> list[Fraction]:
+    """Return the size that a coefficient has to count as large, for each coefficient.
+
+    On a logarithmic scale, the upper convex hull of the sizes (the Newton polygon, whose slopes
+    are the sizes of the roots): the size itself for most coefficients, what its neighbours call
+    for where one is zero or small by accident. The last slope goes on where the last coefficients
+    are zero. Times the root of the number of coefficients, so that a change of all by one part in
+    a thousand of these sizes has the size 1e-3. Neither the unit of time nor roots of very
+    different sizes bend this measure.
+    """
+    points = [(k, _log2(c)) for k, c in enumerate(polynomial) if c]
+    if not points:
+        return [Fraction(1)] * len(polynomial)
+    hull: list[tuple[int, float]] = []
+    for k, height in points:
+        while len(hull) > 1 and _is_below(hull[-2], hull[-1], (k, height)):
+            hull.pop()
+        hull.append((k, height))
+    ends = hull if len(hull) > 1 else [hull[0], (hull[0][0] + 1, hull[0][1])]
+    heights = np.interp(np.arange(len(polynomial)), [k for k, _ in ends], [h for _, h in ends])
+    (before, low), (last, high) = ends[-2:]
+    for k in range(last + 1, len(polynomial)):
+        heights[k] = high + (k - last) * (high - low) / (last - before)
+    root = Fraction(math.sqrt(len(polynomial)))
+    sizes = dict(points)
+    return [
+        root * (abs(c) if c and sizes[k] >= height else _power_of_two(float(height)))
+        for k, (c, height) in enumerate(zip(polynomial, heights, strict=True))
+    ]
+
+
+def _is_below(left: tuple[int, float], middle: tuple[int, float], right: tuple[int, float]) -> bool:
+    """Return whether the middle point lies on or below the line between its neighbours."""
+    run, rise = right[0] - left[0], right[1] - left[1]
+    return (middle[1] - left[1]) * run <= rise * (middle[0] - left[0])
+
+
+def _power_of_two(exponent: float) -> Fraction:
+    whole = math.floor(exponent)
+    return Fraction(2) ** whole * Fraction(2.0 ** (exponent - whole))
 
 
 # Small helpers
@@ -565,6 +628,8 @@ def _unit(polynomial: Polynomial) -> int:
 
 
 def _log2(number: Fraction) -> float:
+    if not number:
+        return -math.inf
     return math.log2(abs(number.numerator)) - math.log2(number.denominator)
 
 
@@ -588,14 +653,13 @@ def _changed(polynomial: Polynomial, change: Array) -> Polynomial:
     return tuple(c + Fraction(float(d)) for c, d in zip(polynomial, change, strict=True))
 
 
+def near_float(number: Fraction) -> float:
+    """Return the nearest double; an infinity where there is none."""
+    return float(number) if _log2(number) < 1023 else math.inf if number > 0 else -math.inf
+
+
 def _floats(polynomial: Iterable[Fraction]) -> Array:
-    return np.array([float(c) for c in polynomial])
-
-
-def _normed(polynomial: Polynomial) -> Array:
-    largest = max(abs(c) for c in polynomial)
-    values = _floats(c / largest for c in polynomial)
-    return values / float(np.linalg.norm(values))
+    return np.array([near_float(c) for c in polynomial])
 
 
 def _padded(remainder: Any, degree: int) -> list[Fraction]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Any, Final
 
@@ -18,7 +18,9 @@ from realize.arithmetic.nearby_divisors import (
     Trial,
     is_out_of_reach,
     least_change,
-    relative_change,
+    level_weights,
+    near_float,
+    size_of_change,
 )
 from realize.arithmetic.path import SharedFactor
 from realize.forms.response import Factored, dropping_change
@@ -117,7 +119,7 @@ def _entries(
     for i in range(transfer.output_count):
         for j in range(transfer.input_count):
             above, below = transfer.numerators[i][j], transfer.denominators[i][j]
-            plain = Metric([_norm(above)] * len(above), [_norm(below)] * len(below))
+            plain = Metric(level_weights(_exact(above)), level_weights(_exact(below)))
             box = spread = None
             if radii is not None:
                 box = Metric(radii.numerators[i][j], radii.denominators[i][j])
@@ -137,16 +139,6 @@ def _entries(
 def _sizes(transfer: TransferMatrix) -> list[int]:
     tables = transfer.numerators, transfer.denominators
     return [len(p) for table in tables for row in table for p in row]
-
-
-def _norm(polynomial: Sequence[Any]) -> Fraction:
-    """Return the 2-norm of coefficients, or 1 where all are zero."""
-    values = _exact(polynomial)
-    largest = max(abs(c) for c in values)
-    if not largest:
-        return Fraction(1)
-    squares = sum(float(c / largest) ** 2 for c in values)
-    return largest * Fraction(math.sqrt(squares))
 
 
 @dataclass(frozen=True, slots=True)
@@ -266,12 +258,16 @@ class _Entry:
 
     def _is_hopeless(self, degree: int) -> bool:
         """Return whether no factor of this degree can be worth a line."""
-        whole = degree + len(self.common) - 1
-        if least_change(self.whole[0], self.whole[1], whole) <= NEAR:
+        if self._least_change(degree) <= NEAR:
             return False
         if self.measures.spread is not None:
             return False
         return self.measures.box is None or self._is_refused(degree)
+
+    def _least_change(self, degree: int) -> float:
+        whole = degree + len(self.common) - 1
+        plain, unit = self.measures.plain, self.search.unit
+        return least_change(self.whole[0], self.whole[1], plain, whole, unit)
 
     def _is_refused(self, degree: int) -> bool:
         assert self.measures.box is not None
@@ -287,7 +283,7 @@ class _Entry:
         pair = search.witness(plain.h, self.roots[0] @ plain.xi, measures.plain)
         if pair is None:
             return None
-        change = relative_change(self.whole, pair[1:])
+        change = size_of_change(self.whole, pair[1:], measures.plain)
         degree = len(start) - 1
         allowed = deviations = confidence = None
         if measures.box is not None:
@@ -344,9 +340,7 @@ class _Entry:
             zeros=tuple(complex(self.zeros[k]) for k in away_zeros),
             factor=factor,
             change=found.change,
-            least_change=least_change(
-                self.whole[0], self.whole[1], len(factor) + len(self.common) - 2
-            ),
+            least_change=self._least_change(len(factor) - 1),
             witness=TransferMatrix(
                 [[above]], [[below]], sampling_period=self.period, improper=True
             ),
@@ -364,22 +358,24 @@ class _Entry:
         away_poles: list[int],
     ) -> ResponseChange:
         """Return what dropping these zeros and poles does to the response."""
-        gain = float(self.rests[0][0] / self.rests[1][0])
-        whole = Factored(gain, self.zeros, self.poles)
+        # The gain may be out of range of a double, so it comes last.
+        gain = self.rests[0][0] / self.rests[1][0]
+        whole = Factored(1.0, self.zeros, self.poles)
         dropped = Factored(1.0, self.zeros[away_zeros], self.poles[away_poles])
-        if all(
-            abs(roots.sum().imag) <= 1e-9 * np.abs(roots).sum()
-            for roots in (dropped.zeros, dropped.poles)
-        ):
+        if _is_real(dropped.zeros) and _is_real(dropped.poles):
             kept = Factored(
-                gain, np.delete(self.zeros, away_zeros), np.delete(self.poles, away_poles)
+                1.0, np.delete(self.zeros, away_zeros), np.delete(self.poles, away_poles)
             )
-            return dropping_change(whole, kept, dropped, self.period)
-        # One of a complex pair cannot go alone: what is left is what the witness leaves.
-        divisor = polynomials.multiply(self.common, pair[0])
-        above, below = (polynomials.divide_exact(p, divisor) for p in pair[1:])
-        kept = Factored(float(above[0] / below[0]), _all_roots(above), _all_roots(below))
-        return dropping_change(whole, kept, None, self.period)
+            change = dropping_change(whole, kept, dropped, self.period)
+        else:
+            # One of a complex pair cannot go alone: what is left is what the witness leaves.
+            divisor = polynomials.multiply(self.common, pair[0])
+            above, below = (polynomials.divide_exact(p, divisor) for p in pair[1:])
+            share = near_float(above[0] / below[0] / gain)
+            kept = Factored(share, _all_roots(above), _all_roots(below))
+            change = dropping_change(whole, kept, None, self.period)
+        size = change.size * near_float(abs(gain)) if change.size else 0.0
+        return replace(change, size=size)
 
     def _worst(self, places: list[int]) -> Stability:
         """Return the worst stability of some poles."""
@@ -403,13 +399,19 @@ class _Entry:
         metric = self.measures.box or self.measures.spread
         if metric is None:
             return 0.0
-        below = self.whole[1]
+        largest = max(abs(c) for c in self.whole[1])
+        below = [float(c / largest) for c in self.whole[1]]
         powers = np.abs(pole) ** np.arange(len(below) - 1, -1, -1)
         # For a spread twice the standard deviation, as if all coefficients moved together.
         factor = 1.0 if self.measures.box is not None else 2.0
-        moved = factor * float(np.array([float(w) for w in metric.g]) @ powers)
-        slope = float(abs(np.polyval(np.polyder([float(c) for c in below]), pole)))
+        moved = factor * float(np.array([near_float(w / largest) for w in metric.g]) @ powers)
+        slope = float(abs(np.polyval(np.polyder(below), pole)))
         return float(moved / slope) if slope else math.inf if moved else 0.0
+
+
+def _is_real(roots: Array) -> bool:
+    """Return whether complex roots come in pairs."""
+    return bool(abs(roots.sum().imag) <= 1e-9 * np.abs(roots).sum())
 
 
 def _rank(candidate: _Candidate) -> tuple[bool, float]:
