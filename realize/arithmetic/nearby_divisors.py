@@ -73,7 +73,12 @@ _SINGULAR: Final = 2.0**-44
 """Singular value over the largest one below which fixed coefficients leave a direction no room."""
 
 _MET: Final = 2.0**-40
-"""Relative size of a remainder that counts as zero where no coefficient is free to take it up."""
+"""Size of a remainder, over that of all, that is noise where no coefficient is free to take it up
+but those that others need."""
+
+_RIGID: Final = 2.0**-120
+"""Size of a remainder that counts as zero where no coefficient enters at all; remainders are
+exact, so this is a question of how far a search goes on."""
 
 _FREE: Final = 2.0**40
 """Weight, over the largest coefficient, beyond which more freedom changes nothing."""
@@ -126,8 +131,9 @@ class Trial:
         Monic.
     cost : float
         Size of the smallest change that makes it common.
-    unmet : float
-        Relative size of what is left where no coefficient is free.
+    unmet : pair of float
+        Remainders where no coefficient is free to take them up: those of conditions that none
+        enters at all, and those of conditions that depend on others; 0.0 where they are noise.
     xi : array
         That change, in the coordinates of the metric.
     step : array
@@ -136,19 +142,19 @@ class Trial:
 
     h: Polynomial
     cost: float
-    unmet: float
+    unmet: tuple[float, float]
     xi: Array
     step: Array
 
     @property
     def is_met(self) -> bool:
         """Whether the conditions that no coefficient is free to take up hold."""
-        return self.unmet <= _MET
+        return not any(self.unmet)
 
     @property
-    def merit(self) -> float:
-        """Cost, and a penalty for conditions that are not met."""
-        return self.cost + (self.unmet / _MET if self.unmet > _MET else 0.0)
+    def merit(self) -> tuple[float, float, float]:
+        """What a search lowers: what is not met first, then the cost."""
+        return (*self.unmet, self.cost)
 
 
 class NearDivisors:
@@ -238,8 +244,8 @@ class NearDivisors:
             better = self._shortened(point, root)
             if better is None:
                 break
-            gain = point.merit - better.merit
-            settled = gain <= _SETTLED * point.merit
+            gain = point.cost - better.cost
+            settled = point.is_met and gain <= _SETTLED * point.cost
             point = better
             if settled:
                 break
@@ -263,34 +269,35 @@ class NearDivisors:
     def point(self, h: Polynomial, root: Array) -> Trial:
         """Return the least change for a fixed factor, and the Gauss-Newton step of the factor."""
         system = self._linear(h, root)
-        left, values, right = np.linalg.svd(system.whole, full_matrices=True)
-        largest = max(float(values.max(initial=0.0)), 1e-300)
-        kept = int(np.count_nonzero(values > _SINGULAR * largest))
+        rigid = ~system.whole.any(axis=1)
+        whole, target = system.whole[~rigid], system.target[~rigid]
+        left, values, right = np.linalg.svd(whole, full_matrices=True)
+        kept = int(np.count_nonzero(values > _SINGULAR * values.max(initial=0.0)))
         inside, outside = left[:, :kept], left[:, kept:]
-        unmet = outside.T @ system.target
-        costs = (inside.T @ system.target) / values[:kept]
+        costs = (inside.T @ target) / values[:kept]
         xi = -(right[:kept].T @ costs)
         slope = self._slope(h, root @ xi, system)
-        rates = (inside.T @ slope) / values[:kept, None]
+        hard = np.concatenate([system.target[rigid], outside.T @ target])
+        hard_slope = np.vstack([slope[rigid], outside.T @ slope[~rigid]])
+        unmet = [float(np.linalg.norm(part)) for part in np.split(hard, [int(rigid.sum())])]
+        noise = _RIGID, _MET * float(np.linalg.norm(target))
+        rates = (inside.T @ slope[~rigid]) / values[:kept, None]
         return Trial(
             h=h,
             cost=float(np.linalg.norm(costs)),
-            unmet=float(np.linalg.norm(unmet)),
+            unmet=(
+                unmet[0] if unmet[0] > noise[0] else 0.0,
+                unmet[1] if unmet[1] > noise[1] else 0.0,
+            ),
             xi=xi,
-            step=_constrained(rates, -costs, outside.T @ slope, -unmet),
+            step=_constrained(rates, -costs, hard_slope, -hard),
         )
 
     def _linear(self, h: Polynomial, root: Array) -> _System:
         """Return the conditions for a fixed factor, each side in units of its own."""
         divisor = polynomials.to_flint(h)
         degree = len(h) - 1
-        tail = _floats(h[1:])
-        powers = np.zeros((degree, max(len(p) for p in self.rests)))
-        power = np.zeros(degree)
-        power[-1] = 1.0
-        for k in range(powers.shape[1]):
-            powers[:, k] = power
-            power = np.append(power[1:], 0.0) - power[0] * tail
+        powers = _powers(h, max(len(p) for p in self.rests))
         first, second = (len(rest) for rest in self.rests)
         halves = [powers[:, first - 1 :: -1] @ root[:first]]
         halves.append(powers[:, second - 1 :: -1] @ root[first:])
@@ -348,6 +355,10 @@ class NearDivisors:
         ratios = changes[free] / weights[free, None]
         h, delta = point.h, root @ point.xi
         best = float(np.abs(ratios @ point.xi).max(initial=0.0))
+        if best > 1.0:
+            settled = self._program(h, delta, root, ratios, 0.0)
+            if settled is not None and settled[2] < best:
+                delta, best = root @ settled[0], settled[2]
         reach = 10.0
         for _ in range(_ROUNDS):
             if best <= 1.0:
@@ -355,12 +366,11 @@ class NearDivisors:
                 break
             moved = self._program(h, delta, root, ratios, reach)
             trial = None if moved is None else _moved(h, moved[1])
-            settled = None if trial is None else self._program(trial, delta, root, ratios, 0.0)
-            if trial is not None and settled is not None and settled[2] < best:
-                gain = best - settled[2]
+            settled = None
+            if trial is not None and self.point(trial, root).is_met:
+                settled = self._program(trial, delta, root, ratios, 0.0)
+            if trial is not None and settled is not None and settled[2] < best * (1 - 1e-6):
                 h, delta, best = trial, root @ settled[0], settled[2]
-                if gain <= 1e-6 * best:
-                    break
             else:
                 reach /= 8
         return h, delta, best
@@ -384,14 +394,17 @@ class NearDivisors:
         reach *= max(1.0, float(np.abs(system.target).max()))
         size = root.shape[1]
         equal = np.hstack([system.whole, slope[:, :moves], np.zeros((2 * degree, 1))])
+        # A row that no coefficient enters still says how the factor may move.
+        heights = np.abs(equal).max(axis=1)
+        scale = np.where(system.whole.any(axis=1) | (heights == 0), 1.0, heights)[:, None]
         one = np.hstack([ratios, np.zeros((len(ratios), moves)), -np.ones((len(ratios), 1))])
         other = np.hstack([-one[:, :-1], one[:, -1:]])
         found = linprog(
             np.append(np.zeros(size + moves), 1.0),
             A_ub=np.vstack([one, other]),
             b_ub=np.zeros(2 * len(ratios)),
-            A_eq=equal,
-            b_eq=-system.target,
+            A_eq=equal / scale,
+            b_eq=-system.target / scale[:, 0],
             bounds=[(None, None)] * size + [(-reach, reach)] * moves + [(0, None)],
         )
         if found.x is None:
@@ -423,83 +436,91 @@ class NearDivisors:
     def _divisible(
         self, side: int, h: Polynomial, change: Array, weights: Sequence[Fraction]
     ) -> Polynomial | None:
-        """Return an exact multiple of common * h near one side plus a change."""
-        rest = _changed(self.rests[side], change)
-        remainder = divmod(polynomials.to_flint(rest), polynomials.to_flint(h))[1]
-        if all(weights):
-            # The last coefficients are free to take the rest up.
-            left = tuple(-c for c in polynomials.from_flint(remainder))
-            rest = polynomials.add(rest, left)
-        else:
-            solved = self._corrected(side, rest, h, weights)
-            if solved is None:
-                return None
-            rest = solved
-        if len(rest) != len(self.rests[side]) or not rest[0]:
-            return None
-        rest = _graded(_scaled(rest, self.shifts[side]), self.unit)
-        return polynomials.multiply(self.common, rest)
+        """Return an exact multiple of common * h near one side plus a change.
 
-    def _corrected(
-        self, side: int, rest: Polynomial, h: Polynomial, weights: Sequence[Fraction]
-    ) -> Polynomial | None:
-        """Return the rest changed a little, so that h divides it and fixed coefficients hold.
-
-        The conditions are solved exactly in as many coefficients as there are conditions, chosen
-        by pivoting for large weights.
+        What doubles leave over is taken up exactly, in as many coefficients as there are
+        conditions, chosen by pivoting where the weights are large for what is needed.
         """
         from flint import fmpq, fmpq_mat
 
-        common = _graded(self.common, -self.unit)
-        wanted = _scaled(_graded(self.originals[side], -self.unit), -self.shifts[side])
-        size, degree = len(rest), len(h) - 1
-        fixed = [k for k, weight in enumerate(weights) if not weight]
-        rows: list[list[Fraction]] = []
-        right: list[Fraction] = []
-        for k in fixed:
-            row = [common[k - j] if 0 <= k - j < len(common) else Fraction(0) for j in range(size)]
-            if any(row):
-                rows.append(row)
-                right.append(wanted[k] - sum(a * b for a, b in zip(row, rest, strict=True)))
+        rest = _changed(self.rests[side], change)
         divisor = polynomials.to_flint(h)
-        columns = []
-        for j in range(size):
-            monomial = (Fraction(1), *[Fraction(0)] * (size - 1 - j))
-            columns.append(_padded(divmod(polynomials.to_flint(monomial), divisor)[1], degree))
-        rows += [[column[i] for column in columns] for i in range(degree)]
-        right += [-c for c in _padded(divmod(polynomials.to_flint(rest), divisor)[1], degree)]
+        size, degree = len(rest), len(h) - 1
         graded = _graded(tuple(weights), -self.unit)
         sizes = _floats(_scaled(graded, -self.shifts[side]))[:size]
-        table = np.array([[float(c) for c in row] for row in rows]) * np.maximum(
-            sizes, 1e-3 * sizes.max()
+        free = list(range(size))
+        held: list[tuple[list[Fraction], Fraction]] = []
+        if len(self.common) == 1:
+            free = [j for j in free if weights[j]]
+        else:
+            held = self._held(side, rest, weights)
+            least = sizes[sizes > 0].min(initial=1.0)
+            sizes = np.maximum(sizes, least)
+        table = (
+            np.vstack(
+                [
+                    _floats(c for row, _ in held for c in row).reshape(len(held), size),
+                    _powers(h, size)[:, ::-1],
+                ]
+            )[:, free]
+            * sizes[free]
         )
-        kept = _independent(table)
-        chosen = _independent(table[kept].T)
+        heights = np.abs(table).max(axis=1, initial=0.0)
+        used = np.flatnonzero(heights)
+        table = table[used] / heights[used, None]
+        kept = [int(used[k]) for k in _independent(table)]
+        chosen = [free[k] for k in _independent(table[_independent(table)].T)]
         if len(chosen) < len(kept):
             return None
-        matrix = fmpq_mat(
-            len(kept),
-            len(kept),
-            [fmpq(rows[i][j].numerator, rows[i][j].denominator) for i in kept for j in chosen],
-        )
+        columns = {}
+        for j in chosen:
+            monomial = (Fraction(1), *[Fraction(0)] * (size - 1 - j))
+            below = _padded(divmod(polynomials.to_flint(monomial), divisor)[1], degree)
+            columns[j] = [row[j] for row, _ in held] + below
+        remainder = _padded(divmod(polynomials.to_flint(rest), divisor)[1], degree)
+        right = [missing for _, missing in held] + [-c for c in remainder]
+        entries = [columns[j][i] for i in kept for j in chosen]
+        matrix = fmpq_mat(len(kept), len(kept), [fmpq(c.numerator, c.denominator) for c in entries])
         vector = fmpq_mat(
             len(kept), 1, [fmpq(right[i].numerator, right[i].denominator) for i in kept]
         )
-        if not matrix.det():
+        if kept and not matrix.det():
             return None
-        solution = matrix.solve(vector)
+        solution = matrix.solve(vector) if kept else vector
         moved = list(rest)
         for position, j in enumerate(chosen):
             entry = solution[position, 0]
             moved[j] += Fraction(int(entry.p), int(entry.q))
-        # Rows left out as dependent must hold too.
-        for row, before in zip(rows, right, strict=True):
-            after = before - sum(
-                a * (new - old) for a, new, old in zip(row, moved, rest, strict=True)
-            )
-            if after:
+        return self._verified(side, tuple(moved), h, weights)
+
+    def _held(
+        self, side: int, rest: Polynomial, weights: Sequence[Fraction]
+    ) -> list[tuple[list[Fraction], Fraction]]:
+        """Return the conditions that fixed coefficients of common * rest put on the rest."""
+        common = _graded(self.common, -self.unit)
+        wanted = _scaled(_graded(self.originals[side], -self.unit), -self.shifts[side])
+        held = []
+        for k, weight in enumerate(weights):
+            row = [
+                common[k - j] if 0 <= k - j < len(common) else Fraction(0) for j in range(len(rest))
+            ]
+            if not weight and any(row):
+                found = sum((a * b for a, b in zip(row, rest, strict=True)), Fraction(0))
+                held.append((row, wanted[k] - found))
+        return held
+
+    def _verified(
+        self, side: int, rest: Polynomial, h: Polynomial, weights: Sequence[Fraction]
+    ) -> Polynomial | None:
+        """Return common * rest in the user's variable; None when it is not what was asked for."""
+        if not rest[0] or divmod(polynomials.to_flint(rest), polynomials.to_flint(h))[1]:
+            return None
+        rest = _graded(_scaled(rest, self.shifts[side]), self.unit)
+        whole = polynomials.multiply(self.common, rest)
+        for weight, before, after in zip(weights, self.originals[side], whole, strict=True):
+            if not weight and before != after:
                 return None
-        return tuple(moved)
+        return whole
 
 
 # Lower bounds
@@ -666,6 +687,18 @@ def _padded(remainder: Any, degree: int) -> list[Fraction]:
     """Return the coefficients of a remainder modulo a polynomial of this degree, all of them."""
     coefficients = polynomials.from_flint(remainder)
     return [Fraction(0)] * (degree - len(coefficients)) + list(coefficients)
+
+
+def _powers(h: Polynomial, count: int) -> Array:
+    """Return the powers 0, 1, ... of x modulo a monic polynomial, one column for each."""
+    tail = _floats(h[1:])
+    powers = np.zeros((tail.size, count))
+    power = np.zeros(tail.size)
+    power[-1] = 1.0
+    for k in range(count):
+        powers[:, k] = power
+        power = np.append(power[1:], 0.0) - power[0] * tail
+    return powers
 
 
 def _moved(h: Polynomial, step: Array) -> Polynomial:

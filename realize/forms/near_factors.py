@@ -6,7 +6,7 @@ import math
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
-from typing import Any, Final
+from typing import Any, Final, TypeAlias
 
 import numpy as np
 
@@ -40,14 +40,19 @@ NEAR: Final = 1e-4
 """Relative change of the coefficients below which a factor that it would make cancel is reported
 as near, uncertainty or none. A heuristic for what is worth a line; it decides nothing."""
 
-_STARTS: Final = 40
+_STARTS: Final = 16
 """Pairs at most from which a search starts; the nearest come first."""
+
+_GROWN: Final = 12
+"""Pairs that are tried as one more for a factor already found; the nearest."""
 
 _SAME: Final = 1e-3
 """Relative difference of coefficients, and of changes, below which two searches have found one
 factor. Where the change hardly depends on the factor they end some way apart."""
 
 _ONE: Polynomial = (Fraction(1),)
+_Pair: TypeAlias = tuple[Polynomial, Polynomial, Polynomial]
+"""A factor and two polynomials that it divides."""
 _WORST: Final = (Stability.UNSTABLE, Stability.MARGINAL, Stability.CANNOT_TELL, Stability.STABLE)
 
 
@@ -147,7 +152,7 @@ class _Candidate:
 
     plain: Trial
     change: float
-    pair: tuple[Polynomial, Polynomial, Polynomial]
+    pair: _Pair
     allowed: str | None
     deviations: float | None
     confidence: float | None
@@ -173,30 +178,44 @@ class _Entry:
         for metric in (measures.box, measures.spread):
             self.roots.append(np.zeros((0, 0)) if metric is None else self.search.root(metric))
         self.zeros, self.poles = map(_all_roots, rests)
+        # Where searches in the box have ended, and what was found there.
+        self._ends: list[tuple[Polynomial, float, _Pair | None]] = []
 
     # Candidates
 
     def candidates(self) -> list[_Candidate]:
         """Return the near factors: each pair alone, then the nearest one of each degree."""
         singles: list[_Candidate] = []
-        for start in self._starts():
+        pool = list(self._starts())
+        for start in pool:
             found = self._settled(start)
-            if found is not None and not _is_known(found, singles):
+            if found is None:
+                continue
+            same = _known(found, singles)
+            if same is None:
                 singles.append(found)
+            elif _rank(found) < _rank(singles[same]):
+                # The same factor, but this start has done better under the uncertainty.
+                singles[same] = found
         singles.sort(key=lambda each: each.change)
         best: dict[int, _Candidate] = {}
         missed = 0
         for degree in range(2, self.search.degree_limit + 1):
             if missed > 1 or self._is_hopeless(degree):
                 break
-            missed += self._improve(best, degree, self._joint_starts(degree, singles))
+            bases = [each.plain.h for each in (*singles[:1], *best.values())]
+            starts = (
+                *self._joint_starts(degree, singles),
+                *self._grown(degree, bases, pool[:_GROWN]),
+            )
+            missed += self._improve(best, degree, starts)
         # A common factor of higher degree holds those of lower degree.
         for degree in sorted(best, reverse=True):
             for lower in (degree - 1, degree - 2):
                 found = best.get(lower)
                 if lower > 1 and (found is None or _rank(best[degree]) < _rank(found)):
                     self._improve(best, lower, self._parts(best[degree].plain.h, lower))
-        return singles + [each for each in best.values() if not _is_known(each, singles)]
+        return singles + [each for each in best.values() if _known(each, singles) is None]
 
     def _improve(
         self, best: dict[int, _Candidate], degree: int, starts: Iterable[Polynomial]
@@ -256,6 +275,22 @@ class _Entry:
         if np.isfinite(h).all():
             yield tuple(Fraction(float(c)) for c in h)
 
+    def _grown(
+        self, degree: int, bases: Sequence[Polynomial], pool: Sequence[Polynomial]
+    ) -> list[Polynomial]:
+        """Return the likeliest products of a factor found and one more pair."""
+        # Far from every pair, too: what is nearest may lie where no pole or zero is.
+        parts = [*pool, *((Fraction(1), Fraction(c)) for c in (-8, -1, 1, 8))]
+        products = [
+            polynomials.multiply(base, part)
+            for base in bases
+            for part in parts
+            if len(base) + len(part) - 2 == degree
+        ]
+        root = self.roots[0 if self.measures.spread is None else 2]
+        products.sort(key=lambda each: self.search.point(each, root).merit)
+        return products[:2]
+
     def _is_hopeless(self, degree: int) -> bool:
         """Return whether no factor of this degree can be worth a line."""
         if self._least_change(degree) <= NEAR:
@@ -306,24 +341,38 @@ class _Entry:
             return None
         return _Candidate(plain, change, pair, allowed, deviations, confidence)
 
-    def _within(
-        self, plain: Trial, start: Polynomial, box: Metric
-    ) -> tuple[Polynomial, Polynomial, Polynomial] | None:
+    def _within(self, plain: Trial, start: Polynomial, box: Metric) -> _Pair | None:
         """Return an exact factor and pair within the box, if the search finds one."""
         root = self.roots[1]
         room = math.sqrt(sum(1 for w in (*box.f, *box.g) if w))
-        for h in (plain.h, start):
+        starts = [plain.h, start]
+        for rest, weights in zip(self.search.flint, (box.f, box.g), strict=True):
+            if not any(weights):
+                # Nothing of this side can change, so only its own factors will do.
+                starts = [h for h in starts if not divmod(rest, polynomials.to_flint(h))[1]]
+        for h in starts:
             trial = self.search.descend(h, root)
             # Within the box the 2-norm of the ratios is at most the root of their number.
             if not trial.is_met or trial.cost > room * (1 + 1e-9):
                 continue
-            factor, delta, ratio = self.search.smallest_box(trial, box, root)
-            if ratio > 1 + 1e-9:
-                continue
-            pair = self.search.witness(factor, delta, box)
-            if pair is not None and _is_inside(self.whole, pair[1:], box):
-                return pair
+            known = [
+                pair
+                for end, cost, pair in self._ends
+                if abs(cost - trial.cost) <= _SAME * cost and _is_close(end, trial.h)
+            ]
+            if not known:
+                known = [self._in_box(trial, box, root)]
+                self._ends.append((trial.h, trial.cost, known[0]))
+            if known[0] is not None:
+                return known[0]
         return None
+
+    def _in_box(self, trial: Trial, box: Metric, root: Array) -> _Pair | None:
+        factor, delta, ratio = self.search.smallest_box(trial, box, root)
+        if ratio > 1 + 1e-9:
+            return None
+        pair = self.search.witness(factor, delta, box)
+        return pair if pair is not None and _is_inside(self.whole, pair[1:], box) else None
 
     # Records
 
@@ -353,7 +402,7 @@ class _Entry:
 
     def _response_change(
         self,
-        pair: tuple[Polynomial, Polynomial, Polynomial],
+        pair: _Pair,
         away_zeros: list[int],
         away_poles: list[int],
     ) -> ResponseChange:
@@ -415,7 +464,9 @@ def _is_real(roots: Array) -> bool:
 
 
 def _rank(candidate: _Candidate) -> tuple[bool, float]:
-    """Order: what the uncertainty allows first, since that says more than the size of a change."""
+    """Order: by what the uncertainty says first, since that says more than the size of a change."""
+    if candidate.deviations is not None:
+        return False, candidate.deviations
     return candidate.allowed != "yes", candidate.change
 
 
@@ -454,17 +505,22 @@ def _nearest(values: Array, targets: Array) -> list[int]:
     return sorted(taken, key=lambda k: (values[k].imag != 0, values[k].real, -values[k].imag))
 
 
-def _is_known(candidate: _Candidate, others: list[_Candidate]) -> bool:
-    """Return whether another candidate has the same factor, as far as that matters."""
-    h = np.array([float(c) for c in candidate.plain.h])
-    for other in others:
-        if len(other.plain.h) != h.size:
-            continue
-        difference = np.abs(h - [float(c) for c in other.plain.h]).max()
+def _known(candidate: _Candidate, others: list[_Candidate]) -> int | None:
+    """Return which other candidate has the same factor, as far as that matters."""
+    for place, other in enumerate(others):
         gap = abs(candidate.change - other.change)
-        if difference <= _SAME * np.abs(h).max() and gap <= _SAME * candidate.change:
-            return True
-    return False
+        close = gap <= _SAME * candidate.change and _is_close(candidate.plain.h, other.plain.h)
+        if close or candidate.pair[0] == other.pair[0]:
+            return place
+    return None
+
+
+def _is_close(first: Polynomial, second: Polynomial) -> bool:
+    """Return whether two factors are one, as far as that matters."""
+    if len(first) != len(second):
+        return False
+    gap = max(abs(a - b) for a, b in zip(first, second, strict=True))
+    return float(gap) <= _SAME * float(max(map(abs, first)))
 
 
 def _is_inside(whole: Sequence[Polynomial], pair: Sequence[Polynomial], box: Metric) -> bool:
