@@ -51,6 +51,7 @@ __all__ = [
     "Metric",
     "NearDivisors",
     "Trial",
+    "has_no_real_root",
     "is_out_of_reach",
     "least_change",
     "level_weights",
@@ -90,7 +91,7 @@ search is given up: it has lost its way."""
 _SETTLED: Final = 1e-7
 """Relative gain of a step below which the search ends."""
 
-_ROUNDS: Final = 12
+_ROUNDS: Final = 6
 """Linear programs at most in a search for the smallest box."""
 
 
@@ -268,7 +269,12 @@ class NearDivisors:
 
     def point(self, h: Polynomial, root: Array) -> Trial:
         """Return the least change for a fixed factor, and the Gauss-Newton step of the factor."""
-        system = self._linear(h, root)
+        with np.errstate(over="ignore", invalid="ignore"):
+            system = self._linear(h, root)
+        if not (np.isfinite(system.whole).all() and np.isfinite(system.target).all()):
+            # Powers of a factor this large are out of range; no search comes from here.
+            nothing = np.zeros(root.shape[1])
+            return Trial(h, math.inf, (math.inf, math.inf), nothing, np.zeros(len(h) - 1))
         rigid = ~system.whole.any(axis=1)
         whole, target = system.whole[~rigid], system.target[~rigid]
         left, values, right = np.linalg.svd(whole, full_matrices=True)
@@ -553,6 +559,68 @@ def is_out_of_reach(f: Polynomial, g: Polynomial, metric: Metric, degree: int, u
     least = _least_singular(sylvester(first, second, degree))
     reach = float(np.linalg.norm(sylvester(first_radii, second_radii, degree), 2))
     return bool(least > reach * (1 + 1e-10))
+
+
+def has_no_real_root(f: Polynomial, g: Polynomial, metric: Metric) -> bool:
+    """Return whether no pair within the box has a common real root: a proof, sharp.
+
+    A polynomial within the radii r of f has the root x exactly when |f(x)| <= sum r_k |x|^k = F(x),
+    so on each half of the real line the question is whether F^2 - f^2 and G^2 - g^2 are both
+    nonnegative somewhere. Between their roots, which are isolated exactly, signs are constant.
+
+    References
+    ----------
+    Oettli and Prager (1964), Numerische Mathematik 6, for the condition.
+    """
+    for sign in (1, -1):
+        rooms = []
+        for p, radii in ((f, metric.f), (g, metric.g)):
+            turned = polynomials.strip(
+                tuple(c * sign ** (k % 2) for k, c in enumerate(reversed(p)))[::-1]
+            )
+            reach = polynomials.strip(tuple(radii))
+            square = polynomials.multiply(turned, turned)
+            rooms.append(
+                polynomials.add(polynomials.multiply(reach, reach), tuple(-c for c in square))
+            )
+        if _may_meet(rooms[0], rooms[1]):
+            return False
+    return True
+
+
+def _may_meet(P: Polynomial, Q: Polynomial) -> bool:
+    """Return False only when P >= 0 and Q >= 0 hold together at no x >= 0."""
+    if polynomials.degree(P) < 0 or polynomials.degree(Q) < 0:
+        return True
+    intervals = [
+        (max(low, Fraction(0)), high)
+        for low, high in polynomials.real_intervals(polynomials.multiply(P, Q))
+        if high >= 0
+    ]
+    # One point in every gap between roots, before the first and after the last.
+    ends = [Fraction(0), *(end for pair in intervals for end in pair)]
+    ends.append(ends[-1] + 1)
+    samples = [(low + high) / 2 for low, high in zip(ends[::2], ends[1::2], strict=True)]
+
+    def holds(p: Polynomial, x: Fraction) -> bool:
+        return polynomials.evaluate(p, x) >= 0
+
+    if any(holds(P, x) and holds(Q, x) for x in samples):
+        return True
+    roots = [polynomials.square_free(p) if len(p) > 1 else None for p in (P, Q)]
+    for low, high in intervals:
+        # At the root itself one of the two is zero; the other must be negative there.
+        touched = [
+            simple is not None
+            and polynomials.evaluate(simple, low) * polynomials.evaluate(simple, high) <= 0
+            for simple in roots
+        ]
+        if all(
+            touch or holds(p, low) or holds(p, high)
+            for touch, p in zip(touched, (P, Q), strict=True)
+        ):
+            return True
+    return False
 
 
 def _levelled(f: Polynomial, g: Polynomial, metric: Metric, unit: int) -> list[tuple[Array, Array]]:

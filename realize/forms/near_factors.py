@@ -16,6 +16,7 @@ from realize.arithmetic.nearby_divisors import (
     Metric,
     NearDivisors,
     Trial,
+    has_no_real_root,
     is_out_of_reach,
     least_change,
     level_weights,
@@ -178,6 +179,7 @@ class _Entry:
         for metric in (measures.box, measures.spread):
             self.roots.append(np.zeros((0, 0)) if metric is None else self.search.root(metric))
         self.zeros, self.poles = map(_all_roots, rests)
+        self._refused: dict[int, bool] = {}
         # Where searches in the box have ended, and what was found there.
         self._ends: list[tuple[Polynomial, float, _Pair | None]] = []
 
@@ -307,6 +309,8 @@ class _Entry:
     def _is_refused(self, degree: int) -> bool:
         assert self.measures.box is not None
         whole = degree + len(self.common) - 1
+        if whole == 1 and has_no_real_root(self.whole[0], self.whole[1], self.measures.box):
+            return True
         return is_out_of_reach(
             self.whole[0], self.whole[1], self.measures.box, whole, self.search.unit
         )
@@ -322,8 +326,11 @@ class _Entry:
         degree = len(start) - 1
         allowed = deviations = confidence = None
         if measures.box is not None:
-            within = self._within(plain, start, measures.box)
-            allowed = "yes" if within else "no" if self._is_refused(degree) else "cannot tell"
+            if degree not in self._refused:
+                self._refused[degree] = self._is_refused(degree)
+            refused = self._refused[degree]
+            within = None if refused else self._within(plain, start, measures.box)
+            allowed = "yes" if within else "no" if refused else "cannot tell"
             pair = within or pair
         if measures.spread is not None:
             trials = [search.descend(h, self.roots[2]) for h in (plain.h, start)]

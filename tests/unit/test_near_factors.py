@@ -14,7 +14,7 @@ import sympy
 from scipy.special import chdtr
 
 from realize import Stability, TransferMatrix, Uncertainty, errors, exact, floating, multiprecision
-from realize.arithmetic.nearby_divisors import level_weights
+from realize.arithmetic.nearby_divisors import Metric, has_no_real_root, level_weights
 from realize.results import Cancellation, NearFactor
 from tests.helpers import times
 
@@ -96,11 +96,41 @@ def test_the_smallest_box_is_found(share: Fraction) -> None:
     needed = abs(F("1.00001") ** 2 - 3 * F("1.00001") + 2)
     uncertainty = Uncertainty(absolute={"denominators": [0, 0, needed * share]})
     near = only(exact.cancel(CLOSE, uncertainty=uncertainty))
-    assert (near.allowed == "yes") is (share > 1)
+    assert near.allowed == ("yes" if share > 1 else "no")
     if share > 1:
         assert near.factor == (1, F("1.00001"))
         assert near.witness.numerators == CLOSE.numerators
         assert near.witness.denominators[0][0][2] == 2 + needed
+
+
+@pytest.mark.parametrize(
+    ("f", "g", "radius", "wanted"),
+    [
+        # |w - 1| <= r (1 + |w|) and |w - 2| <= r (1 + |w|): both need r = 1/5, at w = 3/2.
+        ((1, -1), (1, -2), "0.1999", True),
+        ((1, -1), (1, -2), "0.2", False),
+        # On the negative side alike.
+        ((1, 1), (1, 2), "0.1999", True),
+        ((1, 1), (1, 2), "0.2", False),
+        # Between the signs 0 is the meeting point: |1| <= r.
+        ((1, 1), (1, -1), "0.9999", True),
+        ((1, 1), (1, -1), "1", False),
+        # No real root far and wide: w^2 + 1 <= r (w^2 + |w| + 1) from r = 2/3 on, at w = 1.
+        ((1, -1), (1, 0, 1), "0.6666", True),
+        ((1, -1), (1, 0, 1), "0.6667", False),
+        # Exact ones meet where they share a root only.
+        ((1, -1), (1, -3, 2), "0", False),
+        ((1, 0), (1, 1, 0), "0", False),
+        ((1, -1), (1, -2), "0", True),
+    ],
+)
+def test_real_roots_in_a_box_are_decided(
+    f: tuple[int, ...], g: tuple[int, ...], radius: str, wanted: bool
+) -> None:
+    """Whether polynomials in a box can share a real root, at thresholds found by hand."""
+    p, q = tuple(map(F, f)), tuple(map(F, g))
+    metric = Metric([F(radius)] * len(p), [F(radius)] * len(q))
+    assert has_no_real_root(p, q, metric) is wanted
 
 
 def test_zeros_stay_zero() -> None:
