@@ -17,7 +17,9 @@ something.
 Remainders are computed in rational arithmetic and only then rounded, and h is kept with many
 digits. Where f mod h is a thousand million million times smaller than f, doubles would see
 rounding alone. The answer is therefore not limited by the precision of a double, and its witness
-is exact: h divides both of its polynomials, term by term.
+is exact: h divides both of its polynomials, term by term. Where coefficients reach so far that even
+scaled they leave the range of doubles a search ends with an infinite cost; callers switch numpy's
+warnings off.
 
 A lower bound comes from a Sylvester matrix: a pair with a common factor of degree k has a
 singular k-th one, so sigma_min(S_k(f, g)) <= ||S_k(df, dg)||.
@@ -90,6 +92,14 @@ search is given up: it has lost its way."""
 
 _SETTLED: Final = 1e-7
 """Relative gain of a step below which the search ends."""
+
+_WORK: Final = 60_000
+"""Degree times bits of a coefficient up to which real roots are isolated for a proof: a second or
+two."""
+
+_BITS: Final = 2_000
+"""Bits of a coefficient up to which that is tried. Roots whose sizes differ by hundreds of decades
+take minutes."""
 
 _ROUNDS: Final = 6
 """Linear programs at most in a search for the smallest box."""
@@ -220,7 +230,7 @@ class NearDivisors:
             return base
         # Changes of the originals are base eta = convolution delta; find the eta that fit.
         whole = scipy.linalg.block_diag(*self.convolutions)
-        size = float(np.abs(base).max()) or 1.0
+        size = float(np.abs(base).max(initial=0.0)) or 1.0
         null = scipy.linalg.null_space(np.hstack([base / size, -whole]))
         eta, delta = null[: base.shape[1]], null[base.shape[1] :] * size
         triangle = np.linalg.qr(eta, mode="r")
@@ -269,8 +279,7 @@ class NearDivisors:
 
     def point(self, h: Polynomial, root: Array) -> Trial:
         """Return the least change for a fixed factor, and the Gauss-Newton step of the factor."""
-        with np.errstate(over="ignore", invalid="ignore"):
-            system = self._linear(h, root)
+        system = self._linear(h, root)
         if not (np.isfinite(system.whole).all() and np.isfinite(system.target).all()):
             # Powers of a factor this large are out of range; no search comes from here.
             nothing = np.zeros(root.shape[1])
@@ -307,7 +316,7 @@ class NearDivisors:
         first, second = (len(rest) for rest in self.rests)
         halves = [powers[:, first - 1 :: -1] @ root[:first]]
         halves.append(powers[:, second - 1 :: -1] @ root[first:])
-        units = np.repeat([float(np.abs(half).max()) or 1.0 for half in halves], degree)
+        units = np.repeat([float(np.abs(half).max(initial=0.0)) or 1.0 for half in halves], degree)
         rho = [_floats(_padded(divmod(p, divisor)[1], degree)) for p in self.flint]
         return _System(
             powers=powers,
@@ -471,6 +480,8 @@ class NearDivisors:
             )[:, free]
             * sizes[free]
         )
+        if not np.isfinite(table).all():
+            return None
         heights = np.abs(table).max(axis=1, initial=0.0)
         used = np.flatnonzero(heights)
         table = table[used] / heights[used, None]
@@ -562,7 +573,7 @@ def is_out_of_reach(f: Polynomial, g: Polynomial, metric: Metric, degree: int, u
 
 
 def has_no_real_root(f: Polynomial, g: Polynomial, metric: Metric) -> bool:
-    """Return whether no pair within the box has a common real root: a proof, sharp.
+    """Return whether no pair within the box has a common real root: a proof, sharp up to `_WORK`.
 
     A polynomial within the radii r of f has the root x exactly when |f(x)| <= sum r_k |x|^k = F(x),
     so on each half of the real line the question is whether F^2 - f^2 and G^2 - g^2 are both
@@ -592,9 +603,14 @@ def _may_meet(P: Polynomial, Q: Polynomial) -> bool:
     """Return False only when P >= 0 and Q >= 0 hold together at no x >= 0."""
     if polynomials.degree(P) < 0 or polynomials.degree(Q) < 0:
         return True
+    product = polynomials.multiply(P, Q)
+    numerators = polynomials.to_flint(product).numer()
+    bits = numerators.height_bits()
+    if bits > _BITS or numerators.degree() * bits > _WORK:
+        return True
     intervals = [
         (max(low, Fraction(0)), high)
-        for low, high in polynomials.real_intervals(polynomials.multiply(P, Q))
+        for low, high in polynomials.real_intervals(product)
         if high >= 0
     ]
     # One point in every gap between roots, before the first and after the last.
@@ -803,6 +819,8 @@ def _square_root(covariance: Array, deviations: Array) -> Array:
 
 def _constrained(A: Array, b: Array, E: Array, d: Array) -> Array:
     """Return x that minimises ||A x - b|| among those with E x = d (least squares in both)."""
+    if not all(np.isfinite(part).all() for part in (A, b, E, d)):
+        return np.zeros(A.shape[1])
     if not len(E):
         return np.asarray(np.linalg.lstsq(A, b, rcond=None)[0])
     size = float(np.abs(E).max(initial=0.0))

@@ -83,6 +83,17 @@ def near_factors(
         What was found common in each entry.
     uncertainty : Uncertainty or None
     """
+    # Coefficients may leave the range of doubles; then a search finds nothing.
+    with np.errstate(all="ignore"):
+        return _found(given, transfer, shared, uncertainty)
+
+
+def _found(
+    given: TransferMatrix,
+    transfer: TransferMatrix,
+    shared: Sequence[Sequence[SharedFactor]],
+    uncertainty: Uncertainty | None,
+) -> tuple[NearFactor, ...]:
     found: list[NearFactor] = []
     for output, input_, measures in _entries(given, transfer, uncertainty):
         item = shared[output][input_]
@@ -237,7 +248,8 @@ class _Entry:
         parts = []
         for root in drops.tolist():
             kept = roots[(roots != root) & (roots != np.conj(root))]
-            parts.append(tuple(Fraction(float(c)) for c in np.poly(kept).real))
+            product = np.atleast_1d(np.poly(kept)).real
+            parts.append(tuple(Fraction(float(c)) for c in product))
         parts = [part for part in parts if len(part) - 1 == degree]
         parts.sort(key=lambda part: self.search.point(part, self.roots[0]).merit)
         return parts[:1]
@@ -274,7 +286,7 @@ class _Entry:
             yield product
         f, g = (np.array([float(c) for c in p]) for p in self.search.rests)
         h = split(f, g, degree)[0]
-        if np.isfinite(h).all():
+        if np.isfinite(h).all() and h[0]:
             yield tuple(Fraction(float(c)) for c in h)
 
     def _grown(
@@ -309,10 +321,10 @@ class _Entry:
     def _is_refused(self, degree: int) -> bool:
         assert self.measures.box is not None
         whole = degree + len(self.common) - 1
-        if whole == 1 and has_no_real_root(self.whole[0], self.whole[1], self.measures.box):
-            return True
-        return is_out_of_reach(
-            self.whole[0], self.whole[1], self.measures.box, whole, self.search.unit
+        f, g = self.whole
+        box, unit = self.measures.box, self.search.unit
+        return is_out_of_reach(f, g, box, whole, unit) or (
+            whole == 1 and has_no_real_root(f, g, box)
         )
 
     def _settled(self, start: Polynomial) -> _Candidate | None:
