@@ -44,6 +44,9 @@ as near, uncertainty or none. A heuristic for what is worth a line; it decides n
 _STARTS: Final = 16
 """Pairs at most from which a search starts; the nearest come first."""
 
+_SPREAD: Final = 2.0**-300
+"""Smallest over largest coefficient from which a search in doubles alone can start."""
+
 _GROWN: Final = 12
 """Pairs that are tried as one more for a factor already found; the nearest."""
 
@@ -284,7 +287,10 @@ class _Entry:
                 product = polynomials.multiply(product, each.plain.h)
         if len(product) - 1 == degree:
             yield product
-        f, g = (np.array([float(c) for c in p]) for p in self.search.rests)
+        f, g = self.search.floats
+        sizes = np.abs(np.concatenate([f, g]))
+        if not (f[0] and g[0]) or sizes[sizes > 0].min() < _SPREAD * sizes.max():
+            return
         h = split(f, g, degree)[0]
         if np.isfinite(h).all() and h[0]:
             yield tuple(Fraction(float(c)) for c in h)
