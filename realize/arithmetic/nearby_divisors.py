@@ -403,7 +403,8 @@ class NearDivisors:
         degree = len(h) - 1
         system = self._linear(h, root)
         slope = self._slope(h, delta, system)
-        rates = np.abs(slope).max(axis=0)
+        # A coefficient of the factor that moves nothing is left as it is.
+        rates = np.maximum(np.abs(slope).max(axis=0), 1e-300)
         slope = slope / rates
         moves = degree if reach else 0
         reach *= max(1.0, float(np.abs(system.target).max()))
@@ -414,6 +415,8 @@ class NearDivisors:
         scale = np.where(system.whole.any(axis=1) | (heights == 0), 1.0, heights)[:, None]
         one = np.hstack([ratios, np.zeros((len(ratios), moves)), -np.ones((len(ratios), 1))])
         other = np.hstack([-one[:, :-1], one[:, -1:]])
+        if not all(np.isfinite(part).all() for part in (equal, one, system.target)):
+            return None
         found = linprog(
             np.append(np.zeros(size + moves), 1.0),
             A_ub=np.vstack([one, other]),
