@@ -45,6 +45,7 @@ if TYPE_CHECKING:
         SamplingPeriodError,
         ShapeError,
         ToleranceError,
+        UncertaintyError,
         UnknownWordError,
         UnsupportedEntryError,
         VerificationError,
@@ -69,6 +70,7 @@ if TYPE_CHECKING:
         Cancellation,
         KalmanParts,
         Mode,
+        NearFactor,
         Part,
         RankDecision,
         Reduction,
@@ -76,6 +78,7 @@ if TYPE_CHECKING:
         Staircase,
     )
     from realize.stability import Stability
+    from realize.uncertainty import Uncertainty
 
 __version__ = "0.1.0"
 
@@ -99,6 +102,7 @@ __all__ = [
     "LimitError",
     "Mode",
     "ModelFileError",
+    "NearFactor",
     "NotBuiltError",
     "Part",
     "PrecisionError",
@@ -115,6 +119,8 @@ __all__ = [
     "Staircase",
     "ToleranceError",
     "TransferMatrix",
+    "Uncertainty",
+    "UncertaintyError",
     "UnknownWordError",
     "UnsupportedEntryError",
     "VerificationError",
@@ -179,6 +185,7 @@ _HOMES = {
         "SamplingPeriodError",
         "ShapeError",
         "ToleranceError",
+        "UncertaintyError",
         "UnknownWordError",
         "UnsupportedEntryError",
         "VerificationError",
@@ -203,6 +210,7 @@ _HOMES = {
         "Cancellation",
         "KalmanParts",
         "Mode",
+        "NearFactor",
         "Part",
         "RankDecision",
         "Reduction",
@@ -210,6 +218,7 @@ _HOMES = {
         "Staircase",
     ),
     "realize.stability": ("Stability",),
+    "realize.uncertainty": ("Uncertainty",),
 }
 _HOME_OF = {name: module for module, names in _HOMES.items() for name in names}
 _SUBMODULES = ("exact", "floating", "multiprecision")

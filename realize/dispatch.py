@@ -234,36 +234,49 @@ def transfer_matrix(model: Realization) -> TransferMatrix:
     return forms.transfer_matrix(path_for(model), model)
 
 
-def cancel(transfer: TransferMatrix, *, uncertainty: None = None) -> Cancellation:
+def cancel(transfer: TransferMatrix, *, uncertainty: Any = None) -> Cancellation:
     """Cancel the common factors of a transfer matrix, entry by entry.
 
     Parameters
     ----------
     transfer : TransferMatrix
-    uncertainty : None, keyword-only
-        Kept for coefficients with an uncertainty, which are not built yet.
+    uncertainty : number, "ulp", "last digit" or Uncertainty, keyword-only, optional
+        How far each coefficient may lie from the number given; a number is relative. It decides
+        what is worth telling in `near` and what is said of it, and never what cancels.
 
     Returns
     -------
     Cancellation
-        The coprime fractions, what was common, and the pairs that lie near each other and do not
-        cancel.
+        The coprime fractions, what was common, and the poles and zeros that nearly cancel: how
+        small a change of the coefficients would do it, an exact fraction that shows it, what
+        dropping them does to the frequency response, and whether they are stable. With an
+        uncertainty also whether it allows that, or how many standard deviations away that is.
 
     Raises
     ------
-    NotBuiltError
-        For any uncertainty but None.
+    UncertaintyError, UnknownWordError
+        For an uncertainty that does not fit the coefficients, or is none.
+
+    Notes
+    -----
+    Near are: what a relative change of 1e-4 makes cancel; what the bounds allow; what lies within
+    the confidence of the standard deviations (19/20 unless given).
 
     References
     ----------
     Exact: von zur Gathen and Gerhard, Modern Computer Algebra, chapter 6. Floating: Corless,
     Gianni, Trager, Watt (1995), The singular value decomposition for polynomial systems, ISSAC.
+    Near: also Karmarkar and Lakshman (1998), On approximate GCDs of univariate polynomials, J.
+    Symbolic Computation 26; see `realize.arithmetic.nearby_divisors`.
 
     Examples
     --------
     >>> import realize
     >>> realize.cancel(realize.TransferMatrix([1, 1], [1, 3, 2])).common
     (Fraction(1, 1), Fraction(1, 1))
+    >>> found = realize.cancel(realize.TransferMatrix([1, 1.01], [1, 3, 2]), uncertainty=0.02)
+    >>> [(pair.pole, pair.zero, pair.allowed) for pair in found.near]
+    [((-1+0j), (-1.01+0j), 'yes')]
     """
     return forms.cancel(path_for(transfer), transfer, uncertainty)
 

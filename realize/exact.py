@@ -59,7 +59,7 @@ def transfer_matrix(model: Realization) -> TransferMatrix:
     return forms.transfer_matrix(ExactPath(), model)
 
 
-def cancel(transfer: TransferMatrix, *, uncertainty: None = None) -> Cancellation:
+def cancel(transfer: TransferMatrix, *, uncertainty: Any = None) -> Cancellation:
     """Cancel common factors, entry by entry. See `realize.cancel`."""
     return forms.cancel(ExactPath(), transfer, uncertainty)
 

@@ -62,7 +62,7 @@ def transfer_matrix(model: Realization, *, tolerance: float | None = None) -> Tr
 
 
 def cancel(
-    transfer: TransferMatrix, *, uncertainty: None = None, tolerance: float | None = None
+    transfer: TransferMatrix, *, uncertainty: Any = None, tolerance: float | None = None
 ) -> Cancellation:
     """Cancel common factors, entry by entry. See `realize.cancel`."""
     return forms.cancel(FloatingPath(tolerance), transfer, uncertainty)

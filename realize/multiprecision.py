@@ -80,7 +80,7 @@ def transfer_matrix(
 def cancel(
     transfer: TransferMatrix,
     *,
-    uncertainty: None = None,
+    uncertainty: Any = None,
     digits: int = 50,
     tolerance: float | None = None,
 ) -> Cancellation:

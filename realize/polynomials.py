@@ -7,6 +7,7 @@ one, for the rooms that go on computing with it.
 
 from __future__ import annotations
 
+import itertools
 import math
 import threading
 from collections.abc import Callable, Iterator
@@ -551,6 +552,36 @@ def root_in(box: Box, *, multiplicity: int, factor: int) -> Root:
         multiplicity=multiplicity,
         factor=factor,
     )
+
+
+def real_intervals(p: Polynomial) -> tuple[tuple[Fraction, Fraction], ...]:
+    """Return disjoint closed intervals, ascending, with one of the different real roots in each.
+
+    Parameters
+    ----------
+    p : tuple of Fraction
+        Coefficients, descending powers, without leading zeros.
+
+    Raises
+    ------
+    EntryError
+        When p is the zero polynomial.
+    """
+    refuse_zero(p)
+    if len(p) == 1:
+        return ()
+    simple = square_free(p)
+    bits = _FIRST_BITS
+    while True:
+        found = sorted(_interval(r.real) for r in _enclosures(simple, bits) if r.imag.is_zero())
+        if all(one[1] < other[0] for one, other in itertools.pairwise(found)):
+            return tuple(found)
+        bits *= 2
+
+
+def square_free(p: Polynomial) -> Polynomial:
+    """Return the polynomial with the roots of p, once each."""
+    return divide_exact(p, gcd(p, derivative(p)))
 
 
 def root_boxes(f: Polynomial) -> Iterator[tuple[int, tuple[Box, ...]]]:

@@ -27,7 +27,7 @@ __all__ = [
     "Evidence",
     "KalmanParts",
     "Mode",
-    "NearPair",
+    "NearFactor",
     "Part",
     "RankDecision",
     "Reduction",
@@ -454,31 +454,80 @@ class KalmanParts:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
-class NearPair:
-    """A pole and a zero that lie close together and do not cancel.
+class NearFactor:
+    """Poles and zeros that a small change of the coefficients makes cancel, and that do not.
 
     Attributes
     ----------
-    pole, zero : complex
     output, input : int
         Which entry of the transfer matrix (0-based).
+    poles, zeros : tuple of complex
+        What would be dropped, as many of each; a complex pair with both its members.
+    factor : tuple of Fraction
+        Monic, descending powers: the factor that `witness` has more in common.
     change : float
-        Relative size (2-norm of the change of the coefficients over the norm of the
-        coefficients) of the smallest change found that makes the pair cancel.
-    response_change : float
-        Largest change of the frequency response over its largest size, if the pair is dropped;
-        ``inf`` when the pole lies on the stability boundary.
+        Relative size of the smallest change found that makes the factor common: the change of
+        each coefficient over the size at which it counts as large (its own; where it is zero or
+        small by accident, what its neighbours call for), as a root mean square for the numerator
+        and for the denominator, then as one 2-norm. A local minimum, all coefficients free. It
+        depends neither on the unit of time nor on the gain.
+    least_change : float
+        No smaller change makes a common factor of this degree, whichever it is. Zero where
+        doubles cannot tell.
+    witness : TransferMatrix
+        Exact, one input, one output: the fraction changed so that the factor cancels exactly.
+        Within the uncertainty where `allowed` is "yes"; nearest in standard deviations where
+        these were given; else nearest in the sense of `change`.
+    response_change : ResponseChange
+        The largest change of the frequency response, and where, if the pairs are dropped and the
+        gain kept at zero frequency or at infinity, whichever changes less; infinite when a pole
+        that would be dropped lies on the boundary of stability.
     stability : Stability
-        Of the pole.
+        Of the poles: the worst of them.
+    allowed : str or None
+        Whether the uncertainty allows it: "yes", with `witness` within it, entry by entry; "no",
+        when no pair within it has a common factor of this degree; "cannot tell". None without
+        bounds.
+    deviations : float or None
+        For standard deviations and a covariance: distance to the nearest fraction in which the
+        factor cancels, in standard deviations (Mahalanobis distance). A local minimum.
+    confidence : float or None
+        At this confidence the region of the coefficients first touches a fraction in which the
+        factor cancels: chi-squared with the degree of the factor, at `deviations` squared. Above
+        it pole and zero overlap, below it they are apart.
     """
 
-    pole: complex
-    zero: complex
     output: int
     input: int
+    poles: tuple[complex, ...]
+    zeros: tuple[complex, ...]
+    factor: Polynomial
     change: float
-    response_change: float
+    least_change: float
+    witness: TransferMatrix
+    response_change: ResponseChange
     stability: Stability
+    allowed: str | None = None
+    deviations: float | None = None
+    confidence: float | None = None
+
+    @property
+    def pole(self) -> complex:
+        """The first of the poles."""
+        return self.poles[0]
+
+    @property
+    def zero(self) -> complex:
+        """The zero that would be dropped with it."""
+        return self.zeros[0]
+
+    @property
+    def degree(self) -> int:
+        """How many poles, and zeros, would be dropped."""
+        return len(self.poles)
+
+    def __repr__(self) -> str:
+        return f"<NearFactor: degree {self.degree}, near {self.pole:.6g}, change {self.change:.3g}>"
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
@@ -501,7 +550,7 @@ class Cancellation:
     decisions: tuple[RankDecision, ...]
     cautions: tuple[str, ...]
     _factors: Deferred[tuple[Any, ...]]
-    _near: Deferred[tuple[NearPair, ...]]
+    _near: Deferred[tuple[NearFactor, ...]]
 
     @property
     def factors(self) -> tuple[Any, ...]:
@@ -513,8 +562,12 @@ class Cancellation:
         return self._factors.get()
 
     @property
-    def near(self) -> tuple[NearPair, ...]:
-        """Pole-zero pairs that lie close together and do not cancel."""
+    def near(self) -> tuple[NearFactor, ...]:
+        """Poles and zeros that a small change makes cancel, smallest change first.
+
+        Each pair (or complex pair of pairs) alone, and for each degree from two on the nearest
+        common factor of that degree.
+        """
         return self._near.get()
 
     def __repr__(self) -> str:

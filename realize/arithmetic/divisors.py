@@ -14,7 +14,7 @@ from typing import Any, Final
 
 import numpy as np
 
-__all__ = ["split"]
+__all__ = ["convolution", "split", "sylvester", "variable_unit"]
 
 Array = np.ndarray[Any, Any]
 
@@ -46,11 +46,11 @@ def split(f: Array, g: Array, degree: int) -> tuple[Array, Array, Array, float]:
     # Powers of two, so that squares neither overflow nor vanish.
     f_shift, g_shift = (int(np.frexp(np.abs(p).max())[1]) for p in (f, g))
     f, g = np.ldexp(f, -f_shift), np.ldexp(g, -g_shift)
-    unit = _variable_unit(f if f.size >= g.size else g)
+    unit = variable_unit(f if f.size >= g.size else g)
     f, g = (np.ldexp(p, -unit * np.arange(p.size)) for p in (f, g))
     f_norm, g_norm = float(np.linalg.norm(f)), float(np.linalg.norm(g))
     f, g = f / f_norm, g / g_norm
-    null = np.linalg.svd(_sylvester(f, g, degree))[2][-1]
+    null = np.linalg.svd(sylvester(f, g, degree))[2][-1]
     v, u = null[: g.size - degree], -null[g.size - degree :]
     h = _factor_of(f, g, u, v, degree)
     best = _residual(f, g, h, u, v)
@@ -67,7 +67,7 @@ def split(f: Array, g: Array, degree: int) -> tuple[Array, Array, Array, float]:
     return h, u, v, best
 
 
-def _variable_unit(polynomial: Array) -> int:
+def variable_unit(polynomial: Array) -> int:
     """Return the power of two for the variable that levels the first and last coefficients."""
     kept = np.flatnonzero(polynomial)
     span = int(kept[-1] - kept[0])
@@ -77,7 +77,7 @@ def _variable_unit(polynomial: Array) -> int:
     return round((last - first) / span)
 
 
-def _convolution(polynomial: Array, columns: int) -> Array:
+def convolution(polynomial: Array, columns: int) -> Array:
     """Return the matrix whose product with coefficients is the product of polynomials."""
     result = np.zeros((polynomial.size + columns - 1, columns))
     for j in range(columns):
@@ -85,14 +85,14 @@ def _convolution(polynomial: Array, columns: int) -> Array:
     return result
 
 
-def _sylvester(f: Array, g: Array, degree: int) -> Array:
+def sylvester(f: Array, g: Array, degree: int) -> Array:
     """Return [conv(f), conv(g)] with room for cofactors of a common factor of this degree."""
-    return np.hstack([_convolution(f, g.size - degree), _convolution(g, f.size - degree)])
+    return np.hstack([convolution(f, g.size - degree), convolution(g, f.size - degree)])
 
 
 def _factor_of(f: Array, g: Array, u: Array, v: Array, degree: int) -> Array:
     """Return the monic h that fits f = h u and g = h v best; scales u and v along with it."""
-    stacked = np.vstack([_convolution(u, degree + 1), _convolution(v, degree + 1)])
+    stacked = np.vstack([convolution(u, degree + 1), convolution(v, degree + 1)])
     h = np.linalg.lstsq(stacked, np.concatenate([f, g]), rcond=None)[0]
     lead = h[0] if h[0] else 1.0
     u *= lead
@@ -108,16 +108,16 @@ def _gauss_newton(f: Array, g: Array, h: Array, u: Array, v: Array) -> tuple[Arr
     """Return the change of h (leading coefficient held), u and v that lowers the residual."""
     upper = np.hstack(
         [
-            _convolution(u, h.size)[:, 1:],
-            _convolution(h, u.size),
+            convolution(u, h.size)[:, 1:],
+            convolution(h, u.size),
             np.zeros((f.size, v.size)),
         ]
     )
     lower = np.hstack(
         [
-            _convolution(v, h.size)[:, 1:],
+            convolution(v, h.size)[:, 1:],
             np.zeros((g.size, u.size)),
-            _convolution(h, v.size),
+            convolution(h, v.size),
         ]
     )
     right = np.concatenate([f - np.convolve(h, u), g - np.convolve(h, v)])

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import cmath
 import math
+from collections.abc import Callable
+from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
@@ -11,7 +14,7 @@ import scipy.linalg
 from realize.model.realization import Realization
 from realize.results import ResponseChange
 
-__all__ = ["response_change"]
+__all__ = ["Factored", "dropping_change", "response_change"]
 
 Array = np.ndarray[Any, Any]
 
@@ -48,21 +51,115 @@ def _searched(model: Realization, reduced: Realization) -> ResponseChange:
         point = first.beside(second.beside(_point(frequency, period)))
         return _norm(first.at(point) - second.at(point))
 
-    changes = np.array([change(frequency) for frequency in grid])
+    def size(frequency: float) -> float:
+        return _norm(first.at(first.beside(_point(frequency, period))))
+
+    return _highest_of(
+        change, grid, np.array([change(w) for w in grid]), size, np.array([size(w) for w in grid])
+    )
+
+
+def _highest_of(
+    change: Callable[[float], float],
+    grid: Array,
+    changes: Array,
+    size: Callable[[float], float],
+    sizes: Array,
+) -> ResponseChange:
+    """Return where a change is largest, about the highest points of a grid of frequencies."""
     largest, where = float(changes.max()), float(grid[int(changes.argmax())])
     for k in np.argsort(changes)[::-1][:_PEAKS]:
         low, high = grid[max(k - 1, 0)], grid[min(k + 1, len(grid) - 1)]
         frequency, value = _highest(change, float(low), float(high))
         if value > largest:
             largest, where = value, frequency
-    size = max(
-        _norm(first.at(first.beside(_point(frequency, period)))) for frequency in (*grid, where)
-    )
+    whole = max(float(sizes.max()), size(where))
     return ResponseChange(
         size=largest,
-        relative=largest / size if size else 0.0,
+        relative=largest / whole if whole else 0.0,
         frequency=where,
     )
+
+
+@dataclass(frozen=True, slots=True)
+class Factored:
+    """gain * product(s - zeros) / product(s - poles)."""
+
+    gain: float
+    zeros: Array
+    poles: Array
+
+    def at(self, points: Array) -> Array:
+        """Return the values; factors are paired, so that products stay in range."""
+        paired = min(self.zeros.size, self.poles.size)
+        above, below = points[:, None] - self.zeros, points[:, None] - self.poles
+        value = self.gain * np.prod(above[:, :paired] / below[:, :paired], axis=1)
+        rest = np.prod(above[:, paired:], axis=1) / np.prod(below[:, paired:], axis=1)
+        return np.asarray(value * rest)
+
+
+def dropping_change(
+    whole: Factored, kept: Factored, dropped: Factored | None, period: Any
+) -> ResponseChange:
+    """Return how much a fraction changes on the frequency axis when factors are dropped.
+
+    Parameters
+    ----------
+    whole, kept : Factored
+        The fraction before and after.
+    dropped : Factored or None
+        What was dropped, whole = kept * dropped. Then the gain of what is kept is that of the
+        whole at infinity, or at zero frequency, whichever changes less, and the change is computed
+        without cancellation. None: kept is compared as it is.
+    period : number or None
+        None for continuous time.
+    """
+    if dropped is not None:
+        margins = dropped.poles.real if period is None else np.abs(dropped.poles) - 1.0
+        if (margins == 0.0).any():
+            on = complex(dropped.poles[margins == 0.0][0])
+            where = on.imag if period is None else cmath.phase(on) / float(period)
+            return ResponseChange(size=math.inf, relative=math.inf, frequency=abs(where))
+    grid = _frequencies(whole.poles, None if period is None else float(period))
+
+    def points(frequencies: Array) -> Array:
+        found = np.array([_point(float(w), period) for w in frequencies])
+        on = (found[:, None] == whole.poles).any(axis=1)
+        return np.where(on, found + 1e-9 * np.maximum(np.abs(found), 1e-300), found)
+
+    def sizes(frequencies: Array) -> Array:
+        return _finite(whole.at(points(frequencies)))
+
+    def changes(frequencies: Array, factor: float) -> Array:
+        at = points(frequencies)
+        if dropped is None:
+            return _finite(whole.at(at) - kept.at(at))
+        below = np.prod(at[:, None] - dropped.poles, axis=1)
+        moved = np.prod(at[:, None] - dropped.zeros, axis=1) - factor * below
+        return _finite(kept.at(at) * (moved / below))
+
+    def found(factor: float) -> ResponseChange:
+        return _highest_of(
+            lambda w: float(changes(np.array([w]), factor)[0]),
+            grid,
+            changes(grid, factor),
+            lambda w: float(sizes(np.array([w]))[0]),
+            sizes(grid),
+        )
+
+    factors = [1.0]
+    with np.errstate(all="ignore"):
+        if dropped is not None:
+            level = float(dropped.at(np.array([0.0 if period is None else 1.0]))[0].real)
+            if math.isfinite(level) and level:
+                factors.append(level)
+        return min(map(found, factors), key=lambda each: each.size)
+
+
+def _finite(values: Array) -> Array:
+    """Return the moduli; 0.0 where doubles do not reach, so that it is passed over."""
+    sizes = np.abs(values)
+    return np.where(np.isfinite(sizes), sizes, 0.0)
 
 
 class _Response:

@@ -36,8 +36,10 @@ from realize.polynomials import (
     monic,
     multiply,
     power,
+    real_intervals,
     root_boxes,
     roots,
+    square_free,
     strip,
     text,
     to_flint,
@@ -599,3 +601,24 @@ def test_roots_are_frozen_and_pickle() -> None:
     assert (type(root.value), type(root.radius)) == (complex, float)
     with pytest.raises(AttributeError):
         root.radius = 0.0  # type: ignore[misc]
+
+
+def test_real_intervals_hold_one_root_each() -> None:
+    """Different real roots in order, exact where rational; complex and repeated ones not twice."""
+    p = ONE
+    for q in ((1, -1), (1, -1), (1, 0, 1), (1, 0, -2), (1, "-1.0001")):
+        p = multiply(p, poly(*q))
+    found = real_intervals(p)
+    assert len(found) == 4
+    roots = [-(2**0.5), 1.0, 1.0001, 2**0.5]
+    for (low, high), root in zip(found, roots, strict=True):
+        assert float(low) == pytest.approx(root)
+        assert 0 <= high - low < Fraction(1, 10**9)
+    assert all(one[1] < other[0] for one, other in pairwise(found))
+    simple = square_free(p)
+    assert len(simple) == len(p) - 1
+    assert all(evaluate(simple, low) * evaluate(simple, high) <= 0 for low, high in found)
+    assert real_intervals(poly(3)) == ()
+    assert real_intervals(poly(1, 0, 1)) == ()
+    with pytest.raises(EntryError):
+        real_intervals(ZERO)
