@@ -61,6 +61,11 @@ if TYPE_CHECKING:
     from realize.model.files import load, save
     from realize.model.realization import Realization
     from realize.model.transfer import TransferMatrix
+    from realize.nearness.distance import (
+        Distance,
+        distance_to_uncontrollability,
+        distance_to_unobservability,
+    )
     from realize.results import (
         Cancellation,
         KalmanParts,
@@ -82,6 +87,7 @@ __all__ = [
     "BudgetError",
     "Cancellation",
     "DisagreementError",
+    "Distance",
     "EntryError",
     "Examination",
     "HiddenInstabilityWarning",
@@ -119,6 +125,8 @@ __all__ = [
     "cancel",
     "cascade",
     "companion",
+    "distance_to_uncontrollability",
+    "distance_to_unobservability",
     "exact",
     "examine",
     "floating",
@@ -185,6 +193,11 @@ _HOMES = {
     "realize.model.files": ("load", "save"),
     "realize.model.realization": ("Realization",),
     "realize.model.transfer": ("TransferMatrix",),
+    "realize.nearness.distance": (
+        "Distance",
+        "distance_to_uncontrollability",
+        "distance_to_unobservability",
+    ),
     "realize.results": (
         "Cancellation",
         "KalmanParts",

@@ -37,8 +37,6 @@ import numpy as np
 from flint import acb, acb_mat, arb, fmpq
 from scipy.linalg import lapack
 
-from realize.arithmetic.rational import RationalMatrix
-
 __all__ = ["ROUNDOFF", "Pencil", "Point", "rounded"]
 
 Array = np.ndarray[Any, Any]
@@ -139,12 +137,8 @@ class Pencil:
     def decomposition(self, z: complex) -> tuple[Array, Array, Array]:
         """Return the singular value decomposition of M(z), all right vectors included."""
         self.evaluations += 1
-        return np.linalg.svd(self.matrix(z))
-
-    def value(self, z: complex) -> float:
-        """Return the least singular value of M(z) as doubles give it."""
-        self.evaluations += 1
-        return float(np.linalg.svd(self.matrix(z), compute_uv=False)[-1])
+        M = self.matrix(z)
+        return np.linalg.svd(M if z.imag else M.real)
 
     def doubt(self, z: complex, level: float) -> float:
         """Return by how much the corner test at z can err: delta of the module's text."""
@@ -204,10 +198,6 @@ class Pencil:
         for i, row in enumerate(moved):
             row[i] = row[i] - z
         return acb_mat(self.order, self.order + self.inputs, [v for row in moved for v in row])
-
-    def rational(self) -> tuple[RationalMatrix, RationalMatrix]:
-        """Return A and B exactly, in the user's units."""
-        return RationalMatrix.from_array(self.exact[0]), RationalMatrix.from_array(self.exact[1])
 
 
 def _ball(value: Fraction) -> arb:

@@ -42,10 +42,12 @@ from typing import Any, Final
 import numpy as np
 from flint import acb, acb_mat, arb, ctx
 
+from realize.entries import fraction_array
+from realize.errors import VerificationError
 from realize.nearness.pencil import ROUNDOFF, Pencil, Point, rounded
 from realize.nearness.squares import Reduced
 
-__all__ = ["Decomposed", "decompose", "reduce_in_balls", "reduce_in_doubles"]
+__all__ = ["Decomposed", "decompose", "reduce_in_balls", "reduce_in_doubles", "refined_vector"]
 
 Array = np.ndarray[Any, Any]
 
@@ -222,23 +224,19 @@ class Preconditioned:
     rest: Any  # F = G11 - diag(S1)
     large: Array
     rest_size: float
+    inverse: Any  # diag(1 / S1)
 
-    def over(self, rows: Any) -> Any:
-        """Enclose rows G11^-1."""
+    def over(self, rows: Any, enough: float = 0.0) -> Any:
+        """Enclose rows G11^-1, to an error of about ``enough`` or as well as the balls allow."""
         if not len(self.large):
             return rows
         gap = float(self.large[-1])
         share = self.rest_size / gap
-        steps = max(1, math.ceil(ctx.prec / max(-math.log2(max(share, 1e-300)), 1.0)))
-        inverse = [1 / arb(v) for v in self.large.tolist()]
-
-        def divided(matrix: Any) -> Any:
-            table = [[v * d for v, d in zip(r, inverse, strict=True)] for r in matrix.tolist()]
-            return acb_mat(matrix.nrows(), matrix.ncols(), [v for r in table for v in r])
-
-        found = first = divided(rows)
+        bits = ctx.prec if enough <= 0 else min(ctx.prec, 10 - math.log2(min(enough, 1.0)))
+        steps = max(1, math.ceil(bits / max(-math.log2(max(share, 1e-300)), 1.0)))
+        found = first = rows * self.inverse
         for _ in range(steps - 1):
-            found = first - divided(found * self.rest)
+            found = first - found * self.rest * self.inverse
         error = 1.01 * share**steps / (1 - share) * _size(rows) / gap
         doubt = arb(0, error)
         ball = acb(doubt, doubt)
@@ -270,7 +268,11 @@ def precondition(pencil: Pencil, found: Decomposed, k: int) -> Preconditioned | 
     rest_size = _size(rest)
     if len(large) and not rest_size < 0.01 * float(large[-1]):
         return None
+    inverse = acb_mat(n - k, n - k)
+    for i, value in enumerate(large.tolist()):
+        inverse[i, i] = 1 / arb(value)
     return Preconditioned(
+        inverse=inverse,
         corner=_part(G, last, wide),
         corner_slope=_part(P, last, wide),
         above=_part(G, first, wide),
@@ -301,24 +303,29 @@ def reduce_in_balls(
     share = radius * (1 + 2 * turn) / gap
     if share > 0.5:
         return None
-    beside, beside_slope = exact.over(exact.beside), exact.over(exact.beside_slope)
     above, breadth = _size(exact.above), _size(exact.above_slope)
-    enclosed = [
-        exact.corner - beside * exact.above,
-    ]
-    rows = exact.over(beside * exact.inner_slope) - beside_slope
+    beside, beside_slope = exact.over(exact.beside), exact.over(exact.beside_slope)
+    enclosed = [exact.corner - beside * exact.above]
+    # Errors of the rows enter the terms from w on, and those of later rows from w^2 on.
+    fine = enough / max(radius * breadth, 1e-300) if math.isfinite(enough) else 1e-20
+    rows = exact.over(beside * exact.inner_slope, fine) - beside_slope
     enclosed.append(beside * exact.above_slope - exact.corner_slope - rows * exact.above)
-    power = radius
-    while True:
-        enclosed.append(rows * exact.above_slope)
-        rows = exact.over(rows * exact.inner_slope)
-        enclosed[-1] = enclosed[-1] - rows * exact.above
+    # How many terms are needed is guessed from midpoints, and then proved once.
+    row, inner, large = _midpoints(rows)[0], _midpoints(exact.inner_slope)[0], exact.large
+    count, power = 0, radius * radius
+    while n > k and power * float(np.linalg.norm(row)) * breadth > enough / 2:
+        row = (row @ inner) / large
         power *= radius
-        missing = power * radius * _size(rows) * (breadth + above / gap) / (1 - share)
-        if missing <= enough:
-            break
-        if len(enclosed) > _LONGEST:
+        count += 1
+        if count > _LONGEST:
             return None
+    for _ in range(max(count, 1)):
+        enclosed.append(rows * exact.above_slope)
+        rows = exact.over(rows * exact.inner_slope, fine)
+        enclosed[-1] = enclosed[-1] - rows * exact.above
+    missing = radius ** len(enclosed) * _size(rows) * (breadth + above / gap) / (1 - share)
+    if missing > 2 * enough:
+        return None
     terms, power = [], 1.0
     for matrix in enclosed:
         middles, rest = _midpoints(matrix)
@@ -342,10 +349,28 @@ def reduce_in_balls(
     )
 
 
-def midpoint(value: Any) -> tuple[Fraction, Fraction]:
-    """Return the midpoint of a ball as rationals."""
-    parts = []
-    for part in (value.real, value.imag):
-        mantissa, exponent = part.mid().man_exp()
-        parts.append(Fraction(int(mantissa)) * Fraction(2) ** int(exponent))
-    return parts[0], parts[1]
+def refined_vector(pencil: Pencil, found: Decomposed, direction: Array) -> Array:
+    """Return the left vector of the reduced problem in the room of the states, (n, 2).
+
+    ``direction* ([U1 X]* from the left, with [-G21 G11^-1, I])``, to the precision in force; a
+    computed vector alone would leave ``|u* M|`` at the size of the roundoff.
+    """
+    n, k = pencil.order, len(direction)
+    exact = precondition(pencil, found, k)
+    if exact is None:
+        raise VerificationError("the decomposition no longer separates the singular directions")
+    U = _balls(found.left.conj().T)
+    rows = _part(U, range(n - k, n), range(n))
+    if n > k:
+        rows = rows - exact.over(exact.beside) * _part(U, range(n - k), range(n))
+    row = _balls(direction.conj()[None, :]) * rows
+    flat = []
+    for value in row.entries():
+        flat += [_rational(value.real), -_rational(value.imag)]
+    return fraction_array(flat, (n, 2))
+
+
+def _rational(ball: Any) -> Fraction:
+    """Return the midpoint of a ball."""
+    mantissa, exponent = ball.mid().man_exp()
+    return Fraction(int(mantissa)) * Fraction(2) ** int(exponent)

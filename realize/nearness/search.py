@@ -33,6 +33,7 @@ from typing import Any, Final
 
 import numpy as np
 
+from realize.entries import fraction_array
 from realize.errors import PrecisionError
 from realize.nearness.pencil import ROUNDOFF, Pencil, Point, rounded
 from realize.nearness.proof import (
@@ -41,6 +42,7 @@ from realize.nearness.proof import (
     decompose,
     reduce_in_balls,
     reduce_in_doubles,
+    refined_vector,
 )
 from realize.nearness.squares import Reduced
 from realize.polynomials import working_precision
@@ -51,6 +53,9 @@ Array = np.ndarray[Any, Any]
 
 _SHARE: Final = 0.05
 """Share of the room between the bounds that rounding, or a series cut off, may take."""
+
+_NEWS: Final = 0.2
+"""Share of the room between the bounds by which a value must undercut the upper one to be news."""
 
 _STARTS: Final = 3
 """How many eigenvalues the local search begins from."""
@@ -66,6 +71,24 @@ _GRID_BITS: Final = 6
 
 _FIRST: Final = 0.2
 """Half diagonal, over a typical singular value, below which a first decomposition is tried."""
+
+_CORNERS: Final = (0.3, 200.0)
+"""Half diagonals, over the level, between which corners alone are cheaper than a reduced problem."""
+
+_MANY: Final = 12
+"""States from which on that holds; the decomposition of a small matrix is cheap."""
+
+_DOUBTFUL: Final = 3.0
+"""How many times the doubt of a corner test must fit into the level it tests."""
+
+_ROUGH: Final = 0.9
+"""Room between the bounds that is asked for once half of the time is gone."""
+
+_LEFT: Final = 200
+"""How many squares are looked at once more when the time is up."""
+
+_LEAST: Final = 1e-6
+"""The least share of the upper bound that is then worth telling."""
 
 _FINEST: Final = 40
 """Halvings after which the corners of a square are no doubles any more."""
@@ -103,12 +126,22 @@ class Search:
         self.upper = math.inf
         self.point: Point = (Fraction(0), Fraction(0))
         self.lower = 0.0
+        self._goal = rtol
         self._corners: dict[tuple[int, int], tuple[float, float]] = {}
 
     @property
     def level(self) -> float:
         """What has to be proved: the least upper bound less what the caller allows."""
-        return self.upper * (1 - self.rtol)
+        return self.upper * (1 - self._goal)
+
+    @property
+    def _news(self) -> float:
+        """A value below this is worth a local search.
+
+        Nearer the upper bound than the level is: squares astride the curve where sigma equals the
+        level could not be closed, however small.
+        """
+        return self.upper * (1 - _NEWS * self.rtol)
 
     # Upper bounds
 
@@ -141,16 +174,58 @@ class Search:
         if here.value < self.upper:
             self.upper, self.point = here.value, here.point
 
+    def _improved(self, point: Point) -> bool:
+        """Go down from a point; whether the upper bound fell."""
+        before = self.upper
+        self.improve(point)
+        return self.upper < before
+
     def _local(self, point: Point) -> _Local:
         """Return the least singular value at a point, and how it changes nearby."""
         self.check_time()
         found = decompose(self.pencil, point)
-        n = self.pencil.order
-        noise = ROUNDOFF * n * self.pencil.size
-        value = float(found.values[-1])
-        if value * self.rtol > _NOISE * noise:
+        if float(found.values[-1]) * self.rtol > _NOISE * self._noise:
             return _sketch(found)
         self.when_small()
+        reduced, left, least = self._in_balls(found)
+        terms = left.conj() @ reduced.terms
+        return _Local(
+            point=point,
+            value=least,
+            terms=terms,
+            turn=reduced.left,
+            reach=reduced.radius,
+        )
+
+    def settle(self) -> None:
+        """Take the point on the real line beside the best one where that costs next to nothing."""
+        x, y = self.point
+        if y:
+            here = self._local((x, Fraction(0)))
+            if here.value <= self.upper * (1 + _SHARE * self.rtol):
+                self.improve(here.point)
+                if self.point[1]:
+                    self.upper, self.point = here.value, here.point
+
+    def vector(self) -> Array:
+        """Return the left singular vector at the best point, (n, 2): rational real, imaginary."""
+        found = decompose(self.pencil, self.point)
+        if self.upper * self.rtol > _NOISE * self._noise:
+            flat = [Fraction(part) for v in found.left[:, -1] for part in (v.real, v.imag)]
+            return fraction_array(flat, (self.pencil.order, 2))
+        _, left, _ = self._in_balls(found)
+        with working_precision(bits_for(self.upper, self.rtol)):
+            return refined_vector(self.pencil, found, left)
+
+    @property
+    def _noise(self) -> float:
+        """About what rounding does to a singular value taken from doubles."""
+        return ROUNDOFF * self.pencil.order * self.pencil.size
+
+    def _in_balls(self, found: Decomposed) -> tuple[Reduced, Array, float]:
+        """Return the reduced problem, the left singular vector in it, the least singular value."""
+        n, noise = self.pencil.order, self._noise
+        value = float(found.values[-1])
         k = next(
             (k for k in range(1, n) if found.values[n - 1 - k] > max(_NOISE * noise, 8 * value)), n
         )
@@ -162,17 +237,13 @@ class Search:
                 reduced = reduce_in_balls(self.pencil, found, k, radius, math.inf)
             if reduced is None:
                 raise PrecisionError(
-                    f"near {rounded(point)} doubles do not separate the singular values of "
+                    f"near {rounded(found.point)} doubles do not separate the singular values of "
                     "[A - zI, B]; nothing is proved there"
                 )
             left, least, _ = np.linalg.svd(reduced.terms[0])
-            if least[-1] > 1e6 * reduced.terms.shape[0] * 2.0**-bits:
-                break
+            if least[-1] > 1e6 * 2.0**-bits:
+                return reduced, left[:, -1], float(least[-1])
             bits *= 2
-        terms = left[:, -1].conj() @ reduced.terms
-        return _Local(
-            point=point, value=float(least[-1]), terms=terms, turn=reduced.left, reach=radius
-        )
 
     # Lower bounds
 
@@ -194,12 +265,50 @@ class Search:
         self._left = math.floor((low - room) / unit) * unit
         columns = math.ceil((width + unit) / self._side)
         self._stack = [_Square(level=0, column=i, row=0) for i in reversed(range(columns))]
-        level = math.inf
+        last = self.deadline
+        now = time.monotonic()
+        self.deadline = now + (last - now) / 2
+        if not self._emptied():
+            # Half of the time is gone. A rough bound comes first now, lest there be none.
+            left, goal = list(self._stack), self._goal
+            self._goal = max(goal, _ROUGH)
+            self.deadline = now + 0.75 * (last - now)
+            if self._emptied():
+                self.lower = self.level
+            self._stack, self._goal, self.deadline = left, goal, last
+            if not self._emptied():
+                self.lower = max(self.lower, self._left_open())
+                raise OutOfTime
+        self.lower = self.level
+
+    def _emptied(self) -> bool:
+        """Close squares until none is left; False when the time is up before."""
         while self._stack:
-            self.check_time()
-            self._close(self._stack.pop())
-            level = self.level
-        self.lower = min(level, self.level)
+            square = self._stack.pop()
+            try:
+                self._close(square)
+            except OutOfTime:
+                self._stack.append(square)
+                return False
+            if time.monotonic() > self.deadline:
+                return not self._stack
+        return True
+
+    def _left_open(self) -> float:
+        """Return a lower bound over the squares still open, from their centres alone.
+
+        The least singular value changes no faster than the point moves.
+        """
+        bound = self.level
+        for square in self._stack[:_LEFT]:
+            side = self._side * 0.5**square.level
+            z = rounded(self._centre(square))
+            radius = side * math.sqrt(0.5) * (1 + 1e-14) + 4 * ROUNDOFF * abs(z)
+            while bound > _LEAST * self.upper and not self.pencil.above(
+                z, (bound + radius + self.pencil.slack) ** 2 * (1 + 1e-12)
+            ):
+                bound /= 2
+        return 0.0 if len(self._stack) > _LEFT or bound <= _LEAST * self.upper else bound
 
     def _close(self, square: _Square) -> None:
         """Close a square, or put what is left of it on the stack."""
@@ -215,17 +324,17 @@ class Search:
         if self._worth(square, near, radius):
             found = decompose(self.pencil, centre)
             known = (near, found.values)
+            if found.values[-1] + self.pencil.slack < self._news and self._improved(centre):
+                self._stack.append(square)
+                return
             k = found.split(radius, target)
             if k is not None:
                 reduced = self._reduced(found, k, radius, target)
                 if reduced is not None:
-                    cover = reduced.cover(side, target)
-                    if cover.low is not None:
-                        before = self.upper
-                        self.improve(_moved(centre, cover.low))
-                        if self.upper < before:
-                            self._stack.append(square)
-                            return
+                    cover = reduced.cover(side, target, self._news)
+                    if cover.low is not None and self._improved(_moved(centre, cover.low)):
+                        self._stack.append(square)
+                        return
                     if cover.open != ((0, 0, 0),):
                         self._stack += [
                             _Square(
@@ -250,6 +359,11 @@ class Search:
 
     def _worth(self, square: _Square, centre: complex, radius: float) -> bool:
         """Whether a decomposition at the centre may lead to a reduced problem."""
+        level = self.level
+        low, high = _CORNERS
+        banded = self.pencil.order >= _MANY and low * level < radius < high * level
+        if banded and self._affordable(centre, radius):
+            return False
         if square.known is None:
             return radius < _FIRST * self.pencil.size / math.sqrt(self.pencil.order)
         where, values = square.known
@@ -286,13 +400,18 @@ class Search:
                     self._left + self._side * 0.5**square.level * (square.column + i),
                     self._side * 0.5**square.level * (square.row + j),
                 )
-                if 3 * self.pencil.doubt(z, level) > level:
+                if not self._affordable(z, radius):
                     return False
                 if not self.pencil.above(z, level):
                     self._corners[key] = (good, level)
                     return False
                 self._corners[key] = (level, bad)
         return True
+
+    def _affordable(self, z: complex, radius: float) -> bool:
+        """Whether rounding leaves the corner test for a square something to say."""
+        level = self.level**2 + radius * radius
+        return _DOUBTFUL * self.pencil.doubt(z, level) < level
 
     def _centre(self, square: _Square) -> Point:
         side = Fraction(self._side) / 2 ** (square.level + 1)

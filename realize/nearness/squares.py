@@ -64,8 +64,8 @@ Array = np.ndarray[Any, Any]
 _DEEPEST: Final = 48
 """How often a square may be halved inside one reduced problem; its floats have 53 bits."""
 
-_WIDEST: Final = 1024
-"""How many squares of one size may stay open inside one reduced problem."""
+_WIDEST: Final = (256, 32)
+"""How many squares of one size may stay open inside one reduced problem, of one row or more."""
 
 _FEW: Final = 5
 """How many squares a reduced problem may leave open, unless they are its quarters."""
@@ -79,7 +79,7 @@ class Cover:
     """What a reduced problem could say about a square.
 
     ``open`` holds (level, column, row) of the squares left, level 0 being the whole; ``low`` an
-    offset where the least singular value lies below the level asked for, None when none was met.
+    offset where the least singular value is so low that it is news, None when none was met.
     """
 
     open: tuple[tuple[int, int, int], ...]
@@ -160,7 +160,7 @@ class Reduced:
         norm = np.sqrt((total + np.sqrt(np.maximum(total**2 - 4 * product**2, 0.0))) / 2)
         return np.asarray(ok & (norm * (target * (1 + _SAFE)) <= 1))
 
-    def cover(self, side: float, target: float) -> Cover:
+    def cover(self, side: float, target: float, news: float) -> Cover:
         """Say on which parts of the square around the point sigma(M) >= target is proved.
 
         Parameters
@@ -168,6 +168,8 @@ class Reduced:
         side : float
             The side of the square; its corners lie within the radius.
         target : float
+        news : float
+            At least the target; the search ends at a centre where sigma(M) is lower than this.
         """
         wanted = (target + self.shift) * self.stretch * (1 + _SAFE)
         sizes = self._sizes()
@@ -189,7 +191,7 @@ class Reduced:
             proved = self._inside(
                 least * (1 - _SAFE) - lost - half**2 / 2 * bend * (1 + _SAFE), reach, wanted
             )
-            below = here < target
+            below = here < news
             if below.any():
                 low = complex(w[int(np.argmin(np.where(below, here, np.inf)))])
                 break
@@ -200,7 +202,7 @@ class Reduced:
             xs, ys = xs[again], ys[again]
             if not len(xs):
                 break
-            if 4 * len(xs) > _WIDEST:
+            if 4 * len(xs) > _WIDEST[self.rows > 1]:
                 break
             xs = np.concatenate([2 * xs, 2 * xs + 1, 2 * xs, 2 * xs + 1])
             ys = np.concatenate([2 * ys, 2 * ys, 2 * ys + 1, 2 * ys + 1])

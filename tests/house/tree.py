@@ -22,7 +22,7 @@ ROOMS: tuple[tuple[str, ...], ...] = (
     ("forms",),
     ("exact", "floating", "multiprecision", "dispatch"),
     ("convert",),
-    ("examination",),
+    ("examination", "nearness"),
     ("",),
     ("cli", "demo", "__main__"),
 )
