@@ -72,8 +72,8 @@ def check_rtol(rtol: float) -> float:
     number = isinstance(rtol, (int, float)) and not isinstance(rtol, bool)
     if not number or not SMALLEST_RTOL <= rtol < 1:
         raise ToleranceError(
-            f"rtol is {rtol!r}; wanted a number from {SMALLEST_RTOL:g} to below 1, the room between "
-            "the bounds over the upper one",
+            f"rtol is {rtol!r}; wanted a number from {SMALLEST_RTOL:g} to below 1, the room "
+            "between the bounds over the upper one",
             argument="rtol",
             found=repr(rtol),
         )

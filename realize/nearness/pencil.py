@@ -9,14 +9,14 @@ What is proved with doubles here is the corner test. With ``H(z) = M(z) M(z)*`` 
     G = fl(W - x S + i y K + (|z|^2 - level - delta) I),   W = A A' + B B', S = A + A', K = A - A'
 
 is handed to a Cholesky factorisation. Let u be the roundoff, F the Frobenius norm of [A, B], and
-``gamma_k = k u / (1 - k u)``. The inner products in W err by at most ``gamma_{n+m} F^2`` (Frobenius
-norm, hence 2-norm); the rounding of S and K, the two products and the three sums add at most
-``u (12 F^2 + 24 F |z| + 12 |z|^2 + 8 level)``. If the factorisation runs to its end in floating point
-its factor R satisfies ``R* R = G + D`` with ``|D_ij| <= gamma' |r_i| |r_j|``, r_i the columns, and
-``|r_i|^2 <= G_ii / (1 - gamma')``, so the 2-norm of D is at most ``gamma' / (1 - gamma') trace(G)``.
-For complex numbers ``gamma' = gamma_{4 (n + 2)}`` is safe: a complex product errs by less than
-sqrt(2) gamma_2. Since R* R is positive semidefinite, the smallest eigenvalue of H(z) is at least
-``level`` as soon as ``delta`` exceeds all of these together.
+``gamma_k = k u / (1 - k u)``. The inner products in W err by at most ``gamma_{n+m} F^2``
+(Frobenius norm, hence 2-norm); the rounding of S and K, the two products and the three sums add at
+most ``u (12 F^2 + 24 F |z| + 12 |z|^2 + 8 level)``. If the factorisation runs to its end in
+floating point its factor R satisfies ``R* R = G + D`` with ``|D_ij| <= gamma' |r_i| |r_j|``, r_i
+the columns, and ``|r_i|^2 <= G_ii / (1 - gamma')``, so the 2-norm of D is at most ``gamma' / (1 -
+gamma') trace(G)``. For complex numbers ``gamma' = gamma_{4 (n + 2)}`` is safe: a complex product
+errs by less than sqrt(2) gamma_2. Since R* R is positive semidefinite, the smallest eigenvalue of
+H(z) is at least ``level`` as soon as ``delta`` exceeds all of these together.
 
 References
 ----------
@@ -99,7 +99,9 @@ class Pencil:
         self.order, self.inputs = B.shape
         self.A, self.B = _scaled(A, exponent), _scaled(B, exponent)
         self.slack = self._rounding()
-        self.size = 1.0001 * math.hypot(np.linalg.norm(self.A), np.linalg.norm(self.B))
+        self.size = 1.0001 * math.hypot(
+            float(np.linalg.norm(self.A)), float(np.linalg.norm(self.B))
+        )
         self.evaluations = 0
         self._gram = self.A @ self.A.T + self.B @ self.B.T
         self._sum, self._difference = self.A + self.A.T, self.A - self.A.T
@@ -148,7 +150,7 @@ class Pencil:
         whole = (self.size + math.sqrt(square)) ** 2
         trace += 1e-12 * self.order * whole  # its own cancellation
         terms = 1.02 * (self.order + self.inputs + 12) * whole
-        return ROUNDOFF * (terms + 4.2 * (self.order + 2) * trace + 8 * level) + _TINY
+        return float(ROUNDOFF * (terms + 4.2 * (self.order + 2) * trace + 8 * level) + _TINY)
 
     def above(self, z: complex, level: float) -> bool:
         """Whether it is proved that no eigenvalue of M(z) M(z)* lies below the level.

@@ -19,17 +19,17 @@ U S V are computed; each rounds by at most ``gamma_{4 n}`` times the product of 
 ``sqrt(n) |S|``. The rows c_j and the terms y_j round too: a product of a row with P11 by at most
 ``e = 8 n gamma_4`` of its length per step, which sums to less than ``6 e r^2 q`` for r q <= 1/2.
 
-*In balls.* ``G = U* M(c) V*`` and ``P = U* [I 0] V*`` are enclosed; ``G11 = S1 + F`` with F small, and
-``x G11^-1`` is the limit of ``x -> (b - x F) S1^-1``; after i steps, begun at zero, the error is at
-most ``f^i / (1 - f) |b| / s`` with ``f = |F| / s``. What is left of U and V is
-``sigma(M) >= sigma(G) / (|U| |V|)``.
+*In balls.* ``G = U* M(c) V*`` and ``P = U* [I 0] V*`` are enclosed; ``G11 = S1 + F`` with F small,
+and ``x G11^-1`` is the limit of ``x -> (b - x F) S1^-1``; after i steps, begun at zero, the error
+is at most ``f^i / (1 - f) |b| / s`` with ``f = |F| / s``. What is left of U and V is ``sigma(M) >=
+sigma(G) / (|U| |V|)``.
 
 References
 ----------
-Rump (2006), Verification of positive definiteness, BIT 46. Rump (2010), Verification methods: rigorous results using
-floating-point arithmetic, Acta Numerica 19, for preconditioners that need no proof of their own.
-Johansson (2017), Arb: efficient arbitrary-precision midpoint-radius interval arithmetic, IEEE
-Transactions on Computers 66.
+Rump (2006), Verification of positive definiteness, BIT 46. Rump (2010), Verification methods:
+rigorous results using floating-point arithmetic, Acta Numerica 19, for preconditioners that need
+no proof of their own. Johansson (2017), Arb: efficient arbitrary-precision midpoint-radius
+interval arithmetic, IEEE Transactions on Computers 66.
 """
 
 from __future__ import annotations
@@ -54,13 +54,22 @@ Array = np.ndarray[Any, Any]
 _LONGEST: Final = 80
 """How many terms of the series are taken at most; the square must be smaller then."""
 
+_MOST_ROWS: Final = 3
+"""How many singular directions are kept at most."""
+
+_CLEAR: Final = 3.0
+"""How many times the offset the singular values left out must be; the series needs it."""
+
+_APART: Final = 1.4
+"""... and how many times the level; the bounds need it."""
+
 _SPARE_BITS: Final = 40
 """Bits of a ball beyond those that the distance and the ratio asked for call for."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Decomposed:
-    """A computed singular value decomposition at a point: ``M = left @ [diag(values) 0] @ right``."""
+    """A computed decomposition at a point: ``M = left @ [diag(values) 0] @ right``."""
 
     point: Point
     left: Array
@@ -78,11 +87,6 @@ class Decomposed:
             if k == size or values[size - 1 - k] >= max(_CLEAR * radius, _APART * target):
                 return k
         return None
-
-
-_MOST_ROWS: Final = 3
-_CLEAR: Final = 3.0
-_APART: Final = 2.0
 
 
 def decompose(pencil: Pencil, point: Point) -> Decomposed:
@@ -240,9 +244,7 @@ class Preconditioned:
         error = 1.01 * share**steps / (1 - share) * _size(rows) / gap
         doubt = arb(0, error)
         ball = acb(doubt, doubt)
-        return acb_mat(
-            found.nrows(), found.ncols(), [value + ball for value in found.entries()]
-        )
+        return acb_mat(found.nrows(), found.ncols(), [value + ball for value in found.entries()])
 
 
 def precondition(pencil: Pencil, found: Decomposed, k: int) -> Preconditioned | None:

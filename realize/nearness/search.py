@@ -1,9 +1,9 @@
 """Branch and bound over the complex plane for the distance to uncontrollability.
 
-*Where to look.* For z at distance d from the field of values of A, ``sigma(A - zI) >= d``, and B adds
-to it. So the least singular value of M(z) = [A - zI, B] is below a number t only within t of the
-field of values, and a box around that is covered. A and B are real, so ``sigma(M(z))`` is the same
-at the conjugate point: the upper half is enough.
+*Where to look.* For z at distance d from the field of values of A, ``sigma(A - zI) >= d``, and B
+adds to it. So the least singular value of M(z) = [A - zI, B] is below a number t only within t of
+the field of values, and a box around that is covered. A and B are real, so ``sigma(M(z))`` is the
+same at the conjugate point: the upper half is enough.
 
 *What closes a square* of half diagonal r around c, for a level t. Either its corners:
 ``sigma(M(z))^2 - |z - c|^2`` is the least of ``u* H(z) u - |z - c|^2`` over unit vectors u, each of
@@ -66,6 +66,9 @@ _STEPS: Final = 30
 _NOISE: Final = 1e3
 """How far above the roundoff a singular value must lie to be taken from doubles."""
 
+_SMALLEST: Final = 1e-140
+"""The least distance over the size of the pair that is searched for: its square is a double too."""
+
 _GRID_BITS: Final = 6
 """Bits of the side of the largest squares."""
 
@@ -73,7 +76,7 @@ _FIRST: Final = 0.2
 """Half diagonal, over a typical singular value, below which a first decomposition is tried."""
 
 _CORNERS: Final = (0.3, 200.0)
-"""Half diagonals, over the level, between which corners alone are cheaper than a reduced problem."""
+"""Half diagonals, over the level, between which corners are cheaper than a reduced problem."""
 
 _MANY: Final = 12
 """States from which on that holds; the decomposition of a small matrix is cheap."""
@@ -157,7 +160,7 @@ class Search:
     def improve(self, point: Point) -> None:
         """Go down from a point to a local minimum, and keep it if it is the least so far.
 
-        Newton's method in a trust region, on the square of ``v [l, I] M`` over that of ``v [l, I]``;
+        Newton's method in a trust region, on ``|v [l, I] M|^2 / |v [l, I]|^2``;
         see `realize.nearness.squares`.
         """
         here = self._local(point)
@@ -217,10 +220,15 @@ class Search:
         with working_precision(bits_for(self.upper, self.rtol)):
             return refined_vector(self.pencil, found, left)
 
+    def _told(self, point: Point) -> complex:
+        """Return a point in the user's units, for a message."""
+        unit = Fraction(2) ** self.pencil.exponent
+        return rounded((point[0] * unit, point[1] * unit))
+
     @property
     def _noise(self) -> float:
         """About what rounding does to a singular value taken from doubles."""
-        return ROUNDOFF * self.pencil.order * self.pencil.size
+        return float(ROUNDOFF * self.pencil.order * self.pencil.size)
 
     def _in_balls(self, found: Decomposed) -> tuple[Reduced, Array, float]:
         """Return the reduced problem, the left singular vector in it, the least singular value."""
@@ -237,11 +245,17 @@ class Search:
                 reduced = reduce_in_balls(self.pencil, found, k, radius, math.inf)
             if reduced is None:
                 raise PrecisionError(
-                    f"near {rounded(found.point)} doubles do not separate the singular values of "
+                    f"near {self._told(found.point)} doubles do not separate the singular values of "
                     "[A - zI, B]; nothing is proved there"
                 )
             left, least, _ = np.linalg.svd(reduced.terms[0])
-            if least[-1] > 1e6 * 2.0**-bits:
+            if bits > -math.log2(_SMALLEST) + 200:
+                raise PrecisionError(
+                    f"[A - zI, B] has a singular value below {_SMALLEST:g} of its size near "
+                    f"{self._told(found.point)}, which is out of the range of this search. The "
+                    "model is not exactly uncontrollable; ask realize.exact what its small entries do"
+                )
+            if least[-1] > max(1e6 * 2.0**-bits, _SMALLEST):
                 return reduced, left[:, -1], float(least[-1])
             bits *= 2
 
@@ -257,7 +271,8 @@ class Search:
         """
         low, high, top = self.pencil.field_of_values()
         room = self.upper * (1 + 1e-9) + self.pencil.slack
-        width, height = high - low + 2 * room, top + room
+        width = high - low + 2 * room
+        height = max(top + room, width / 8)
         # Corners must be doubles, so the grid has few bits: its unit is a power of two.
         exponent = math.frexp(height)[1] - _GRID_BITS
         unit = 2.0**exponent
@@ -371,9 +386,7 @@ class Search:
         n = len(values)
         return n <= 3 or float(best[max(n - 4, 0)]) >= 3 * radius
 
-    def _reduced(
-        self, found: Decomposed, k: int, radius: float, target: float
-    ) -> Reduced | None:
+    def _reduced(self, found: Decomposed, k: int, radius: float, target: float) -> Reduced | None:
         room = _SHARE * self.rtol * target
         noise = ROUNDOFF * self.pencil.order**2 * self.pencil.size
         if room > noise:
@@ -411,7 +424,7 @@ class Search:
     def _affordable(self, z: complex, radius: float) -> bool:
         """Whether rounding leaves the corner test for a square something to say."""
         level = self.level**2 + radius * radius
-        return _DOUBTFUL * self.pencil.doubt(z, level) < level
+        return bool(_DOUBTFUL * self.pencil.doubt(z, level) < level)
 
     def _centre(self, square: _Square) -> Point:
         side = Fraction(self._side) / 2 ** (square.level + 1)

@@ -128,7 +128,7 @@ class Reduced:
 
     def _sizes(self) -> Array:
         """Return |y_j|, (J + 1)."""
-        return np.sqrt((np.abs(self.terms) ** 2).sum(axis=(1, 2)))
+        return np.asarray(np.sqrt((np.abs(self.terms) ** 2).sum(axis=(1, 2))))
 
     def at(self, offsets: Array) -> tuple[Array, Array]:
         """Return Y and its derivative at offsets (N), each of shape (N, k, k + m)."""
@@ -197,7 +197,9 @@ class Reduced:
                 break
             # Where even the centre alone is not proved, smaller squares will not help here.
             hopeless = ~proved & ~self._inside(here * (1 - _SAFE) - lost, np.abs(w), wanted)
-            left += [(level, int(x), int(y)) for x, y in zip(xs[hopeless], ys[hopeless], strict=True)]
+            left += [
+                (level, int(x), int(y)) for x, y in zip(xs[hopeless], ys[hopeless], strict=True)
+            ]
             again = ~proved & ~hopeless
             xs, ys = xs[again], ys[again]
             if not len(xs):
@@ -232,7 +234,7 @@ def _gathered(left: list[tuple[int, int, int]]) -> tuple[tuple[int, int, int], .
 def _least(value: Array) -> Array:
     """Return the least singular value of each of a stack of matrices (N, k, k + m)."""
     if value.shape[1] == 1:
-        return np.sqrt((np.abs(value) ** 2).sum(axis=(1, 2)))
+        return np.asarray(np.sqrt((np.abs(value) ** 2).sum(axis=(1, 2))))
     return np.asarray(np.linalg.svd(value, compute_uv=False)[:, -1])
 
 

@@ -1,4 +1,4 @@
-"""The exact side: a vector that proves the upper bound, and the real model that is not controllable.
+"""The exact side: a vector that proves the upper bound, and a real model with a hidden mode.
 
 *The upper bound.* For any row u* and point z, ``D = -u (u* M(z)) / |u|^2`` gives
 ``u* (M(z) + D) = 0``: the pair (A, B) + D has the uncontrollable mode z, and the 2-norm of D is
@@ -10,10 +10,10 @@ of complex modes) and any real L
     A' = A - W' (W W')^-1 (W A - L W),      B' = B - W' (W W')^-1 W B
 
 satisfies ``W A' = L W`` and ``W B' = 0``, so the eigenvalues of L are uncontrollable modes. With
-``R = [W A - L W, W B]`` the change has the Gram matrix ``R' (W W')^-1 R``, so its 2-norm is the root of
-the largest eigenvalue of ``(W W')^-1 R R'``. For given W with orthonormal rows
-``R R' = R0 R0' + (W A W' - L)(W A W' - L)'``, where R0 belongs to ``L = W A W'``: that L is the best
-one whatever the norm. What is left is a minimum over the subspaces spanned by W, which is not
+``R = [W A - L W, W B]`` the change has the Gram matrix ``R' (W W')^-1 R``, so its 2-norm is the
+root of the largest eigenvalue of ``(W W')^-1 R R'``. For given W with orthonormal rows
+``R R' = R0 R0' + (W A W' - L)(W A W' - L)'``, where R0 belongs to ``L = W A W'``: that L is the
+best one whatever the norm. What is left is a minimum over the subspaces spanned by W, which is not
 smooth where both singular values of R agree; it is approached with the p-norm of the two, p
 growing. Its gradient, for orthonormal W and ``S = f^(1-p) G^(p-1)``, ``G = R R'``, is
 ``2 (S (A R1' + B R2')' - L' S R1)`` made orthogonal to W, R1 and R2 being the two blocks of R.
@@ -165,7 +165,9 @@ def real_model(pencil: Pencil, pair: Pair, value: float) -> RealModel:
             bits = _SPARE_BITS + max(0, -math.frexp(value)[1])
             better = (_best_plane(pencil, start, value), _best_line(pencil, pair, value))
             found += [
-                _changed(pencil, [[Fraction(round(v * 2.0**bits), 2**bits) for v in row] for row in W])
+                _changed(
+                    pencil, [[Fraction(round(v * 2.0**bits), 2**bits) for v in row] for row in W]
+                )
                 for W in better
             ]
     return min(found, key=lambda model: model.square)
@@ -188,7 +190,9 @@ def _changed(pencil: Pencil, rows: Any) -> RealModel:
         half = (gram[0, 0] + gram[1, 1]) / 2
         rest = half * half - (gram[0, 0] * gram[1, 1] - gram[0, 1] * gram[1, 0])
         square = half + _root_rational(rest)
-    return RealModel(A=(A - lift @ first).to_array(), B=(B - lift @ second).to_array(), square=square)
+    return RealModel(
+        A=(A - lift @ first).to_array(), B=(B - lift @ second).to_array(), square=square
+    )
 
 
 def _root_rational(square: Fraction) -> Fraction:
