@@ -292,7 +292,7 @@ def _hidden(model: Realization, near: complex, budget: float | None) -> Distance
 
 
 def _pair(search: Search) -> Pair:
-    return exact_pair(search.pencil, search.vector(), search.point, search.upper)
+    return exact_pair(search.pencil, search.vector(), search.upper)
 
 
 def _in_doubles(pair: Pair) -> complex:
@@ -324,6 +324,7 @@ def _out_of_time(search: Search, budget: float | None, spent: float) -> BudgetEr
     lower = upper = point = None
     told = "nothing was reached"
     if math.isfinite(search.upper):
+        search.deadline = math.inf  # the last few steps must be made
         pair = _pair(search)
         upper, point = root_above(pair.square), _in_doubles(pair)
         lower = _root_below(search.lower, Fraction(2) ** search.pencil.exponent)

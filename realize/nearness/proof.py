@@ -57,6 +57,9 @@ _LONGEST: Final = 80
 _MOST_ROWS: Final = 3
 """How many singular directions are kept at most."""
 
+_MOST_ROWS_BELOW: Final = 8
+"""... where the squares are smaller than what doubles can tell."""
+
 _CLEAR: Final = 3.0
 """How many times the offset the singular values left out must be; the series needs it."""
 
@@ -76,15 +79,19 @@ class Decomposed:
     values: Array
     right: Array
 
-    def split(self, radius: float, target: float) -> int | None:
+    def split(self, radius: float, target: float, floor: float) -> int | None:
         """Return how many small singular directions to keep for a square, None if too many.
 
-        The large ones must stay clear of the level and of the offset, so that little is lost.
+        The large ones must stay clear of the level and of the offset, so that little is lost, and
+        of a floor: nearer the roundoff doubles do not tell one direction from another.
         """
         values = self.values
         size = len(values)
-        for k in range(1, min(_MOST_ROWS, size) + 1):
-            if k == size or values[size - 1 - k] >= max(_CLEAR * radius, _APART * target):
+        enough = max(_CLEAR * radius, _APART * target, floor)
+        # Below the floor no smaller square will need fewer.
+        most = _MOST_ROWS if radius > floor else _MOST_ROWS_BELOW
+        for k in range(1, min(most, size) + 1):
+            if k == size or values[size - 1 - k] >= enough:
                 return k
         return None
 
@@ -168,7 +175,8 @@ def reduce_in_doubles(
         right_rest=0.0,
         radius=radius * (1 + 1e-12),
         tail=missing,
-        shift=residual + pencil.slack + 1.1 * radius * turn,
+        # The centre was rounded, too.
+        shift=residual + pencil.slack + 1.1 * radius * turn + 4 * ROUNDOFF * z_size,
         stretch=1 + 1.1 * turn,
     )
 

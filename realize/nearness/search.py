@@ -94,7 +94,7 @@ _LEAST: Final = 1e-6
 """The least share of the upper bound that is then worth telling."""
 
 _FINEST: Final = 40
-"""Halvings after which the corners of a square are no doubles any more."""
+"""Halvings after which corners are not looked at any more, if they are doubles so long."""
 
 
 class OutOfTime(Exception):  # noqa: N818  # caught inside the room, never shown
@@ -245,15 +245,15 @@ class Search:
                 reduced = reduce_in_balls(self.pencil, found, k, radius, math.inf)
             if reduced is None:
                 raise PrecisionError(
-                    f"near {self._told(found.point)} doubles do not separate the singular values of "
-                    "[A - zI, B]; nothing is proved there"
+                    f"near {self._told(found.point)} doubles do not separate the singular values "
+                    "of [A - zI, B]; nothing is proved there"
                 )
             left, least, _ = np.linalg.svd(reduced.terms[0])
             if bits > -math.log2(_SMALLEST) + 200:
                 raise PrecisionError(
                     f"[A - zI, B] has a singular value below {_SMALLEST:g} of its size near "
                     f"{self._told(found.point)}, which is out of the range of this search. The "
-                    "model is not exactly uncontrollable; ask realize.exact what its small entries do"
+                    "model is not exactly uncontrollable; ask realize.exact about small entries"
                 )
             if least[-1] > max(1e6 * 2.0**-bits, _SMALLEST):
                 return reduced, left[:, -1], float(least[-1])
@@ -279,6 +279,9 @@ class Search:
         self._side = math.ceil(height / unit) * unit
         self._left = math.floor((low - room) / unit) * unit
         columns = math.ceil((width + unit) / self._side)
+        # So many halvings leave every corner a whole number of units that a double holds.
+        farthest = max(abs(self._left), abs(self._left + columns * self._side), self._side)
+        self._finest = min(_FINEST, 52 - math.frexp(farthest / unit)[1])
         self._stack = [_Square(level=0, column=i, row=0) for i in reversed(range(columns))]
         last = self.deadline
         now = time.monotonic()
@@ -335,14 +338,19 @@ class Search:
         centre = self._centre(square)
         near = rounded(centre)
         target = self.level
-        radius += 4 * ROUNDOFF * abs(near)  # the centre rounds
         if self._worth(square, near, radius):
             found = decompose(self.pencil, centre)
             known = (near, found.values)
             if found.values[-1] + self.pencil.slack < self._news and self._improved(centre):
                 self._stack.append(square)
                 return
-            k = found.split(radius, target)
+            floor = _NOISE * self._noise
+            k = found.split(radius, target, floor)
+            if k is None and radius < floor:
+                raise PrecisionError(
+                    f"near {self._told(centre)} more singular values of [A - zI, B] lie within "
+                    "rounding of zero than this search can tell apart; nothing is proved there"
+                )
             if k is not None:
                 reduced = self._reduced(found, k, radius, target)
                 if reduced is not None:
@@ -397,7 +405,7 @@ class Search:
             return reduce_in_balls(self.pencil, found, k, radius, room)
 
     def _by_corners(self, square: _Square, radius: float) -> bool:
-        if square.level > _FINEST:
+        if square.level > self._finest:
             return False
         level = ((self.level + self.pencil.slack) ** 2 + radius * radius) * (1 + 1e-12)
         finest = 1 << (_FINEST - square.level)

@@ -60,7 +60,8 @@ def root_above(square: Fraction) -> float:
     shift = 128 - (square.numerator.bit_length() - square.denominator.bit_length())
     shift += shift % 2
     scaled = square * Fraction(2) ** shift
-    root = Fraction(math.isqrt(math.ceil(scaled)) + 1) / Fraction(2) ** (shift // 2)
+    floor = math.isqrt(math.floor(scaled))
+    root = Fraction(floor + (floor * floor != scaled)) / Fraction(2) ** (shift // 2)
     try:
         found = float(root)
     except OverflowError:
@@ -91,15 +92,13 @@ class Pair:
     perturbation: tuple[Array, Array]
 
 
-def exact_pair(pencil: Pencil, vector: Array, point: Point, value: float) -> Pair:
+def exact_pair(pencil: Pencil, vector: Array, value: float) -> Pair:
     """Return the pair for a vector (object array of pairs of Fraction), rounded to short numbers.
 
     Parameters
     ----------
     vector : array (n, 2) of Fraction
         u, in any length near one.
-    point : Point
-        z in the pencil's units.
     value : float
         About what the bound will be, in the pencil's units.
     """
@@ -109,16 +108,22 @@ def exact_pair(pencil: Pencil, vector: Array, point: Point, value: float) -> Pai
     n = pencil.order
     A, B = (RationalMatrix.from_array(M) for M in pencil.exact)
     unit = Fraction(2) ** pencil.exponent
-    x, y = point[0] * unit, point[1] * unit
     rows = RationalMatrix.from_entries(2, n, real + imaginary)
     # u* = real' - i imaginary'
     by_A = (rows @ A).to_array()
     by_B = (rows @ B).to_array()
+    length = sum(v * v for v in real) + sum(v * v for v in imaginary)
+    # For given u the best z is u* A u / |u|^2; it needs no more digits than the bound.
+    x = sum((a * b for a, b in zip(by_A[0], real, strict=True)), Fraction(0))
+    x += sum((a * b for a, b in zip(by_A[1], imaginary, strict=True)), Fraction(0))
+    y = sum((a * b for a, b in zip(by_A[0], imaginary, strict=True)), Fraction(0))
+    y -= sum((a * b for a, b in zip(by_A[1], real, strict=True)), Fraction(0))
+    fine = Fraction(2) ** bits / unit
+    x, y = (Fraction(round(v / length * fine)) / fine for v in (x, y))
     left = [
         [*(by_A[0, j] - x * real[j] - y * imaginary[j] for j in range(n)), *by_B[0]],
         [*(-by_A[1, j] + x * imaginary[j] - y * real[j] for j in range(n)), *(-v for v in by_B[1])],
     ]
-    length = sum(v * v for v in real) + sum(v * v for v in imaginary)
     square = sum((v * v for row in left for v in row), Fraction(0)) / length
     scale = math.isqrt(length)
     u = np.array([a / scale for a in real]) + 1j * np.array([b / scale for b in imaginary])
