@@ -218,7 +218,8 @@ def _distance(model: Realization, rtol: float, budget: float | None) -> Distance
         search.start()
         search.settle()
         search.run()
-        search.settle()
+        search.improve(search.point, _FINAL_SHARE)
+        search.settle(_FINAL_SHARE)
         pair = _pair(search)
     except _Uncontrollable:
         return _hidden(model, rounded(search.point), budget)
@@ -268,6 +269,9 @@ class _Search(Search):
 
 _OWN_SHARE = 1 - 2.0**-10
 """The search is asked for a little more, so that rounding the bounds keeps them close enough."""
+
+_FINAL_SHARE = 2.0**-12
+"""Share of the room between the bounds to which the upper one is improved in the end."""
 
 
 def _reached(model: Realization, budget: float | None) -> Any:

@@ -110,11 +110,14 @@ class Pencil:
 
     def _rounding(self) -> float:
         """Return a bound of the 2-norm of what rounding changed."""
-        unit = self.unit
+        # Fractions are in lowest terms: a short numerator over a power of two is a double.
         exact = all(
-            Fraction(short) == long * unit
-            for rounded_, given in zip((self.A, self.B), self.exact, strict=True)
-            for short, long in zip(rounded_.ravel().tolist(), given.ravel().tolist(), strict=True)
+            not v.denominator & (v.denominator - 1)
+            and v.numerator.bit_length() <= 53
+            and v.numerator.bit_length() - v.denominator.bit_length() > self.exponent - 1000
+            for matrix in self.exact
+            for v in matrix.ravel().tolist()
+            if v
         )
         if exact:
             return 0.0

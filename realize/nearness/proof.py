@@ -47,20 +47,28 @@ from realize.errors import VerificationError
 from realize.nearness.pencil import ROUNDOFF, Pencil, Point, rounded
 from realize.nearness.squares import Reduced
 
-__all__ = ["Decomposed", "decompose", "reduce_in_balls", "reduce_in_doubles", "refined_vector"]
+__all__ = [
+    "CLEAR",
+    "MOST_ROWS",
+    "Decomposed",
+    "decompose",
+    "reduce_in_balls",
+    "reduce_in_doubles",
+    "refined_vector",
+]
 
 Array = np.ndarray[Any, Any]
 
 _LONGEST: Final = 80
 """How many terms of the series are taken at most; the square must be smaller then."""
 
-_MOST_ROWS: Final = 3
+MOST_ROWS: Final = 3
 """How many singular directions are kept at most."""
 
 _MOST_ROWS_BELOW: Final = 8
 """... where the squares are smaller than what doubles can tell."""
 
-_CLEAR: Final = 3.0
+CLEAR: Final = 2.2
 """How many times the offset the singular values left out must be; the series needs it."""
 
 _APART: Final = 1.4
@@ -87,9 +95,9 @@ class Decomposed:
         """
         values = self.values
         size = len(values)
-        enough = max(_CLEAR * radius, _APART * target, floor)
+        enough = max(CLEAR * radius, _APART * target, floor)
         # Below the floor no smaller square will need fewer.
-        most = _MOST_ROWS if radius > floor else _MOST_ROWS_BELOW
+        most = MOST_ROWS if radius > floor else _MOST_ROWS_BELOW
         for k in range(1, min(most, size) + 1):
             if k == size or values[size - 1 - k] >= enough:
                 return k

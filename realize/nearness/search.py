@@ -37,6 +37,8 @@ from realize.entries import fraction_array
 from realize.errors import PrecisionError
 from realize.nearness.pencil import ROUNDOFF, Pencil, Point, rounded
 from realize.nearness.proof import (
+    CLEAR,
+    MOST_ROWS,
     Decomposed,
     bits_for,
     decompose,
@@ -81,6 +83,9 @@ _CORNERS: Final = (0.3, 200.0)
 _MANY: Final = 12
 """States from which on that holds; the decomposition of a small matrix is cheap."""
 
+_PATIENCE: Final = (64, 0.15)
+"""... unless, of so many squares of one size, corners have closed less than this share."""
+
 _DOUBTFUL: Final = 3.0
 """How many times the doubt of a corner test must fit into the level it tests."""
 
@@ -103,7 +108,10 @@ class OutOfTime(Exception):  # noqa: N818  # caught inside the room, never shown
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class _Square:
-    """A square of the grid: level of halving, column, row; what an ancestor's spectrum was."""
+    """A square of the grid: level of halving, column, row.
+
+    ``known`` tells the spectrum at the centre of an ancestor.
+    """
 
     level: int
     column: int
@@ -130,6 +138,7 @@ class Search:
         self.point: Point = (Fraction(0), Fraction(0))
         self.lower = 0.0
         self._goal = rtol
+        self._tallies: dict[int, list[int]] = {}
         self._corners: dict[tuple[int, int], tuple[float, float]] = {}
 
     @property
@@ -157,7 +166,7 @@ class Search:
         for index in order[:_STARTS]:
             self.improve(_point(complex(values[index])))
 
-    def improve(self, point: Point) -> None:
+    def improve(self, point: Point, share: float = _SHARE) -> None:
         """Go down from a point to a local minimum, and keep it if it is the least so far.
 
         Newton's method in a trust region, on ``|v [l, I] M|^2 / |v [l, I]|^2``;
@@ -167,7 +176,7 @@ class Search:
         trust = here.reach
         for _ in range(_STEPS):
             step, gain = here.step(trust)
-            if gain < _SHARE * self.rtol * here.value**2:
+            if gain < share * self.rtol * here.value**2:
                 break
             there = self._local(_moved(here.point, step))
             if there.value < here.value:
@@ -200,13 +209,16 @@ class Search:
             reach=reduced.radius,
         )
 
-    def settle(self) -> None:
-        """Take the point on the real line beside the best one where that costs next to nothing."""
+    def settle(self, share: float = _SHARE) -> None:
+        """Take the point on the real line beside the best one where that costs next to nothing.
+
+        ``share`` is what it may cost, over the room between the bounds.
+        """
         x, y = self.point
         if y:
             here = self._local((x, Fraction(0)))
-            if here.value <= self.upper * (1 + _SHARE * self.rtol):
-                self.improve(here.point)
+            if here.value <= self.upper * (1 + share * self.rtol):
+                self.improve(here.point, share)
                 if self.point[1]:
                     self.upper, self.point = here.value, here.point
 
@@ -332,7 +344,10 @@ class Search:
         """Close a square, or put what is left of it on the stack."""
         side = self._side * 0.5**square.level
         radius = side * math.sqrt(0.5) * (1 + 1e-14)
+        tally = self._tallies.setdefault(square.level, [0, 0])
+        tally[0] += 1
         if self._by_corners(square, radius):
+            tally[1] += 1
             return
         known = square.known
         centre = self._centre(square)
@@ -385,14 +400,14 @@ class Search:
         level = self.level
         low, high = _CORNERS
         banded = self.pencil.order >= _MANY and low * level < radius < high * level
-        if banded and self._affordable(centre, radius):
+        if banded and not self._vain(square.level) and self._affordable(centre, radius):
             return False
         if square.known is None:
             return radius < _FIRST * self.pencil.size / math.sqrt(self.pencil.order)
         where, values = square.known
         best = values + abs(centre - where)
         n = len(values)
-        return n <= 3 or float(best[max(n - 4, 0)]) >= 3 * radius
+        return n <= MOST_ROWS or float(best[n - 1 - MOST_ROWS]) >= CLEAR * radius
 
     def _reduced(self, found: Decomposed, k: int, radius: float, target: float) -> Reduced | None:
         room = _SHARE * self.rtol * target
@@ -428,6 +443,11 @@ class Search:
                     return False
                 self._corners[key] = (level, bad)
         return True
+
+    def _vain(self, level: int) -> bool:
+        """Whether corners have closed too few squares of this size to go on with them alone."""
+        tried, closed = self._tallies[level]
+        return tried >= _PATIENCE[0] and closed < _PATIENCE[1] * tried
 
     def _affordable(self, z: complex, radius: float) -> bool:
         """Whether rounding leaves the corner test for a square something to say."""

@@ -1,4 +1,4 @@
-"""Laws of the distance to uncontrollability, and an independent search that it must hold against."""
+"""Laws of the distance to uncontrollability, and an independent search to hold it against."""
 
 from __future__ import annotations
 
