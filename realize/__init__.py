@@ -63,6 +63,11 @@ if TYPE_CHECKING:
     from realize.model.files import load, save
     from realize.model.realization import Realization
     from realize.model.transfer import TransferMatrix
+    from realize.nearness.distance import (
+        Distance,
+        distance_to_uncontrollability,
+        distance_to_unobservability,
+    )
     from realize.proof.certify import certify
     from realize.proof.compare import same_transfer
     from realize.proof.record import Certificate, Comparison, check
@@ -92,6 +97,7 @@ __all__ = [
     "CertificateError",
     "Comparison",
     "DisagreementError",
+    "Distance",
     "EntryError",
     "Examination",
     "HiddenInstabilityWarning",
@@ -134,6 +140,8 @@ __all__ = [
     "certify",
     "check",
     "companion",
+    "distance_to_uncontrollability",
+    "distance_to_unobservability",
     "exact",
     "examine",
     "floating",
@@ -206,6 +214,11 @@ _HOMES = {
     "realize.proof.certify": ("certify",),
     "realize.proof.compare": ("same_transfer",),
     "realize.proof.record": ("Certificate", "Comparison", "check"),
+    "realize.nearness.distance": (
+        "Distance",
+        "distance_to_uncontrollability",
+        "distance_to_unobservability",
+    ),
     "realize.results": (
         "Cancellation",
         "KalmanParts",
