@@ -44,6 +44,7 @@ if TYPE_CHECKING:
         SamplingPeriodError,
         ShapeError,
         ToleranceError,
+        UncertaintyError,
         UnknownWordError,
         UnsupportedEntryError,
         VerificationError,
@@ -72,6 +73,7 @@ if TYPE_CHECKING:
         Staircase,
     )
     from realize.stability import Stability
+    from realize.uncertainty import Uncertainty
 
 __version__ = "0.1.0"
 
@@ -108,6 +110,8 @@ __all__ = [
     "Staircase",
     "ToleranceError",
     "TransferMatrix",
+    "Uncertainty",
+    "UncertaintyError",
     "UnknownWordError",
     "UnsupportedEntryError",
     "VerificationError",
@@ -168,6 +172,7 @@ _HOMES = {
         "SamplingPeriodError",
         "ShapeError",
         "ToleranceError",
+        "UncertaintyError",
         "UnknownWordError",
         "UnsupportedEntryError",
         "VerificationError",
@@ -196,6 +201,7 @@ _HOMES = {
         "Staircase",
     ),
     "realize.stability": ("Stability",),
+    "realize.uncertainty": ("Uncertainty",),
 }
 _HOME_OF = {name: module for module, names in _HOMES.items() for name in names}
 _SUBMODULES = ("exact", "floating", "multiprecision")

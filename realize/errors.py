@@ -32,6 +32,7 @@ __all__ = [
     "SamplingPeriodError",
     "ShapeError",
     "ToleranceError",
+    "UncertaintyError",
     "UnknownWordError",
     "UnsupportedEntryError",
     "VerificationError",
@@ -212,7 +213,7 @@ class AlgebraicLoopError(RealizeError, ValueError):
 
 
 class ToleranceError(RealizeError, ValueError):
-    """A tolerance or uncertainty that is negative, not finite or not a number.
+    """A tolerance that is negative, not finite or not a number.
 
     Attributes
     ----------
@@ -228,6 +229,31 @@ class ToleranceError(RealizeError, ValueError):
         super().__init__(message)
         self.argument = argument
         self.found = found
+
+
+class UncertaintyError(ToleranceError):
+    """An uncertainty that is negative, not finite, of a wrong shape or without meaning here.
+
+    Attributes
+    ----------
+    argument : str or None
+        The field of the uncertainty: ``"relative"``.
+    found : str or None
+        The value that came, in text.
+    where : str or None
+        The place in it: ``"A, row 1, column 3"``.
+    """
+
+    def __init__(
+        self,
+        message: str,
+        *,
+        argument: str | None = None,
+        found: str | None = None,
+        where: str | None = None,
+    ) -> None:
+        super().__init__(message, argument=argument, found=found)
+        self.where = where
 
 
 class InexactInputError(RealizeError, TypeError):

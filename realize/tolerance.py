@@ -21,6 +21,7 @@ from typing import Any, Final, TypeVar
 from realize.errors import ToleranceError
 
 __all__ = [
+    "DEFAULT_CONFIDENCE",
     "DEFAULT_FACTOR",
     "FLOOR_FACTOR",
     "LOOP_MARGIN",
@@ -41,6 +42,10 @@ DEFAULT_FACTOR: Final = 2.0**-32
 
 FLOOR_FACTOR: Final = 8.0
 """Rounding noise for each state, in units of the roundoff."""
+
+DEFAULT_CONFIDENCE: Final = Fraction(19, 20)
+"""Confidence of the region that standard deviations stand for, unless one is given. Common
+practice."""
 
 UNIT_ROUNDOFF: Final = 2.0**-52
 """Spacing of the doubles next to 1."""

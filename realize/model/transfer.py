@@ -259,7 +259,7 @@ class TransferMatrix(SystemModel):
             "matrix that realize.multiprecision.cancel returns"
         )
         at, exact, is_complex = _parse_point(point)
-        numerators, denominators = self._given or (self._numerators, self._denominators)
+        numerators, denominators = self._as_given()
         values: list[_Gaussian] = []
         for row, column, numerator, denominator in _pairs(numerators, denominators):
             below = _horner(denominator, at)
@@ -314,7 +314,7 @@ class TransferMatrix(SystemModel):
             tables = self._numerators, self._denominators
         else:
             reader = entry_reader(word)
-            numerators, denominators = self._given or (self._numerators, self._denominators)
+            numerators, denominators = self._as_given()
 
             def change(polynomial: Coefficients) -> Coefficients:
                 return tuple(map(reader, polynomial))
@@ -376,7 +376,7 @@ class TransferMatrix(SystemModel):
     # Identity
 
     def _key(self) -> tuple[Any, ...]:
-        numerators, denominators = self._given or (self._numerators, self._denominators)
+        numerators, denominators = self._as_given()
         # 1.0 and 1 compare equal but are read differently.
         exact = self._given and tuple(
             _map(lambda polynomial: tuple(isinstance(c, Fraction) for c in polynomial), table)
@@ -384,10 +384,14 @@ class TransferMatrix(SystemModel):
         )
         return self._input_count, numerators, denominators, exact
 
+    def _as_given(self) -> tuple[Table, Table]:
+        """Return both tables with each coefficient as it was given."""
+        return self._given or (self._numerators, self._denominators)
+
     def _placed(self) -> Iterator[tuple[str, Entry | Constant]]:
         if self._kind is Kind.FLOATING and self._given is None:
             return
-        tables = self._given or (self._numerators, self._denominators)
+        tables = self._as_given()
         for part, table in zip(("numerator", "denominator"), tables, strict=True):
             for row, line in enumerate(table):
                 for column, polynomial in enumerate(line):
@@ -396,7 +400,7 @@ class TransferMatrix(SystemModel):
                         yield where, entry
 
     def _body(self) -> dict[str, Any]:
-        numerators, denominators = self._given or (self._numerators, self._denominators)
+        numerators, denominators = self._as_given()
         return {
             "numerators": _encoded(numerators),
             "denominators": _encoded(denominators),
@@ -456,7 +460,7 @@ class TransferMatrix(SystemModel):
 
     def _repr_latex_(self) -> str | None:
         """Return the fractions as a matrix, when they are few; else None."""
-        numerators, denominators = self._given or (self._numerators, self._denominators)
+        numerators, denominators = self._as_given()
         terms = [
             max(len(numerator), len(denominator))
             for _, _, numerator, denominator in _pairs(numerators, denominators)

@@ -17,7 +17,7 @@ TESTS = Path(__file__).parent.parent
 ROOMS: tuple[tuple[str, ...], ...] = (
     ("entries", "tolerance", "errors", "polynomials"),
     ("model",),
-    ("results", "stability"),
+    ("results", "stability", "uncertainty"),
     ("arithmetic",),
     ("forms",),
     ("exact", "floating", "multiprecision", "dispatch"),
