@@ -13,12 +13,12 @@ from realize.errors import (
     AlgebraicLoopError,
     BudgetError,
     EntryError,
-    NotBuiltError,
     PrecisionError,
     UnknownWordError,
     UnsupportedEntryError,
 )
-from realize.examination.doubt import with_doubt
+from realize.examination.accuracy import settle
+from realize.examination.doubt import weighed_modes
 from realize.examination.lost import with_loss
 from realize.examination.nearest import Nearest, nearest_of
 from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
@@ -31,6 +31,9 @@ from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
 from realize.results import Deferred, Mode, Part, RankDecision
 from realize.tolerance import check_tolerance, rounding_floor
+from realize.uncertainty import Uncertainty, as_uncertainty
+from realize.within.box import Box
+from realize.within.weigh import Weighed, Within
 
 __all__ = ["DEFAULT_BUDGET", "examine"]
 
@@ -50,7 +53,7 @@ def examine(
     *,
     readings: Iterable[str] | None = None,
     tolerance: float | None = None,
-    uncertainty: None = None,
+    uncertainty: Uncertainty | float | str | None = None,
     budget: float | None = DEFAULT_BUDGET,
 ) -> Examination:
     """Examine a model on both paths: which modes are hidden, and how much is the tolerance's doing.
@@ -64,11 +67,13 @@ def examine(
     tolerance : float, keyword-only
         For the floating path: the cutoff is this times the Frobenius norm of the scaled model.
         None for the default, order * 2**-32.
-    uncertainty : None, keyword-only
-        Kept for data with an uncertainty, which are not built yet.
+    uncertainty : number, "ulp", "last digit", Uncertainty or None, keyword-only
+        How far each entry may lie from the number given; a number is relative, and zeros stay
+        zero. Then the answer is the lowest order found within it, and `within_uncertainty` says
+        whether every model within it is minimal.
     budget : float or None, keyword-only
         Seconds that the exact path may take; None for no limit. When they do not suffice, the
-        answer is the floating one, and says so.
+        answer is the floating one, and says so. As many again may go to the uncertainty.
 
     Returns
     -------
@@ -79,10 +84,10 @@ def examine(
     ------
     DisagreementError
         When the three routes to the minimal order differ, which would be a bug.
-    NotBuiltError
-        For any uncertainty but None.
+    UncertaintyError
+        When the uncertainty is negative, or does not have the shapes of the model.
     UnknownWordError
-        For an unknown reading, or one that does not fit the model.
+        For an unknown reading, or one that does not fit the model, or an unknown uncertainty.
 
     References
     ----------
@@ -100,10 +105,8 @@ def examine(
     [((-2+0j), 'uncontrollable, observable')]
     """
     accept(model, Realization)
-    if uncertainty is not None:
-        raise NotBuiltError(
-            "examine takes no uncertainty yet; leave it at None", feature="uncertainty"
-        )
+    given = as_uncertainty(uncertainty)
+    box = None if given is None else Box.of(model, given)
     words = _readings_of(model, readings)
     tolerance = check_tolerance(tolerance)
     _check_budget(budget)
@@ -118,11 +121,14 @@ def examine(
         not_done.append(f"the floating path did not run: {floating.failed}")
     replays = {word: floating.replay(found.stairs) for word, found in exact.items()}
     answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
+    weighed = None
+    if box is not None:
+        settled = settle(box, model.kind, exact, nearest, budget, not_done)
+        answer, about, weighed = settled.answer, settled.about, settled.weighed
+    accuracy = None if box is None else box.radii.A
     hidden = Deferred(
-        lambda: (
-            by_pattern(floating.hidden_modes(), model)
-            if about is None
-            else with_doubt(about.hidden_modes(), model, answer.basis)
+        lambda: weighed_modes(
+            _hidden_modes(about, floating, answer), model, answer.basis, accuracy
         )
     )
     connection = model._connection
@@ -136,7 +142,7 @@ def examine(
         paths_agree=floating.order in orders.values(),
         readings_agree=len(set(orders.values())) == 1,
         answer=answer,
-        verdict=_verdict(model.order, answer, orders, floating.order),
+        verdict=_verdict(model.order, answer, orders, floating.order, weighed),
         nearest=nearest,
         cutoff_ranges={
             word: None if replay is None else replay.interval for word, replay in replays.items()
@@ -148,10 +154,16 @@ def examine(
         not_done=tuple(not_done),
         seconds={"floating": floating.seconds, "exact": exact_seconds},
         peak_memory=peak_memory(),
+        uncertainty=given,
+        weighed=weighed,
         _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
         _hidden=Deferred(lambda: with_loss(hidden.get(), model, answer.basis, budget)),
         _loops=Deferred(lambda: () if connection is None else connection.join().loops),
-        _visible=Deferred(lambda: _visible_modes(about, floating, budget, model, answer.basis)),
+        _visible=Deferred(
+            lambda: weighed_modes(
+                _visible_modes(about, floating, budget), model, answer.basis, accuracy
+            )
+        ),
         _parts=Deferred(lambda: {word: _parts_of(found, budget) for word, found in exact.items()}),
         hidden_parts={
             word: {str(part): polynomial for part, polynomial in found.hidden.items()}
@@ -173,6 +185,7 @@ class _Floating:
 
     def __init__(self, model: Realization, tolerance: float | None) -> None:
         began = time.perf_counter()
+        self.model = model
         self.path = FloatingPath(tolerance)
         self.failed: str | None = None
         self.run: tuple[FloatingReach, FloatingReach] | None = None
@@ -345,16 +358,21 @@ def _parts_of(answer: ExactAnswer, budget: float | None) -> dict[str, Polynomial
     return {str(part): known[part] for part in Part}
 
 
+def _hidden_modes(
+    about: ExactAnswer | None, floating: _Floating, answer: Answer
+) -> tuple[Mode, ...]:
+    if about is not None:
+        return about.hidden_modes()
+    # Where the exact path did not run, all may still be proved to show.
+    return () if answer.order == floating.model.order else by_pattern(floating.hidden_modes(), floating.model)
+
+
 def _visible_modes(
-    about: ExactAnswer | None,
-    floating: _Floating,
-    budget: float | None,
-    model: Realization,
-    basis: str,
+    about: ExactAnswer | None, floating: _Floating, budget: float | None
 ) -> tuple[Mode, ...]:
     if about is None or about.visible_within(budget) is None:
         return floating.visible_modes()
-    return with_doubt(about.visible_modes(), model, basis)
+    return about.visible_modes()
 
 
 def _count_unsimple(model: Realization) -> int:
@@ -368,7 +386,13 @@ def _count_unsimple(model: Realization) -> int:
     )
 
 
-def _verdict(order: int, answer: Answer, orders: dict[str, int], floating_order: int | None) -> str:
+def _verdict(
+    order: int,
+    answer: Answer,
+    orders: dict[str, int],
+    floating_order: int | None,
+    weighed: Weighed | None,
+) -> str:
     """Return the answer in one sentence."""
     grounds = {
         "given": "proved for the model as given",
@@ -378,6 +402,12 @@ def _verdict(order: int, answer: Answer, orders: dict[str, int], floating_order:
         "nearest": "proved for a model within rounding of this one",
         "floating": "by the floating path alone, nothing is proved",
     }[answer.basis]
+    if weighed is not None and weighed.within is Within.MINIMAL:
+        grounds = "proved for every model within the uncertainty"
+    elif weighed is not None and answer.basis == "nearest":
+        grounds = "proved for a model within the uncertainty"
+    elif weighed is not None and weighed.within is Within.OPEN:
+        grounds += ", but open for other models within the uncertainty"
     if answer.order == order:
         text = "minimal: it has no states"
         if order:

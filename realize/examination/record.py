@@ -14,6 +14,7 @@ import numpy as np
 
 from realize.examination.nearest import Nearest
 from realize.model.connections import AlgebraicLoop
+from realize.model.files import to_document
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
 from realize.results import Deferred, Mode, Part, RankDecision, Reduction, ResponseChange, spelled
@@ -24,6 +25,8 @@ from realize.stability import (
     hidden_cautions,
 )
 from realize.tolerance import LOOP_MARGIN
+from realize.uncertainty import Uncertainty
+from realize.within.weigh import Weighed, Within
 
 __all__ = ["Answer", "Examination", "environment", "peak_memory"]
 
@@ -40,8 +43,8 @@ class Answer:
     order : int
     basis : str
         "given", "stored", "written": the reading it is proved for; "nearest": proved for an exact
-        model within the rounding floor of the one examined; "floating": the exact path did not
-        run, and nothing is proved.
+        model within the rounding floor of the one examined, or within the uncertainty where one
+        was given; "floating": the exact path did not run, and nothing is proved.
     """
 
     order: int
@@ -79,8 +82,10 @@ class Examination:
         Reading -> the stages that leave no cutoff, in words; empty where there is a range.
     routes : dict
         Reading -> {"state": order, "polynomial": order, "hankel": order}.
-    within_uncertainty : None
-        Kept for data with an uncertainty, which are not built yet. So is `witness`.
+    uncertainty : Uncertainty or None
+        The one given.
+    weighed : Weighed or None
+        What is known of the models within it: bounds, and what they rest on.
     not_done : tuple of str
         What was skipped and why.
     hidden_parts : dict
@@ -107,8 +112,8 @@ class Examination:
     not_done: tuple[str, ...]
     seconds: dict[str, float]
     peak_memory: int | None
-    within_uncertainty: str | None = None
-    witness: Realization | None = None
+    uncertainty: Uncertainty | None = None
+    weighed: Weighed | None = None
     _decisions: Deferred[tuple[RankDecision, ...]]
     _hidden: Deferred[tuple[Mode, ...]]
     _visible: Deferred[tuple[Mode, ...]]
@@ -122,6 +127,19 @@ class Examination:
     def algebraic_loops(self) -> tuple[AlgebraicLoop, ...]:
         """The algebraic loops of a connected model; none where feedthroughs run in no circle."""
         return self._loops.get()
+
+    @property
+    def within_uncertainty(self) -> Within | None:
+        """Whether all models within the uncertainty are minimal; None when none was given.
+
+        "minimal": every one is, proved. "not minimal": `witness` is not. "open": neither is known.
+        """
+        return None if self.weighed is None else self.weighed.within
+
+    @property
+    def witness(self) -> Realization | None:
+        """An exact model within the uncertainty that is not minimal, if one was found."""
+        return None if self.weighed is None else self.weighed.witness
 
     @property
     def decisions(self) -> tuple[RankDecision, ...]:
@@ -245,12 +263,12 @@ class Examination:
         """Exit status of the command line.
 
         0: nothing hidden, and nothing in doubt. 1: hidden modes, or paths or readings that
-        disagree. 3: undecided, the exact path did not run. 4: a hidden mode is not known to be
-        stable.
+        disagree. 3: undecided, because the exact path did not run, or within the uncertainty.
+        4: a hidden mode is not known to be stable.
         """
         if any(mode.stability is not Stability.STABLE for mode in self.hidden_modes):
             return 4
-        if self.answer.basis == "floating":
+        if self.answer.basis == "floating" or self.within_uncertainty is Within.OPEN:
             return 3
         clean = self.answer.order == self.order and self.paths_agree and self.readings_agree
         return 0 if clean else 1
@@ -287,8 +305,12 @@ class Examination:
             },
             "conflicts": {reading: list(text) for reading, text in self.conflicts.items()},
             "routes": {reading: dict(found) for reading, found in self.routes.items()},
-            "within_uncertainty": self.within_uncertainty,
-            "witness": None,
+            "uncertainty": None if self.uncertainty is None else str(self.uncertainty),
+            "within_uncertainty": (
+                None if self.within_uncertainty is None else str(self.within_uncertainty)
+            ),
+            "weighed": None if self.weighed is None else self.weighed.to_dict(),
+            "witness": None if self.witness is None else to_document(self.witness),
             "cautions": list(self.cautions),
             "not_done": list(self.not_done),
             "seconds": dict(self.seconds),

@@ -1,0 +1,1 @@
+"""Is every model within an uncertainty minimal? Proof, witness, or both bounds."""

@@ -1,0 +1,411 @@
+"""From a change found in doubles to an exact model that hides the modes exactly.
+
+Points become rational numbers, or the coefficients of a rational quadratic; vectors become
+rational, and exactly such that columns without uncertainty need no change; then the changes of the
+other columns are solved for exactly. For one real mode the least changes are known in closed form
+(Oettli and Prager 1964, Numer. Math. 6): column j of u' (M + D) = 0 can be met with |D| <= t R if
+and only if |u' M|_j <= t (|u|' R)_j, and then by D_ij = -(u' M)_j sign(u_i) R_ij / (|u|' R)_j.
+Otherwise the changes found are kept, but for as many as there are equations.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Any, Final
+
+import numpy as np
+import scipy.linalg
+
+from realize.arithmetic.rational import RationalMatrix
+from realize.model.realization import Realization
+from realize.results import Side
+from realize.within.box import Box, InDoubles
+from realize.within.search import Found, Hidden
+
+__all__ = ["Witness", "exactly"]
+
+Array = np.ndarray[Any, Any]
+
+_ZERO: Final = Fraction(0)
+
+_ROUNDINGS: Final = ((1, 16), (60, 24), (10**4, 30), (10**7, 40), (None, 53))
+"""Largest denominator of a point, and bits of a vector: short numbers first, where they serve."""
+
+_NEAR: Final = 1e-7
+"""How far a short point may lie from the one found, relative to the norm of A."""
+
+_NOTHING: Final = 1e-10
+"""Components of a vector below this share of the largest count as zero."""
+
+_WORSE: Final = 1.001
+"""Factor on the factor found up to which a rounding counts as serving."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Witness:
+    """An exact model that hides modes exactly.
+
+    Attributes
+    ----------
+    model : Realization
+    factor : Fraction
+        Its largest change, over the radius of the entry.
+    changes : tuple of object arrays of Fraction
+        Of A, B and C.
+    """
+
+    model: Realization
+    factor: Fraction
+    changes: tuple[Array, Array, Array]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Rows:
+    """Rows W with W (A + dA) = L W and W (B + dB) = 0, in the orientation of one side."""
+
+    side: Side
+    W: Array
+    L: Array
+
+
+def exactly(box: Box, doubles: InDoubles, found: Found, wanted: float) -> Witness | None:
+    """Return an exact model with the modes hidden, or None where roundings do not lead to one.
+
+    The first rounding whose factor does not exceed ``wanted``, or hardly exceeds the one found.
+    """
+    best: Witness | None = None
+    changes = _placed(box, doubles, found)
+    depth = {side: sum(mode.count for mode in found.modes if mode.side is side) for side in Side}
+    for denominator, bits in _ROUNDINGS:
+        rows: list[_Rows] = []
+        for mode in found.modes:
+            change = _turned(mode.side, *changes)
+            exact = _rows(box, doubles, mode, change, depth[mode.side], denominator, bits)
+            if exact is None:
+                break
+            rows.append(exact)
+        if len(rows) < len(found.modes):
+            continue
+        witness = _solved(box, rows, changes)
+        if witness is None:
+            continue
+        if best is None or witness.factor < best.factor:
+            best = witness
+        if best.factor <= wanted or best.factor <= _WORSE * found.factor:
+            break
+    return best
+
+
+def _oriented(box: Box, side: Side) -> tuple[Array, Array]:
+    """Return [A, B] and radii, transposed for side "output"."""
+    radii = box.radii
+    return _turned(side, *box.centre.matrices()[:3]), _turned(side, radii.A, radii.B, radii.C)
+
+
+def _turned(side: Side, A: Array, B: Array, C: Array) -> Array:
+    """Return [A, B], or [A', C'] for side "output"."""
+    return np.hstack([A, B]) if side is Side.INPUT else np.hstack([A.T, C.T])
+
+
+def _short(value: float, denominator: int | None, allowed: float) -> Fraction | None:
+    exact = Fraction(value)
+    if denominator is None:
+        return exact
+    near = exact.limit_denominator(denominator)
+    return near if abs(near - exact) <= allowed else None
+
+
+def _rows(
+    box: Box,
+    doubles: InDoubles,
+    mode: Hidden,
+    change: Array,
+    depth: int,
+    denominator: int | None,
+    bits: int,
+) -> _Rows | None:
+    """Return rational rows for one mode, or for a pair; None where no short point is near.
+
+    ``depth`` rows in all must agree with each column. One with fewer uncertain entries than that
+    keeps the change found, and the rows are fitted to it, as to columns without uncertainty.
+    """
+    z = doubles.point(mode.point)
+    scale = _NEAR * math.ldexp(max(float(np.linalg.norm(doubles.A)), abs(mode.point)), doubles.time)
+    sign = -1 if mode.side is Side.INPUT else 1
+    vector = np.where(np.abs(mode.vector) > _NOTHING, mode.vector, 0.0)
+    if mode.is_real:
+        point = _short(z.real, denominator, scale)
+        if point is None:
+            return None
+        L = _table([[point]])
+        target = vector[None, :]
+    else:
+        first = _short(-2 * z.real, denominator, scale)
+        last = _short(abs(z) ** 2, denominator, scale * abs(z))
+        if first is None or last is None:
+            return None
+        # Rows p and r with p A = r and r A = -last p - first r.
+        L = _table([[_ZERO, Fraction(1)], [-last, -first]])
+        turned = mode.point * vector
+        target = np.vstack([vector.real, np.ldexp(turned.real, doubles.time)])
+    units = sign * doubles.states
+    # Rounded to few bits in scaled units, where the components are comparable.
+    W = _table(
+        [
+            [
+                _bits(value, bits) * Fraction(2) ** int(unit)
+                for value, unit in zip(row, units, strict=True)
+            ]
+            for row in target.tolist()
+        ]
+    )
+    matrix, radius = _oriented(box, mode.side)
+    used = (np.abs(W).sum(axis=0)[:, None] * radius != 0).sum(axis=0)
+    fixed = [j for j in range(matrix.shape[1]) if used[j] < depth]
+    if fixed:
+        fitted = _fitted(matrix + change, fixed, W, L, units)
+        if fitted is None:
+            return None
+        W = fitted
+    return _Rows(mode.side, W, L)
+
+
+def _bits(value: float, bits: int) -> Fraction:
+    if not value:
+        return _ZERO
+    mantissa, exponent = math.frexp(value)
+    return Fraction(round(math.ldexp(mantissa, bits))) * Fraction(2) ** (exponent - bits)
+
+
+def _table(rows: Sequence[Sequence[Fraction]]) -> Array:
+    result = np.empty((len(rows), len(rows[0])), dtype=object)
+    for i, row in enumerate(rows):
+        result[i] = row
+    return result
+
+
+def _fitted(matrix: Array, fixed: list[int], W: Array, L: Array, units: Array) -> Array | None:
+    """Return rows near W that meet the equations of the fixed columns; zeros of W stay."""
+    depth, n = W.shape
+    support = [j for j in range(n) if W[:, j].any()]
+    place = {(k, j): k * len(support) + at for k in range(depth) for at, j in enumerate(support)}
+    equations = []
+    for column in fixed:
+        for k in range(depth):
+            row = [_ZERO] * (depth * len(support))
+            for j in support:
+                row[place[k, j]] += matrix[j, column]
+            if column < n and column in support:
+                for other in range(depth):
+                    row[place[other, column]] -= L[k, other]
+            equations.append(row)
+    width = depth * len(support)
+    reduced, rank = RationalMatrix.from_array(_table(equations)).matrix.rref()
+    table = RationalMatrix(reduced).to_array()
+    pivots = [next(c for c in range(width) if table[r, c]) for r in range(rank)]
+    free = [c for c in range(width) if c not in set(pivots)]
+    if not free:
+        return None
+    basis = np.empty((width, len(free)), dtype=object)
+    basis[:] = _ZERO
+    for at, c in enumerate(free):
+        basis[c, at] = Fraction(1)
+        for r, pivot in enumerate(pivots):
+            basis[pivot, at] = -table[r, c]
+    target = np.array([W[k, j] for k in range(depth) for j in support], dtype=object)
+    weight = [Fraction(2) ** -int(units[j]) for _ in range(depth) for j in support]
+    in_units = np.array(
+        [[float(w * b) for b in row] for w, row in zip(weight, basis.tolist(), strict=True)]
+    )
+    aim = np.array([float(w * t) for w, t in zip(weight, target.tolist(), strict=True)])
+    sizes = np.linalg.norm(in_units, axis=0)
+    coefficients = np.linalg.lstsq(in_units / sizes, aim, rcond=None)[0] / sizes
+    # A coefficient that is rounding noise would bring back what was to be zero.
+    noise = _NOTHING * np.abs(aim).max()
+    exact = [
+        Fraction(c) if abs(c) * size > noise else _ZERO
+        for c, size in zip(coefficients.tolist(), sizes.tolist(), strict=True)
+    ]
+    values = basis @ np.array(exact, dtype=object)
+    fitted = np.empty(W.shape, dtype=object)
+    fitted[:] = _ZERO
+    for (k, j), at in place.items():
+        fitted[k, j] = values[at]
+    return fitted if all(row.any() for row in fitted) else None
+
+
+def _solved(box: Box, rows: Sequence[_Rows], start: tuple[Array, ...]) -> Witness | None:
+    """Return the model changed so that all rows hold exactly, with changes near those found."""
+    n = box.centre.order
+    radii = (box.radii.A, box.radii.B, box.radii.C)
+    if len({each.side for each in rows}) == 1:
+        side = rows[0].side
+        matrix, radius = _oriented(box, side)
+        W = np.vstack([each.W for each in rows])
+        wanted = -(W @ matrix)
+        wanted[:, :n] += np.vstack([each.L @ each.W for each in rows])
+        solved = _turned(side, *start).copy()
+        for j in range(matrix.shape[1]):
+            if len(W) == 1:
+                column = _least(W[0], wanted[0, j], radius[:, j])
+            else:
+                column = _near(W, wanted[:, j], radius[:, j], solved[:, j])
+            if column is None:
+                return None
+            solved[:, j] = column
+        nothing = [np.full(radius.shape, _ZERO, dtype=object) for radius in radii]
+        if side is Side.INPUT:
+            changes = (solved[:, :n].copy(), solved[:, n:].copy(), nothing[2])
+        else:
+            changes = (solved[:, :n].T.copy(), nothing[1], solved[:, n:].T.copy())
+    else:
+        together = _solve_together(box, rows, radii, start)
+        if together is None:
+            return None
+        changes = together
+    model = box.moved(changes)
+    _assert_hidden(model, rows)
+    ratios = [
+        abs(change) / radius
+        for matrix, radius_of in zip(changes, radii, strict=True)
+        for change, radius in zip(matrix.flat, radius_of.flat, strict=True)
+        if radius
+    ]
+    return Witness(model, max(ratios, default=_ZERO), changes)
+
+
+def _placed(box: Box, doubles: InDoubles, found: Found) -> tuple[Array, Array, Array]:
+    """Return the changes found, exact and in the places of their entries."""
+    placed, at = [], 0
+    exact = (box.radii.A, box.radii.B, box.radii.C)
+    for radius, in_units in zip(exact, doubles.radii, strict=True):
+        change = np.full(radius.shape, _ZERO, dtype=object)
+        for place in np.argwhere(in_units > 0).tolist():
+            change[tuple(place)] = Fraction(float(found.shares[at])) * radius[tuple(place)]
+            at += 1
+        placed.append(change)
+    return placed[0], placed[1], placed[2]
+
+
+def _least(u: Array, wanted: Fraction, radius: Array) -> Array | None:
+    """Return the smallest change of one column, in shares of its radii."""
+    if not wanted:
+        return np.full(len(u), _ZERO, dtype=object)
+    weight = (np.abs(u) * radius).sum()
+    if not weight:
+        return None
+    share = wanted / weight
+    return np.array(
+        [share * r * (1 if x > 0 else -1) if x else _ZERO for x, r in zip(u, radius, strict=True)],
+        dtype=object,
+    )
+
+
+def _near(K: Array, wanted: Array, radius: Array, start: Array) -> Array | None:
+    """Return a solution of K x = wanted near a start; None when there is none.
+
+    x is zero where the radius is. As many components as there are independent equations are
+    solved for, those with most room first; the others stay.
+    """
+    open_places = [i for i in range(len(radius)) if radius[i]]
+    x = np.full(len(radius), _ZERO, dtype=object)
+    x[open_places] = start[open_places]
+    if not open_places:
+        return x if not any(wanted) else None
+    room = [max(1.0 - float(abs(x[i]) / radius[i]), 1e-6) for i in open_places]
+    weighted = np.array(
+        [
+            [_to_float(row[i] * radius[i]) * space for i, space in zip(open_places, room, strict=True)]
+            for row in K.tolist()
+        ]
+    )
+    heights = np.abs(weighted).max(axis=1, keepdims=True)
+    weighted = weighted / np.where(heights > 0, heights, 1.0)
+    order = scipy.linalg.qr(weighted, mode="r", pivoting=True)[1]
+    chosen = [open_places[k] for k in order.tolist()]
+    rest = wanted - K @ x
+    table = np.hstack([K[:, chosen], rest[:, None]])
+    reduced, rank = RationalMatrix.from_array(table).matrix.rref()
+    solved = RationalMatrix(reduced).to_array()
+    for r in range(rank):
+        pivot = next(c for c in range(len(chosen) + 1) if solved[r, c])
+        if pivot == len(chosen):
+            return None
+        x[chosen[pivot]] += solved[r, -1]
+    return x
+
+
+def _to_float(value: Fraction) -> float:
+    try:
+        return float(value)
+    except OverflowError:
+        return math.copysign(1e300, value)
+
+
+def _solve_together(
+    box: Box, rows: Sequence[_Rows], radii: tuple[Array, ...], start: tuple[Array, ...]
+) -> tuple[Array, Array, Array] | None:
+    """Solve for all changes at once, where both sides hide modes and share the change of A."""
+    changes = tuple(np.full(radius.shape, _ZERO, dtype=object) for radius in radii)
+    places = [
+        (which, i, j)
+        for which, radius in enumerate(radii)
+        for (i, j), value in np.ndenumerate(radius)
+        if value
+    ]
+    number = {place: at for at, place in enumerate(places)}
+    equations, wanted = [], []
+    for equation, value in _equations(box, rows):
+        line = [_ZERO] * len(places)
+        for place, coefficient in equation:
+            if place in number:
+                line[number[place]] += coefficient
+        equations.append(line)
+        wanted.append(value)
+    if not places:
+        return None
+    found = _near(
+        _table(equations),
+        np.array(wanted, dtype=object),
+        np.array([radii[which][i, j] for which, i, j in places], dtype=object),
+        np.array([start[which][i, j] for which, i, j in places], dtype=object),
+    )
+    if found is None:
+        return None
+    for (which, i, j), value in zip(places, found, strict=True):
+        changes[which][i, j] = value
+    return changes[0], changes[1], changes[2]
+
+
+_Term = tuple[tuple[int, int, int], Fraction]
+
+
+def _equations(box: Box, rows: Sequence[_Rows]) -> Iterator[tuple[list[_Term], Fraction]]:
+    """Give each equation: what multiplies which entry's change, and the right side."""
+    n = box.centre.order
+    for each in rows:
+        matrix, _ = _oriented(box, each.side)
+        wanted = -(each.W @ matrix)
+        wanted[:, :n] += each.L @ each.W
+        other = 1 if each.side is Side.INPUT else 2
+        for (k, j), value in np.ndenumerate(wanted):
+            which, column = (0, j) if j < n else (other, j - n)
+            terms = []
+            for i in range(n):
+                if each.W[k, i]:
+                    place = (i, column) if each.side is Side.INPUT else (column, i)
+                    terms.append(((which, *place), each.W[k, i]))
+            yield terms, value
+
+
+def _assert_hidden(model: Realization, rows: Sequence[_Rows]) -> None:
+    """Check, exactly, that the rows hide what they are to hide."""
+    A, B, C = model.matrices()[:3]
+    for each in rows:
+        own_A, own_B = (A, B) if each.side is Side.INPUT else (A.T, C.T)
+        left = each.W @ own_A - each.L @ each.W
+        if left.any() or (each.W @ own_B).any() or not each.W.any():
+            raise AssertionError("the changes solved for do not hide the modes")
