@@ -127,9 +127,7 @@ def examine(
         answer, about, weighed = settled.answer, settled.about, settled.weighed
     accuracy = None if box is None else box.radii.A
     hidden = Deferred(
-        lambda: weighed_modes(
-            _hidden_modes(about, floating, answer), model, answer.basis, accuracy
-        )
+        lambda: weighed_modes(_hidden_modes(about, floating, answer), model, answer.basis, accuracy)
     )
     connection = model._connection
     stairs = {word: found.stairs for word, found in exact.items()}

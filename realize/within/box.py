@@ -54,9 +54,7 @@ class Box:
 
     def _pairs(self) -> list[tuple[Array, Array]]:
         radii = self.radii
-        return list(
-            zip(self.centre.matrices(), (radii.A, radii.B, radii.C, radii.D), strict=True)
-        )
+        return list(zip(self.centre.matrices(), (radii.A, radii.B, radii.C, radii.D), strict=True))
 
     def distance(self, model: Realization) -> Fraction | float:
         """Return the largest change of an entry over its radius; inf where a fixed one changed."""
@@ -87,11 +85,14 @@ class Pencil:
         [A, B] rounded, and numbers not below the radii.
     lost : float array (n, n + m)
         Not below what rounding took from `matrix`.
+    exact : object array of Fraction (n, n + m)
+        `matrix` before it was rounded.
     """
 
     matrix: Array
     radius: Array
     lost: Array
+    exact: Array
 
     @property
     def order(self) -> int:
@@ -124,15 +125,20 @@ class InDoubles:
             for matrix, near in zip(given, (A, B, C), strict=True)
         )
         self.lost = self._in_units(tuple(lost), scaling)
+        self.exact = self._in_units(given, scaling, _shifted)
 
     @staticmethod
-    def _in_units(matrices: tuple[Array, ...], scaling: Scaling) -> tuple[Array, ...]:
+    def _in_units(
+        matrices: tuple[Array, ...],
+        scaling: Scaling,
+        shift: Callable[[Array, Array], Array] = np.ldexp,
+    ) -> tuple[Array, ...]:
         states = scaling.states.astype(np.int64)
         A, B, C = matrices
         return (
-            np.ldexp(A, states[None, :] - states[:, None] - scaling.time),
-            np.ldexp(B, scaling.inputs.astype(np.int64)[None, :] - states[:, None]),
-            np.ldexp(C, states[None, :] - scaling.outputs.astype(np.int64)[:, None]),
+            shift(A, states[None, :] - states[:, None] - scaling.time),
+            shift(B, scaling.inputs.astype(np.int64)[None, :] - states[:, None]),
+            shift(C, states[None, :] - scaling.outputs.astype(np.int64)[:, None]),
         )
 
     def pencil(self, side: Side) -> Pencil:
@@ -142,7 +148,12 @@ class InDoubles:
             of = lambda A, B, C: np.hstack([A, B])  # noqa: E731  # one expression, two shapes
         else:
             of = lambda A, B, C: np.hstack([A.T, C.T])  # noqa: E731
-        return Pencil(of(self.A, self.B, self.C), of(*self.radii) + _TINY, of(*self.lost) + _TINY)
+        return Pencil(
+            of(self.A, self.B, self.C),
+            of(*self.radii) + _TINY,
+            of(*self.lost) + _TINY,
+            of(*self.exact),
+        )
 
     def point(self, z: complex) -> complex:
         """Return a point in the user's units."""
@@ -164,6 +175,14 @@ def _fractions(matrix: Array) -> Array:
     result = np.empty(matrix.size, dtype=object)
     result[:] = [Fraction(entry) for entry in matrix.ravel().tolist()]
     return result.reshape(matrix.shape)
+
+
+def _shifted(matrix: Array, exponents: Array) -> Array:
+    """Multiply exact numbers by powers of two."""
+    result = np.empty(matrix.shape, dtype=object)
+    for place, entry in np.ndenumerate(matrix):
+        result[place] = entry * Fraction(2) ** int(exponents[place])
+    return result
 
 
 def _rounded(matrix: Array) -> Array:

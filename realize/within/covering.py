@@ -1,39 +1,41 @@
-"""The proof that every model in a box is controllable: a covering of the complex plane.
+"""The proof that every model in a box is controllable: a covering of the complex plane by squares.
 
-On a disc |z - z0| <= r take an approximate right inverse X of M(z0) = [A - z0 I, B]. For every z in
-the disc and every model in the box M X = I - P with |P| <= |I - M(z0) X| + (R + r [I 0]) |X|, entry
-by entry. Where a positive vector v has |P| v < v, the spectral radius of P is below 1 (Collatz and
-Wielandt; Berman and Plemmons, Nonnegative Matrices in the Mathematical Sciences, chapter 2), so M X
-is not singular and M has full rank. With t R for R the inequality is linear in t, so each disc has
-a largest factor t that it proves.
-
-Every bound is for the numbers as they are, not as they were computed: an inner product of length k
-in doubles is off by no more than k u / (1 - k u) times that of the sizes, in whatever order it was
-summed (Higham, Accuracy and Stability of Numerical Algorithms, section 3.1).
+Squares whose discs prove too little are split in four. Where that is of no more use, because the
+right inverse of one centre does not serve all models of the box, or because a change that is real
+is less than one that may be complex, the box is split too, entry by entry.
 """
 
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
+from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
 
 from realize.within.box import Pencil
+from realize.within.discs import Discs
 
 __all__ = ["Covering"]
 
 Array = np.ndarray[Any, Any]
 
 _U: Final = 2.0**-52
-"""Twice the unit roundoff, so that single operations are covered with room."""
+
+_FIRST: Final = 8
+"""Squares from left to right to begin with."""
 
 _BATCH: Final = 64
-_STEPS: Final = 5
-_FIRST: Final = 8
+"""Squares that are split at a time."""
+
+_STEPS: Final = 8
+"""Power iterations towards a bound on all eigenvalues."""
 
 _APART: Final = 0.02
 """Share of the covering's reach by which two places must differ to count as two."""
+
+_CORNERS: Final = np.array([-1 - 1j, -1 + 1j, 1 - 1j, 1 + 1j])
 
 
 class Covering:
@@ -45,8 +47,7 @@ class Covering:
 
     def __init__(self, pencil: Pencil, largest: float) -> None:
         self.pencil, self.largest = pencil, largest
-        n = pencil.order
-        self.slack = 1 + (pencil.matrix.shape[1] + 16) * 8 * _U
+        self.discs = Discs(pencil, largest)
         reach = self._reach()
         side = 2.0 * reach / _FIRST
         x = -reach + side * (np.arange(_FIRST) + 0.5)
@@ -56,23 +57,27 @@ class Covering:
         self.factor = np.zeros(self.z.shape)
         self.limit = np.zeros(self.z.shape)
         self.count = 0
-        if n and math.isfinite(reach):
+        if pencil.order == 0:
+            self.factor[:] = self.limit[:] = largest
+        elif math.isfinite(reach):
             self._weigh(np.arange(len(self.z)))
 
     def _reach(self) -> float:
-        """Return a power of two that no eigenvalue of any model exceeds in size."""
+        """Return a power of two that no eigenvalue of any model exceeds in size.
+
+        For any positive v the largest (|A| v)_i / v_i is such a bound.
+        """
         n = self.pencil.order
-        if not n:
-            return 1.0
         sizes = np.abs(self.pencil.matrix) + self.pencil.lost + self.largest * self.pencil.radius
         sizes = sizes[:, :n]
-        v = np.ones(n)
-        best = math.inf
+        v, best = np.ones(n), math.inf
+        if not n or not np.isfinite(sizes).all():
+            return 1.0 if not n else math.inf
         for _ in range(_STEPS):
             image = sizes @ v
-            best = min(best, float((image / v).max()) * self.slack)
-            v = image / image.max() + 1e-3 if np.isfinite(image).all() and image.max() > 0 else v
-        return 2.0 ** math.ceil(math.log2(best)) if 0 < best < math.inf else 1.0 if not best else best
+            best = min(best, float((image / v).max()) * self.discs.slack)
+            v = image / image.max() + 1e-3
+        return 2.0 ** math.ceil(math.log2(best))
 
     @property
     def lower(self) -> float:
@@ -81,16 +86,16 @@ class Covering:
 
     @property
     def bound(self) -> float:
-        """What `lower` can reach by smaller squares alone."""
+        """About what `lower` can reach by smaller squares alone."""
         return float(self.limit.min(initial=self.largest))
 
     def failing(self, most: int) -> list[complex]:
         """Return where the least is proved, places well apart, the worst first."""
         found: list[complex] = []
+        apart = _APART * float(np.abs(self.z).max(initial=0.0))
         for k in np.argsort(self.limit).tolist():
             if self.limit[k] >= 1 or len(found) == most:
                 break
-            apart = _APART * float(np.abs(self.z).max())
             if all(abs(self.z[k] - other) > apart for other in found):
                 found.append(complex(self.z[k]))
         return found
@@ -104,8 +109,7 @@ class Covering:
         keep = np.ones(len(self.z), dtype=bool)
         keep[split] = False
         quarter = self.half[split] / 2
-        corners = np.array([-1 - 1j, -1 + 1j, 1 - 1j, 1 + 1j])
-        z = (self.z[split][:, None] + quarter[:, None] * corners).ravel()
+        z = (self.z[split][:, None] + quarter[:, None] * _CORNERS).ravel()
         first = int(keep.sum())
         self.z = np.concatenate([self.z[keep], z])
         self.half = np.concatenate([self.half[keep], np.repeat(quarter, 4)])
@@ -115,72 +119,103 @@ class Covering:
         return True
 
     def _weigh(self, cells: Array) -> None:
-        """Find what the squares prove."""
+        """Find what squares prove."""
         for start in range(0, len(cells), 4 * _BATCH):
             some = cells[start : start + 4 * _BATCH]
-            # The half diagonal, rounded up.
-            radius = self.half[some] * (math.sqrt(2.0) * (1 + 2 * _U))
-            with np.errstate(all="ignore"):
-                found, limit = self._factors(self.z[some], radius)
-            self.factor[some] = np.maximum(self.factor[some], found)
-            self.limit[some] = np.minimum(limit, self.largest)
+            proved = self.discs.proved(self.z[some], _around(self.half[some]))
+            self.factor[some] = np.maximum(self.factor[some], proved.factor)
+            self.limit[some] = np.minimum(np.maximum(proved.limit, self.factor[some]), self.largest)
             self.count += len(some)
 
-    def _factors(self, z: Array, r: Array) -> tuple[Array, Array]:
-        pencil, n = self.pencil, self.pencil.order
-        eye = np.eye(*pencil.matrix.shape)
-        M = pencil.matrix - z.real[:, None, None] * eye
-        y = z.imag[:, None, None]
-        X = self._inverse(M - 1j * y * eye, r)
-        size = np.abs(M)
-        diagonal = size * eye
-        size += np.abs(y) * eye
-        own = pencil.lost + _U * diagonal + (4 * (pencil.matrix.shape[1] + 8) * _U) * size
-        real, imag = np.ascontiguousarray(X.real), np.ascontiguousarray(X.imag)
-        residual = np.abs(np.eye(n) - (M @ real + y * imag[:, :n])) + np.abs(
-            M @ imag - y * real[:, :n]
+    def split_box(self, go_on: Callable[[int], bool]) -> None:
+        """Try to prove what is left for a factor of 1 by splitting the box too.
+
+        ``go_on`` is asked with the number of pieces left before each round. What is proved of a
+        square in all its pieces is proved of the square.
+        """
+        left = np.flatnonzero(self.factor < 1)
+        n, width = self.pencil.matrix.shape
+        pieces = _Pieces(
+            left,
+            self.z[left],
+            self.half[left],
+            np.broadcast_to(self.pencil.matrix, (len(left), n, width)),
+            np.broadcast_to(self.pencil.radius, (len(left), n, width)),
         )
-        sizes = np.hypot(real, imag) * (1 + 4 * _U)
-        H = (pencil.radius @ sizes) * self.slack
-        point = (residual + own @ sizes + 4 * _U * np.eye(n)) * self.slack
-        disc = (point + r[:, None, None] * sizes[:, :n]) * self.slack
-        return self._largest(disc, H), self._largest(point, H)
+        while len(pieces.z) and go_on(len(pieces.z)):
+            # The last ones first, so that a square is done with before the next is begun.
+            now, later = pieces.some(slice(-_BATCH, None)), pieces.some(slice(None, -_BATCH))
+            r = _around(now.half)
+            proved = self.discs.proved(now.z, r, now.matrix, now.radius)
+            self.count += len(r)
+            open_ones = np.flatnonzero(proved.factor < 1)
+            if not len(open_ones):
+                pieces = later
+                continue
+            of_disc, of_entries = self.discs.burdens(proved, r, now.radius)
+            halves = now.some(open_ones).split(of_disc[open_ones], of_entries[open_ones])
+            pieces = later.joined(halves)
+        done = np.setdiff1d(left, pieces.owner)
+        self.factor[done] = np.maximum(self.factor[done], 1.0)
+        self.limit[done] = np.maximum(self.limit[done], 1.0)
 
-    def _inverse(self, M: Array, r: Array) -> Array:
-        """Return approximate right inverses, small where the matrix is uncertain."""
-        n = self.pencil.order
-        weight = self.pencil.radius.sum(axis=0)[None, :] + np.zeros((len(r), 1))
-        weight[:, :n] += r[:, None]
-        weight = np.maximum(weight, 1e-3 * weight.max(axis=1, keepdims=True))
-        D = np.where(weight > 0, 1 / weight, 1.0)
-        good = np.isfinite(M).all(axis=(1, 2)) & np.isfinite(D).all(axis=1)
-        D[~good] = 1.0
-        scaled = np.where(good[:, None, None], M * D[:, None, :], np.eye(*M.shape[1:]))
-        U, s, W = np.linalg.svd(scaled, full_matrices=False)
-        s = np.maximum(s, s[:, :1] * 2.0**-52)
-        return D[:, :, None] * ((W.conj().transpose(0, 2, 1) / s[:, None, :]) @ U.conj().transpose(0, 2, 1))
 
-    def _largest(self, G: Array, H: Array) -> Array:
-        """Return factors t with (G + t H) v < v for some positive v; below 0: not even t = 0."""
-        n = G.shape[1]
-        best = np.full(len(G), -1.0)
-        fit = np.isfinite(G).all(axis=(1, 2)) & np.isfinite(H).all(axis=(1, 2))
-        G, H = G[fit], H[fit]
-        found = np.full(len(G), -1.0)
-        try:
-            K = np.linalg.inv(np.eye(n) - G)
-        except np.linalg.LinAlgError:
-            return best
-        start = K.sum(axis=2)
-        v = start = np.maximum(start / np.abs(start).max(axis=1, keepdims=True), 0.0)
-        for _ in range(_STEPS):
-            left = v - (G @ v[:, :, None])[:, :, 0] * self.slack
-            used = (H @ v[:, :, None])[:, :, 0] * self.slack
-            each = np.where(left > 0, np.where(used > 0, left / used, np.inf), -1.0)
-            each[v <= 0] = -1.0
-            found = np.fmax(found, each.min(axis=1) * (1 - 16 * _U))
-            v = (K @ used[:, :, None])[:, :, 0]
-            top = v.max(axis=1, keepdims=True)
-            v = np.where(top > 0, v / top, 0.0) + 1e-4 * start
-        best[fit] = found
-        return best
+@dataclass(frozen=True, slots=True, eq=False)
+class _Pieces:
+    """Squares with boxes of their own; `owner` is the square of the covering they belong to."""
+
+    owner: Array
+    z: Array
+    half: Array
+    matrix: Array
+    radius: Array
+
+    def some(self, which: Any) -> _Pieces:
+        return _Pieces(
+            self.owner[which],
+            self.z[which],
+            self.half[which],
+            self.matrix[which],
+            self.radius[which],
+        )
+
+    def joined(self, other: _Pieces) -> _Pieces:
+        return _Pieces(
+            np.concatenate([self.owner, other.owner]),
+            np.concatenate([self.z, other.z]),
+            np.concatenate([self.half, other.half]),
+            np.concatenate([self.matrix, other.matrix]),
+            np.concatenate([self.radius, other.radius]),
+        )
+
+    def split(self, of_disc: Array, of_entries: Array) -> _Pieces:
+        """Split each in four by its square, or in two by its most burdensome entry."""
+        flat = of_entries.reshape(len(self.z), -1)
+        worst = flat.argmax(axis=1)
+        by_square = ~(flat.max(axis=1) > of_disc)
+        squares, boxes = self.some(by_square), self.some(~by_square)
+        quarter = squares.half / 2
+        fours = _Pieces(
+            np.repeat(squares.owner, 4),
+            (squares.z[:, None] + quarter[:, None] * _CORNERS).ravel(),
+            np.repeat(quarter, 4),
+            np.repeat(squares.matrix, 4, axis=0),
+            np.repeat(squares.radius, 4, axis=0),
+        )
+        i, j = np.divmod(worst[~by_square], self.matrix.shape[2])
+        k = np.arange(len(i))
+        radius = boxes.radius.copy()
+        half = radius[k, i, j] / 2
+        down, up = boxes.matrix.copy(), boxes.matrix.copy()
+        down[k, i, j] -= half
+        up[k, i, j] += half
+        # Wide enough for the rounding of the new centres.
+        radius[k, i, j] = half + _U * (np.abs(boxes.matrix[k, i, j]) + half)
+        for matrix in (down, up):
+            fours = fours.joined(_Pieces(boxes.owner, boxes.z, boxes.half, matrix, radius))
+        return fours
+
+
+def _around(half: Array) -> Array:
+    """Return the half diagonal of squares, rounded up."""
+    return np.asarray(half * (math.sqrt(2.0) * (1 + 2 * _U)))

@@ -318,7 +318,10 @@ def _near(K: Array, wanted: Array, radius: Array, start: Array) -> Array | None:
     room = [max(1.0 - float(abs(x[i]) / radius[i]), 1e-6) for i in open_places]
     weighted = np.array(
         [
-            [_to_float(row[i] * radius[i]) * space for i, space in zip(open_places, room, strict=True)]
+            [
+                _to_float(row[i] * radius[i]) * space
+                for i, space in zip(open_places, room, strict=True)
+            ]
             for row in K.tolist()
         ]
     )

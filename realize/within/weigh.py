@@ -40,6 +40,12 @@ _ALONE: Final = 0.6
 _SAME: Final = 1e-5
 """Relative difference up to which two points, or two vectors, are the same."""
 
+_SPLITTING: Final = 0.85
+"""Share of the time after which the box is not split any more."""
+
+_PIECES: Final = 6000
+"""How many pieces are tested on each side before splitting the box is given up."""
+
 _LARGEST: Final = 2.0
 """Factor on the radii up to which minimality is of interest."""
 
@@ -150,6 +156,8 @@ class _Weighing:
             if self._lower() < 1:
                 self._look(doubles)
             if self._lower() < 1 < self._upper():
+                self._split()
+            if self._lower() < 1 < self._upper():
                 self._prove(_CLOSE, 1.0)
         if self.witness is not None:
             self._hide_more(doubles)
@@ -186,6 +194,21 @@ class _Weighing:
                     self.unfinished = "the time was up before the plane was covered"
                     return
                 covering.refine(1.0)
+
+    def _split(self) -> None:
+        """Try to prove what is left by splitting the box too, as long as there is hope."""
+        for covering in self.coverings.values():
+            # Much of a square must be lost already, or splitting would never end.
+            while covering.bound >= 1 and covering.lower < 1 and not self._late(_SPLITTING):
+                covering.refine(1.0)
+            last = covering.count + _PIECES
+            covering.split_box(
+                lambda left, covering=covering, last=last: (
+                    left < _PIECES and covering.count < last and not self._late(_SPLITTING)
+                )
+            )
+            if covering.lower < 1:
+                return
 
     def _look(self, doubles: InDoubles) -> None:
         """Look for a model that is not minimal, first where the proof fails."""
