@@ -19,6 +19,7 @@ if not __package__:
     os.chdir(os.path.dirname(os.path.dirname(os.path.abspath(__file__))))
     os.execv(sys.executable, [sys.executable, "-m", "benchmarks.within", *sys.argv[1:]])
 
+import itertools
 import statistics
 import time
 from collections.abc import Callable
@@ -86,7 +87,7 @@ def oscillators(rng: np.random.Generator, minimal: bool) -> Planted:
     n = int(rng.integers(2, 5))
     stiff = [Fraction(int(k), 10) for k in 20 + np.cumsum(rng.integers(3, 12, n))]
     damp = [Fraction(int(k), 100) for k in rng.integers(20, 24, n)]
-    gap = min(b - a for a, b in zip(stiff, stiff[1:], strict=False))
+    gap = min(b - a for a, b in itertools.pairwise(stiff))
     radius = gap / (2 * _factor(rng, minimal))
     A, B, C = _zeros(2 * n, 2 * n), _zeros(2 * n, 1), _zeros(1, 2 * n)
     radii = [[0] * (2 * n) for _ in range(2 * n)]

@@ -58,10 +58,7 @@ def weighed_modes(
     shift = max(math.frexp(float(np.abs(A).max(initial=0.0)))[1], -1000)
     A = np.ldexp(A, -shift)
     unit = math.ldexp(1.0, -shift)
-    if radii is None:
-        data = UNIT_ROUNDOFF * np.abs(A)
-    else:
-        data = np.ldexp(_doubles(radii), -shift)
+    data = UNIT_ROUNDOFF * np.abs(A) if radii is None else np.ldexp(_doubles(radii), -shift)
     norm = float(np.linalg.norm(A))
     spectrum = _Spectrum(*scipy.linalg.eig(A, left=True, right=True))
     found = tuple(

@@ -1,1 +1,1 @@
-"""Is every model within an uncertainty minimal? Proof, witness, or both bounds."""
+"""Whether every model within an uncertainty is minimal: proof, witness, or both bounds."""

@@ -19,7 +19,6 @@ suffice, balls do it.
 from __future__ import annotations
 
 import itertools
-import math
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any, Final
@@ -213,10 +212,7 @@ class Discs:
         best, limit = np.full(len(M), -1.0), np.full(len(M), -1.0)
         chosen = X.copy()
         for sharpen in (False, True):
-            if sharpen:
-                tried = self._sharpened(many, M, chosen)[:, None]
-            else:
-                tried = self._spared(M)
+            tried = self._sharpened(many, M, chosen)[:, None] if sharpen else self._spared(M)
             count = tried.shape[1]
             repeated = many.some(np.repeat(np.arange(len(M)), count))
             inverses = tried.reshape(-1, width, n)

@@ -1,4 +1,4 @@
-"""Is every model within an uncertainty minimal?
+"""Whether every model within an uncertainty is minimal.
 
 A proof for both sides of the model (`covering`), or an exact model within the uncertainty that is
 not minimal (`search` and `exactly`), or neither, with the bounds that were reached.
@@ -117,7 +117,7 @@ class Weighed:
 
 
 def weigh(box: Box, seconds: float | None, known: Realization | None = None) -> Weighed:
-    """Weigh a box of models: are they all minimal?
+    """Return what is known of a box of models: whether they are all minimal.
 
     Parameters
     ----------
@@ -290,7 +290,7 @@ class _Weighing:
             within = Within.MINIMAL
         side, point, weights = None, None, ()
         if self.best is not None:
-            witness, found = self.best
+            found = self.best[1]
             mode = found.modes[0]
             side, point = mode.side, InDoubles(self.box).point(mode.point)
             weights = tuple(self._heaviest(found))
