@@ -31,7 +31,7 @@ class Settled:
 
 def settle(
     box: Box,
-    kind: Kind,
+    model: Realization,
     exact: dict[str, ExactAnswer],
     nearest: Nearest | None,
     budget: float | None,
@@ -44,14 +44,17 @@ def settle(
     What there was no time for is added to ``not_done``.
     """
     order = box.centre.order
-    own = str(Reading.GIVEN if kind == Kind.RATIONAL else Reading.STORED)
+    own = str(Reading.GIVEN if model.kind is Kind.RATIONAL else Reading.STORED)
+    if model._connection is not None:
+        # A reading connects exactly; the middle is the doubles that were multiplied out.
+        own = "nearest"
     inside = {
         word: exact[word]
         for word in map(str, _LEADING)
         if word in exact and box.holds(exact[word].model)
     }
     if all(found.model != box.centre for found in inside.values()):
-        # Not among the readings asked for; or a connection, whose reading connects exactly.
+        # Not among the readings asked for, or a connection.
         try:
             centre = ExactAnswer(box.centre, Clock(budget))
             centre.find_hidden()

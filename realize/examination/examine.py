@@ -123,7 +123,7 @@ def examine(
     answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
     weighed = None
     if box is not None:
-        settled = settle(box, model.kind, exact, nearest, budget, not_done)
+        settled = settle(box, model, exact, nearest, budget, not_done)
         answer, about, weighed = settled.answer, settled.about, settled.weighed
     accuracy = None if box is None else box.radii.A
     hidden = Deferred(
@@ -362,7 +362,11 @@ def _hidden_modes(
     if about is not None:
         return about.hidden_modes()
     # Where the exact path did not run, all may still be proved to show.
-    return () if answer.order == floating.model.order else by_pattern(floating.hidden_modes(), floating.model)
+    return (
+        ()
+        if answer.order == floating.model.order
+        else by_pattern(floating.hidden_modes(), floating.model)
+    )
 
 
 def _visible_modes(

@@ -127,12 +127,13 @@ class Covering:
             self.limit[some] = np.minimum(np.maximum(proved.limit, self.factor[some]), self.largest)
             self.count += len(some)
 
-    def split_box(self, go_on: Callable[[int], bool]) -> None:
+    def split_box(self, most: int, late: Callable[[], bool]) -> None:
         """Try to prove what is left for a factor of 1 by splitting the box too.
 
-        ``go_on`` is asked with the number of pieces left before each round. What is proved of a
-        square in all its pieces is proved of the square.
+        What is proved of a square in all its pieces is proved of the square. It ends when
+        ``most`` pieces were tested, or are waiting, or when it is late.
         """
+        last = self.count + most
         left = np.flatnonzero(self.factor < 1)
         n, width = self.pencil.matrix.shape
         pieces = _Pieces(
@@ -142,7 +143,7 @@ class Covering:
             np.broadcast_to(self.pencil.matrix, (len(left), n, width)),
             np.broadcast_to(self.pencil.radius, (len(left), n, width)),
         )
-        while len(pieces.z) and go_on(len(pieces.z)):
+        while len(pieces.z) and len(pieces.z) < most and self.count < last and not late():
             # The last ones first, so that a square is done with before the next is begun.
             now, later = pieces.some(slice(-_BATCH, None)), pieces.some(slice(None, -_BATCH))
             r = _around(now.half)

@@ -201,12 +201,7 @@ class _Weighing:
             # Much of a square must be lost already, or splitting would never end.
             while covering.bound >= 1 and covering.lower < 1 and not self._late(_SPLITTING):
                 covering.refine(1.0)
-            last = covering.count + _PIECES
-            covering.split_box(
-                lambda left, covering=covering, last=last: (
-                    left < _PIECES and covering.count < last and not self._late(_SPLITTING)
-                )
-            )
+            covering.split_box(_PIECES, lambda: self._late(_SPLITTING))
             if covering.lower < 1:
                 return
 
@@ -288,7 +283,8 @@ class _Weighing:
             within = Within.NOT_MINIMAL
         elif lower >= 1:
             within = Within.MINIMAL
-        side, point, weights = None, None, ()
+        side, point = None, None
+        weights: tuple[tuple[str, float], ...] = ()
         if self.best is not None:
             found = self.best[1]
             mode = found.modes[0]
