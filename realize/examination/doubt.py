@@ -15,6 +15,7 @@ from realize.model.realization import Kind, Realization
 from realize.results import Mode
 from realize.stability import Stability, root_counts
 from realize.tolerance import UNIT_ROUNDOFF, rounding_floor
+from realize.within.box import in_doubles
 
 __all__ = ["weighed_modes"]
 
@@ -49,7 +50,7 @@ def weighed_modes(
     if not found:
         return found
     try:
-        A = model.A if model.kind is Kind.FLOATING else model.to_float().A
+        A = in_doubles(model.A)
     except EntryError:
         # Entries beyond doubles: no mode of theirs can be followed in doubles.
         return found
@@ -58,7 +59,7 @@ def weighed_modes(
     shift = max(math.frexp(float(np.abs(A).max(initial=0.0)))[1], -1000)
     A = np.ldexp(A, -shift)
     unit = math.ldexp(1.0, -shift)
-    data = UNIT_ROUNDOFF * np.abs(A) if radii is None else np.ldexp(_doubles(radii), -shift)
+    data = UNIT_ROUNDOFF * np.abs(A) if radii is None else np.ldexp(in_doubles(radii), -shift)
     norm = float(np.linalg.norm(A))
     spectrum = _Spectrum(*scipy.linalg.eig(A, left=True, right=True))
     found = tuple(
@@ -103,16 +104,6 @@ def _unscaled(size: float, shift: int) -> float:
         return math.ldexp(size, shift)
     except OverflowError:
         return math.inf
-
-
-def _doubles(radii: Array) -> Array:
-    flat = []
-    for value in radii.ravel().tolist():
-        try:
-            flat.append(float(value))
-        except OverflowError:
-            flat.append(math.inf)
-    return np.array(flat).reshape(radii.shape)
 
 
 def _margin(value: complex, period: Any) -> float:

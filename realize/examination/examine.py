@@ -18,6 +18,7 @@ from realize.errors import (
     UnsupportedEntryError,
 )
 from realize.examination.accuracy import settle
+from realize.examination.alike import alike
 from realize.examination.doubt import weighed_modes
 from realize.examination.lost import with_loss
 from realize.examination.nearest import Nearest, nearest_of
@@ -125,9 +126,15 @@ def examine(
     if box is not None:
         settled = settle(box, model, exact, nearest, budget, not_done)
         answer, about, weighed = settled.answer, settled.about, settled.weighed
-    accuracy = None if box is None else box.radii.A
+    radii = None if box is None else box.radii
+    accuracy = None if radii is None else radii.A
     hidden = Deferred(
         lambda: weighed_modes(_hidden_modes(about, floating, answer), model, answer.basis, accuracy)
+    )
+    visible = Deferred(
+        lambda: weighed_modes(
+            _visible_modes(about, floating, budget), model, answer.basis, accuracy
+        )
     )
     connection = model._connection
     stairs = {word: found.stairs for word, found in exact.items()}
@@ -157,9 +164,12 @@ def examine(
         _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
         _hidden=Deferred(lambda: with_loss(hidden.get(), model, answer.basis, budget)),
         _loops=Deferred(lambda: () if connection is None else connection.join().loops),
-        _visible=Deferred(
-            lambda: weighed_modes(
-                _visible_modes(about, floating, budget), model, answer.basis, accuracy
+        _visible=visible,
+        _alike=Deferred(
+            lambda: (
+                ()
+                if model.kind is Kind.RATIONAL and box is None
+                else alike(hidden.get() + visible.get(), model, radii)
             )
         ),
         _parts=Deferred(lambda: {word: _parts_of(found, budget) for word, found in exact.items()}),

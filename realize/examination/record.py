@@ -12,6 +12,7 @@ from typing import Any, Final
 
 import numpy as np
 
+from realize.examination.alike import Alike
 from realize.examination.nearest import Nearest
 from realize.model.connections import AlgebraicLoop
 from realize.model.files import to_document
@@ -122,6 +123,7 @@ class Examination:
     _unsimple: Deferred[int]
     _reduction: Deferred[Reduction | None]
     _loops: Deferred[tuple[AlgebraicLoop, ...]]
+    _alike: Deferred[tuple[Alike, ...]]
 
     @property
     def algebraic_loops(self) -> tuple[AlgebraicLoop, ...]:
@@ -175,6 +177,15 @@ class Examination:
         floating path, with infinite radius.
         """
         return self._hidden.get() + self._visible.get()
+
+    @property
+    def alike(self) -> tuple[Alike, ...]:
+        """Modes that agree, and visible modes and zeros that do, within what the data can tell.
+
+        Within the uncertainty, or one ulp of every entry where none was given, to first order.
+        None of exact data without an uncertainty.
+        """
+        return self._alike.get()
 
     @property
     def parts(self) -> dict[str, dict[str, Polynomial | None]]:
@@ -298,6 +309,7 @@ class Examination:
             ),
             "parts": _plain_parts(self.parts),
             "modes": [mode.to_dict() for mode in self.modes],
+            "alike": [pair.to_dict() for pair in self.alike],
             "decisions": [decision.to_dict() for decision in self.decisions],
             "cutoff_ranges": {
                 reading: None if span is None else [_finite(value) for value in span]

@@ -11,12 +11,12 @@ from typing import Any, Final
 import numpy as np
 
 from realize.arithmetic.scaling import Scaling, scaling_of
-from realize.entries import round_fraction
+from realize.entries import round_entry
 from realize.model.realization import Kind, Realization
 from realize.results import Side
 from realize.uncertainty import MatrixRadii, Uncertainty
 
-__all__ = ["Box", "InDoubles", "Pencil"]
+__all__ = ["Box", "InDoubles", "Pencil", "in_doubles"]
 
 Array = np.ndarray[Any, Any]
 
@@ -100,6 +100,20 @@ class Pencil:
         return int(self.matrix.shape[0])
 
 
+def in_doubles(matrix: Array) -> Array:
+    """Return entries of any kind as doubles.
+
+    Raises
+    ------
+    EntryError
+        When one lies beyond the range of doubles.
+    """
+    if matrix.dtype != object:
+        return matrix
+    flat = [round_entry(entry, "entry") for entry in matrix.ravel().tolist()]
+    return np.array(flat, dtype=float).reshape(matrix.shape)
+
+
 class InDoubles:
     """A box in doubles, in units that are powers of two, so that they lose nothing.
 
@@ -113,7 +127,7 @@ class InDoubles:
     """
 
     def __init__(self, box: Box) -> None:
-        A, B, C = (_rounded(matrix) for matrix in box.centre.matrices()[:3])
+        A, B, C = (in_doubles(matrix) for matrix in box.centre.matrices()[:3])
         scaling = scaling_of(A, B, C)
         self.time, self.states = scaling.time, scaling.states.astype(np.int64)
         self.A, self.B, self.C = self._in_units((A, B, C), scaling)
@@ -183,11 +197,6 @@ def _shifted(matrix: Array, exponents: Array) -> Array:
     for place, entry in np.ndenumerate(matrix):
         result[place] = entry * Fraction(2) ** int(exponents[place])
     return result
-
-
-def _rounded(matrix: Array) -> Array:
-    flat = [round_fraction(entry, "entry") for entry in matrix.ravel().tolist()]
-    return np.array(flat, dtype=float).reshape(matrix.shape)
 
 
 def _above(matrix: Array) -> Array:

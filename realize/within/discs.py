@@ -359,7 +359,7 @@ def _least(M: Array, weights: Array) -> tuple[Array, Array]:
     Also the least and the largest singular value of the weighted matrices.
     """
     D = 1 / weights
-    good: Array = np.isfinite(M).all(axis=(1, 2))
+    good = np.asarray(np.isfinite(M).all(axis=(1, 2)))
     scaled = np.where(good[:, None, None], M * D[:, None, :], np.eye(*M.shape[1:]))
     U, s, W = np.linalg.svd(scaled, full_matrices=False)
     spread = s[:, [-1, 0]]
