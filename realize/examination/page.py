@@ -96,7 +96,8 @@ def _named(examination: Examination, modes: Iterable[Mode]) -> list[tuple[str, M
     blur = _BLUR * _largest(examination) if modes else 0.0
     found: dict[tuple[str, Part], tuple[str, Mode, int]] = {}
     for mode in modes:
-        doubtful = mode.stability is Stability.CANNOT_TELL
+        # Within an uncertainty that was given the value is one of many, but no noise.
+        doubtful = mode.stability is Stability.CANNOT_TELL and examination.weighed is None
         value = mode.value
         if doubtful and examination.model.sampling_period is None:
             value = complex(0.0, value.imag if abs(value.imag) > blur else 0.0)
@@ -352,7 +353,7 @@ def _within(examination: Examination) -> str:
     given = f"uncertainty {examination.uncertainty}"
     if weighed.within is Within.MINIMAL:
         more = "twice it" if weighed.proved >= 2 else f"{_down(weighed.proved)} times it"
-        more = f", and within {more}" if weighed.proved >= 1.01 else ""
+        more = f", and within {more}," if weighed.proved >= 1.01 else ""
         return f"{given}: every model within it{more} is minimal, proved."
     proved = f"within {_down(weighed.proved)} of it every model is minimal, proved"
     if weighed.within is Within.NOT_MINIMAL:

@@ -10,6 +10,7 @@ Otherwise the changes found are kept, but for as many as there are equations.
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
@@ -37,8 +38,13 @@ _ROUNDINGS: Final = ((1, 16), (60, 24), (10**4, 30), (10**7, 40), (None, 53))
 _NEAR: Final = 1e-7
 """How far a short point may lie from the one found, relative to the norm of A."""
 
-_NOTHING: Final = 1e-10
-"""Components of a vector below this share of the largest count as zero."""
+_NOTHING: Final = (1e-6, 1e-10)
+"""Components of a vector below this share of the largest count as zero, tried in turn.
+
+Linear programs leave noise of about 1e-8, which exact equations would take at its word."""
+
+_ROOMY: Final = 16
+"""Size of a component of a vector, its largest 1, as far as there is room to move it."""
 
 _WORSE: Final = 1.001
 """Factor on the factor found up to which a rounding counts as serving."""
@@ -64,11 +70,16 @@ class Witness:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class _Rows:
-    """Rows W with W (A + dA) = L W and W (B + dB) = 0, in the orientation of one side."""
+    """Rows W with W (A + dA) = L W and W (B + dB) = 0, in the orientation of one side.
+
+    ``change`` is [dA, dB], settled for the columns that the rows were fitted to, a start for the
+    others.
+    """
 
     side: Side
     W: Array
     L: Array
+    change: Array
 
 
 def exactly(box: Box, doubles: InDoubles, found: Found, wanted: float) -> Witness | None:
@@ -77,19 +88,19 @@ def exactly(box: Box, doubles: InDoubles, found: Found, wanted: float) -> Witnes
     The first rounding whose factor does not exceed ``wanted``, or hardly exceeds the one found.
     """
     best: Witness | None = None
-    changes = _placed(box, doubles, found)
-    depth = {side: sum(mode.count for mode in found.modes if mode.side is side) for side in Side}
-    for denominator, bits in _ROUNDINGS:
+    start = _placed(box, doubles, found)
+    sides = [side for side in Side if any(mode.side is side for mode in found.modes)]
+    for nothing, (denominator, bits) in itertools.product(_NOTHING, _ROUNDINGS):
         rows: list[_Rows] = []
-        for mode in found.modes:
-            change = _turned(mode.side, *changes)
-            exact = _rows(box, doubles, mode, change, depth[mode.side], denominator, bits)
+        for side in sides:
+            modes = [mode for mode in found.modes if mode.side is side]
+            exact = _rows(box, doubles, modes, _turned(side, *start), denominator, bits, nothing)
             if exact is None:
                 break
             rows.append(exact)
-        if len(rows) < len(found.modes):
+        if len(rows) < len(sides):
             continue
-        witness = _solved(box, rows, changes)
+        witness = _solved(box, rows, start)
         if witness is None:
             continue
         if best is None or witness.factor < best.factor:
@@ -121,56 +132,65 @@ def _short(value: float, denominator: int | None, allowed: float) -> Fraction | 
 def _rows(
     box: Box,
     doubles: InDoubles,
-    mode: Hidden,
+    modes: Sequence[Hidden],
     change: Array,
-    depth: int,
     denominator: int | None,
     bits: int,
+    nothing: float,
 ) -> _Rows | None:
-    """Return rational rows for one mode, or for a pair; None where no short point is near.
+    """Return rational rows for the modes of one side; None where no short points are near.
 
-    ``depth`` rows in all must agree with each column. One with fewer uncertain entries than that
-    keeps the change found, and the rows are fitted to it, as to columns without uncertainty.
+    All rows must agree with each column. One with fewer uncertain entries than there are rows
+    leaves them no choice, and they are fitted to it; with it its changes.
     """
-    z = doubles.point(mode.point)
-    scale = _NEAR * math.ldexp(max(float(np.linalg.norm(doubles.A)), abs(mode.point)), doubles.time)
-    sign = -1 if mode.side is Side.INPUT else 1
-    vector = np.where(np.abs(mode.vector) > _NOTHING, mode.vector, 0.0)
-    if mode.is_real:
-        point = _short(z.real, denominator, scale)
-        if point is None:
-            return None
-        L = _table([[point]])
-        target = vector[None, :]
-    else:
-        first = _short(-2 * z.real, denominator, scale)
-        last = _short(abs(z) ** 2, denominator, scale * abs(z))
+    side = modes[0].side
+    units = doubles.states if side is Side.OUTPUT else -doubles.states
+    depth = sum(mode.count for mode in modes)
+    L = np.full((depth, depth), _ZERO, dtype=object)
+    targets: list[Array] = []
+    for mode in modes:
+        z = doubles.point(mode.point)
+        size = max(float(np.linalg.norm(doubles.A)), abs(mode.point))
+        allowed = _NEAR * math.ldexp(size, doubles.time)
+        vector = np.where(np.abs(mode.vector) > nothing, mode.vector, 0.0)
+        at = len(targets)
+        if mode.is_real:
+            point = _short(z.real, denominator, allowed)
+            if point is None:
+                return None
+            L[at, at] = point
+            targets.append(vector)
+            continue
+        first = _short(-2 * z.real, denominator, allowed)
+        last = _short(abs(z) ** 2, denominator, allowed * abs(z))
         if first is None or last is None:
             return None
         # Rows p and r with p A = r and r A = -last p - first r.
-        L = _table([[_ZERO, Fraction(1)], [-last, -first]])
-        turned = mode.point * vector
-        target = np.vstack([vector.real, np.ldexp(turned.real, doubles.time)])
-    units = sign * doubles.states
+        L[at, at + 1], L[at + 1, at], L[at + 1, at + 1] = Fraction(1), -last, -first
+        targets += [vector.real, np.ldexp((mode.point * vector).real, doubles.time)]
     # Rounded to few bits in scaled units, where the components are comparable.
     W = _table(
         [
             [
                 _bits(value, bits) * Fraction(2) ** int(unit)
-                for value, unit in zip(row, units, strict=True)
+                for value, unit in zip(row.tolist(), units, strict=True)
             ]
-            for row in target.tolist()
+            for row in targets
         ]
     )
-    matrix, radius = _oriented(box, mode.side)
-    used = (np.abs(W).sum(axis=0)[:, None] * radius != 0).sum(axis=0)
-    fixed = [j for j in range(matrix.shape[1]) if used[j] < depth]
-    if fixed:
-        fitted = _fitted(matrix + change, fixed, W, L, units)
-        if fitted is None:
-            return None
-        W = fitted
-    return _Rows(mode.side, W, L)
+    matrix, radius = _oriented(box, side)
+    carried = np.abs(W).sum(axis=0)[:, None] * radius != 0
+    tight = [j for j in range(matrix.shape[1]) if carried[:, j].sum() < depth]
+    rows = _Rows(side, W, L, change)
+    # What no change can help first: components that are held later must fit it already.
+    rigid = [j for j in tight if not carried[:, j].any()]
+    for columns in (rigid, tight):
+        if columns and (columns is rigid or len(rigid) < len(tight)):
+            fitted = _fitted(rows, matrix, radius, columns, units)
+            if fitted is None:
+                return None
+            rows = fitted
+    return rows
 
 
 def _bits(value: float, bits: int) -> Fraction:
@@ -187,67 +207,75 @@ def _table(rows: Sequence[Sequence[Fraction]]) -> Array:
     return result
 
 
-def _fitted(matrix: Array, fixed: list[int], W: Array, L: Array, units: Array) -> Array | None:
-    """Return rows near W that meet the equations of the fixed columns; zeros of W stay."""
+def _fitted(
+    rows: _Rows, matrix: Array, radius: Array, tight: Sequence[int], units: Array
+) -> _Rows | None:
+    """Return rows nearby, and changes of tight columns, that meet the equations of these exactly.
+
+    Where such a column has uncertain entries, the components of the rows that they multiply stay
+    as they are; then the equations are linear in the other components and in the changes.
+    """
+    W, L = rows.W, rows.L
     depth, n = W.shape
-    support = [j for j in range(n) if W[:, j].any()]
-    place = {(k, j): k * len(support) + at for k in range(depth) for at, j in enumerate(support)}
-    equations = []
-    for column in fixed:
-        for k in range(depth):
-            row = [_ZERO] * (depth * len(support))
-            for j in support:
-                row[place[k, j]] += matrix[j, column]
-            if column < n and column in support:
+    support = [k for k in range(n) if W[:, k].any()]
+    held = {i for i in support for j in tight if radius[i, j]}
+    free = [k for k in support if k not in held]
+    moved = [(i, j) for j in tight for i in support if radius[i, j]]
+    place = {(d, k): at for at, (d, k) in enumerate((d, k) for d in range(depth) for k in free)}
+    first_change = len(place)
+    equations, wanted = [], []
+    for j in tight:
+        for d in range(depth):
+            # Row d of W (M + change) - L W in column j, apart from what is held.
+            row, right = [_ZERO] * (first_change + len(moved)), _ZERO
+            for k in support:
+                if (d, k) in place:
+                    row[place[d, k]] += matrix[k, j]
+                else:
+                    right -= W[d, k] * matrix[k, j]
+            if j in support:
                 for other in range(depth):
-                    row[place[other, column]] -= L[k, other]
+                    if (other, j) in place:
+                        row[place[other, j]] -= L[d, other]
+                    else:
+                        right += L[d, other] * W[other, j]
+            for at, (i, column) in enumerate(moved):
+                if column == j:
+                    row[first_change + at] += W[d, i]
             equations.append(row)
-    width = depth * len(support)
-    reduced, rank = RationalMatrix.from_array(_table(equations)).matrix.rref()
-    table = RationalMatrix(reduced).to_array()
-    pivots = [next(c for c in range(width) if table[r, c]) for r in range(rank)]
-    free = [c for c in range(width) if c not in set(pivots)]
-    if not free:
-        return None
-    basis = np.empty((width, len(free)), dtype=object)
-    basis[:] = _ZERO
-    for at, c in enumerate(free):
-        basis[c, at] = Fraction(1)
-        for r, pivot in enumerate(pivots):
-            basis[pivot, at] = -table[r, c]
-    target = np.array([W[k, j] for k in range(depth) for j in support], dtype=object)
-    weight = [Fraction(2) ** -int(units[j]) for _ in range(depth) for j in support]
-    in_units = np.array(
-        [[float(w * b) for b in row] for w, row in zip(weight, basis.tolist(), strict=True)]
+            wanted.append(right)
+    if not place and not moved:
+        return rows if not any(wanted) else None
+    start = [W[d, k] for d, k in place] + [rows.change[i, j] for i, j in moved]
+    size = [Fraction(2) ** int(units[k]) * _ROOMY for _, k in place]
+    solved = _near(
+        _table(equations),
+        np.array(wanted, dtype=object),
+        np.array(size + [radius[i, j] for i, j in moved], dtype=object),
+        np.array(start, dtype=object),
     )
-    aim = np.array([float(w * t) for w, t in zip(weight, target.tolist(), strict=True)])
-    sizes = np.linalg.norm(in_units, axis=0)
-    coefficients = np.linalg.lstsq(in_units / sizes, aim, rcond=None)[0] / sizes
-    # A coefficient that is rounding noise would bring back what was to be zero.
-    noise = _NOTHING * np.abs(aim).max()
-    exact = [
-        Fraction(c) if abs(c) * size > noise else _ZERO
-        for c, size in zip(coefficients.tolist(), sizes.tolist(), strict=True)
-    ]
-    values = basis @ np.array(exact, dtype=object)
-    fitted = np.empty(W.shape, dtype=object)
-    fitted[:] = _ZERO
-    for (k, j), at in place.items():
-        fitted[k, j] = values[at]
-    return fitted if all(row.any() for row in fitted) else None
+    if solved is None:
+        return None
+    fitted, change = W.copy(), rows.change.copy()
+    for (d, k), at in place.items():
+        fitted[d, k] = solved[at]
+    for at, (i, j) in enumerate(moved):
+        change[i, j] = solved[first_change + at]
+    if not all(row.any() for row in fitted):
+        return None
+    return _Rows(rows.side, fitted, L, change)
 
 
 def _solved(box: Box, rows: Sequence[_Rows], start: tuple[Array, ...]) -> Witness | None:
     """Return the model changed so that all rows hold exactly, with changes near those found."""
     n = box.centre.order
     radii = (box.radii.A, box.radii.B, box.radii.C)
-    if len({each.side for each in rows}) == 1:
-        side = rows[0].side
+    if len(rows) == 1:
+        side, W = rows[0].side, rows[0].W
         matrix, radius = _oriented(box, side)
-        W = np.vstack([each.W for each in rows])
         wanted = -(W @ matrix)
-        wanted[:, :n] += np.vstack([each.L @ each.W for each in rows])
-        solved = _turned(side, *start).copy()
+        wanted[:, :n] += rows[0].L @ W
+        solved = rows[0].change.copy()
         for j in range(matrix.shape[1]):
             if len(W) == 1:
                 column = _least(W[0], wanted[0, j], radius[:, j])
