@@ -44,11 +44,20 @@ _LIGHTEST: Final = 1e-3
 _FACTORS: Final = (0.3, 0.6, 0.8, 0.9, 1.001, 1.05)
 """Factors for which a vector is sought where power iterations do not find one."""
 
+_SCALINGS: Final = 3
+"""How often such a vector is computed, each time in the units of the one before."""
+
 _TIGHT: Final = 1.5
 """Factor at the centre below which more right inverses are tried."""
 
 _SETS: Final = 40
 """How many right inverses that leave out columns are tried at most."""
+
+_SINGULAR: Final = 1e-10
+"""Share below which a number in an inverse of random entries of size one counts as zero."""
+
+_NO_RADIUS: Final = 2.0**-900
+"""Radii that stand for zero."""
 
 _FLOORS: Final = (1e-1, 1e-2, 1e-3, 1e-4, 1e-5, 1e-6)
 """Weights of the smallest components, beside the largest, from round to round of sharpening."""
@@ -97,6 +106,7 @@ class Discs:
         n, width = pencil.matrix.shape
         self.slack = 1 + (width + 16) * 8 * _U
         self.eye = np.eye(n, width)
+        self._found_bases: list[tuple[list[int], Array]] | None = None
 
     def proved(
         self, z: Array, r: Array, matrix: Array | None = None, radius: Array | None = None
@@ -190,9 +200,14 @@ class Discs:
         for wanted in _FACTORS:
             left = np.flatnonzero((found < wanted) & (start > 0).all(axis=1))
             if not len(left):
-                break
-            v = _inverses(np.eye(n) - G[left] - wanted * H[left]).sum(axis=2)
-            found[left] = np.fmax(found[left], self._factor_of(G[left], H[left], v)[0])
+                continue
+            P = G[left] + wanted * H[left]
+            v = np.ones((len(left), n))
+            for _ in range(_SCALINGS):
+                # In the units of the last vector, so that its small components are accurate too.
+                v = v * _inverses(np.eye(n) - P * v[:, None, :] / v[:, :, None]).sum(axis=2)
+                found[left] = np.fmax(found[left], self._factor_of(G[left], H[left], v)[0])
+                v = np.maximum(np.abs(v) / np.abs(v).max(axis=1, keepdims=True), 1e-200)
         best[fit] = found
         return best
 
@@ -233,16 +248,40 @@ class Discs:
         inverse proves more than one of least size.
         """
         n, width = self.pencil.matrix.shape
-        sets = itertools.islice(itertools.combinations(range(width), width - n), _SETS)
         found = []
-        for dropped in sets:
-            kept = [j for j in range(width) if j not in dropped]
+        for kept, pattern in self._bases():
             square = M[:, :, kept]
             inverse = np.zeros((len(M), width, n), dtype=complex)
-            inverse[:, kept] = _solved(square, np.broadcast_to(np.eye(n), square.shape))
+            inverse[:, kept] = _solved(square, np.broadcast_to(np.eye(n), square.shape)) * pattern
             found.append(inverse)
+        if not found:
+            return np.zeros((len(M), 1, width, n), dtype=complex)
         stacked = np.stack(found, axis=1)
         return np.where(np.isfinite(stacked), stacked, 0.0)
+
+    def _bases(self) -> list[tuple[list[int], Array]]:
+        """Return sets of as many columns as rows, and where the inverse of each is not zero.
+
+        Rounding leaves noise where the pattern demands zeros, and with entries of very unlike
+        sizes it would cover what is left. The pattern is that of the inverse of a matrix of
+        random numbers with the same zeros; sets that are singular for any numbers are left out.
+        """
+        if self._found_bases is None:
+            n, width = self.pencil.matrix.shape
+            rng = np.random.default_rng(0)
+            uncertain = self.pencil.radius > _NO_RADIUS
+            filled = (self.pencil.matrix != 0) | uncertain | (self.eye != 0)
+            random = np.where(filled, rng.uniform(0.5, 1.5, (n, width)), 0.0)
+            random *= rng.choice([-1, 1], (n, width))
+            self._found_bases = []
+            sets = itertools.combinations(range(width), width - n)
+            for dropped in itertools.islice(sets, _SETS):
+                kept = [j for j in range(width) if j not in dropped]
+                s = np.linalg.svd(random[:, kept], compute_uv=False)
+                if s[-1] > _SINGULAR * s[0]:
+                    inverse = np.abs(np.linalg.inv(random[:, kept]))
+                    self._found_bases.append((kept, inverse > _SINGULAR * inverse.max()))
+        return self._found_bases
 
     def _sharpened(self, many: _Many, M: Array, X: Array) -> Array:
         """Return right inverses for which the spectral radius of (R + r [I 0]) |X| is small.
