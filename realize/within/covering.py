@@ -48,7 +48,7 @@ class Covering:
     def __init__(self, pencil: Pencil, largest: float) -> None:
         self.pencil, self.largest = pencil, largest
         self.discs = Discs(pencil, largest)
-        reach = self._reach()
+        reach = self.reach = self._reach()
         side = 2.0 * reach / _FIRST
         x = -reach + side * (np.arange(_FIRST) + 0.5)
         y = side * (np.arange(_FIRST // 2) + 0.5)
@@ -89,14 +89,20 @@ class Covering:
         """About what `lower` can reach by smaller squares alone."""
         return float(self.limit.min(initial=self.largest))
 
+    @property
+    def fineness(self) -> float:
+        """Half side of the smallest square that proves less than 1, over the covering's reach."""
+        left = self.factor < 1
+        return float(self.half[left].min() / self.reach) if left.any() else 1.0
+
     def failing(self, most: int) -> list[complex]:
-        """Return where the least is proved, places well apart, the worst first."""
+        """Return where a factor of 1 is not proved, places well apart, the worst first."""
         found: list[complex] = []
-        apart = _APART * float(np.abs(self.z).max(initial=0.0))
-        for k in np.argsort(self.limit).tolist():
-            if self.limit[k] >= 1 or len(found) == most:
+        left = np.flatnonzero(self.factor < 1)
+        for k in left[np.lexsort((self.half[left], self.limit[left]))].tolist():
+            if len(found) == most:
                 break
-            if all(abs(self.z[k] - other) > apart for other in found):
+            if all(abs(self.z[k] - other) > _APART * self.reach for other in found):
                 found.append(complex(self.z[k]))
         return found
 

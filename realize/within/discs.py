@@ -129,7 +129,6 @@ class Discs:
             return self._proved(_Many(z, r, matrix, radius), whole)
 
     def _proved(self, many: _Many, whole: bool) -> Proved:
-        n = self.pencil.order
         M = self._complex(many)
         X, spread = _least(M, many.weights(self.eye))
         sizes = _sizes(X)
@@ -137,16 +136,10 @@ class Discs:
         found = self._largest(G, H)
         limit = np.full(len(M), self.largest)
         trusted = spread[:, 0] >= _CLOSE * spread[:, 1]
-        for k in np.flatnonzero(found < 1).tolist() if whole else ():
-            # Where the point is nearly as close to a hidden mode as doubles can tell, or where it
-            # is rounding that stands in the way, balls do it, if the disc is small enough for it.
-            fine = many.r[k] <= _FINE * spread[k, 0] + 4 * n * _U * spread[k, 1]
-            if fine and (
-                not trusted[k] or self._largest(many.r[k] * sizes[[k], :n], H[[k]])[0] >= 1
-            ):
-                G_k, H_k, point = self._in_balls(complex(many.z[k]), float(many.r[k]))
-                found[k] = max(found[k], self._largest(G_k[None], H_k[None])[0])
-                limit[k] = self._largest(point[None], H_k[None])[0]
+        for k in self._for_balls(many, found, spread, trusted, sizes, H) if whole else ():
+            G_k, H_k, point = self._in_balls(complex(many.z[k]), float(many.r[k]))
+            found[k] = max(found[k], self._largest(G_k[None], H_k[None])[0])
+            limit[k] = self._largest(point[None], H_k[None])[0]
         open_ones = np.flatnonzero((found < 1) & trusted)
         if len(open_ones):
             points = many.some(open_ones).shrunk()
@@ -161,6 +154,22 @@ class Discs:
                 limit[few] = np.maximum(limit[few], better.limit)
                 X[few] = better.inverse
         return Proved(found, np.minimum(limit, self.largest), X)
+
+    def _for_balls(
+        self, many: _Many, found: Array, spread: Array, trusted: Array, sizes: Array, H: Array
+    ) -> list[int]:
+        """Return the discs for which balls may prove what doubles do not.
+
+        Where the centre is nearly as close to a hidden mode as doubles can tell, or where it is
+        rounding that stands in the way, if the disc is small enough for its centre.
+        """
+        n = self.pencil.order
+        fine = many.r <= _FINE * spread[:, 0] + 4 * n * _U * spread[:, 1]
+        asked = np.flatnonzero((found < 1) & fine)
+        if not len(asked):
+            return []
+        exact = self._largest(many.r[asked, None, None] * sizes[asked, :n], H[asked])
+        return list(asked[~trusted[asked] | (exact >= 1)].tolist())
 
     def _complex(self, many: _Many) -> Array:
         return np.asarray(many.matrix - many.z[:, None, None] * self.eye)

@@ -43,6 +43,9 @@ _NOTHING: Final = (1e-6, 1e-10)
 
 Linear programs leave noise of about 1e-8, which exact equations would take at its word."""
 
+_SAME: Final = 1e-6
+"""Relative difference up to which two points are one mode, hidden from both sides."""
+
 _ROOMY: Final = 16
 """Size of a component of a vector, its largest 1, as far as there is room to move it."""
 
@@ -94,7 +97,11 @@ def exactly(box: Box, doubles: InDoubles, found: Found, wanted: float) -> Witnes
         rows: list[_Rows] = []
         for side in sides:
             modes = [mode for mode in found.modes if mode.side is side]
-            exact = _rows(box, doubles, modes, _turned(side, *start), denominator, bits, nothing)
+            others = [mode.point for mode in found.modes if mode.side is not side]
+            apart = all(abs(m.point - p) > _SAME * abs(p) for m in modes for p in others)
+            beside = rows[0].W if rows and apart else np.empty((0, box.centre.order), dtype=object)
+            change = _turned(side, *start)
+            exact = _rows(box, doubles, modes, change, beside, denominator, bits, nothing)
             if exact is None:
                 break
             rows.append(exact)
@@ -134,6 +141,7 @@ def _rows(
     doubles: InDoubles,
     modes: Sequence[Hidden],
     change: Array,
+    beside: Array,
     denominator: int | None,
     bits: int,
     nothing: float,
@@ -141,7 +149,8 @@ def _rows(
     """Return rational rows for the modes of one side; None where no short points are near.
 
     All rows must agree with each column. One with fewer uncertain entries than there are rows
-    leaves them no choice, and they are fitted to it; with it its changes.
+    leaves them no choice, and they are fitted to it; with it its changes. Left vectors and right
+    ones of different modes are orthogonal: ``beside`` holds those of the other side.
     """
     side = modes[0].side
     units = doubles.states if side is Side.OUTPUT else -doubles.states
@@ -185,8 +194,8 @@ def _rows(
     # What no change can help first: components that are held later must fit it already.
     rigid = [j for j in tight if not carried[:, j].any()]
     for columns in (rigid, tight):
-        if columns and (columns is rigid or len(rigid) < len(tight)):
-            fitted = _fitted(rows, matrix, radius, columns, units)
+        if (columns or len(beside)) and (columns is rigid or len(rigid) < len(tight)):
+            fitted = _fitted(rows, matrix, radius, columns, beside, units)
             if fitted is None:
                 return None
             rows = fitted
@@ -208,9 +217,16 @@ def _table(rows: Sequence[Sequence[Fraction]]) -> Array:
 
 
 def _fitted(
-    rows: _Rows, matrix: Array, radius: Array, tight: Sequence[int], units: Array
+    rows: _Rows,
+    matrix: Array,
+    radius: Array,
+    tight: Sequence[int],
+    beside: Array,
+    units: Array,
 ) -> _Rows | None:
     """Return rows nearby, and changes of tight columns, that meet the equations of these exactly.
+
+    The rows come out orthogonal to those ``beside`` them.
 
     Where such a column has uncertain entries, the components of the rows that they multiply stay
     as they are; then the equations are linear in the other components and in the changes.
@@ -234,16 +250,23 @@ def _fitted(
                 else:
                     right -= W[d, k] * matrix[k, j]
             if j in support:
-                for other in range(depth):
-                    if (other, j) in place:
-                        row[place[other, j]] -= L[d, other]
+                for e in range(depth):
+                    if (e, j) in place:
+                        row[place[e, j]] -= L[d, e]
                     else:
-                        right += L[d, other] * W[other, j]
+                        right += L[d, e] * W[e, j]
             for at, (i, column) in enumerate(moved):
                 if column == j:
                     row[first_change + at] += W[d, i]
             equations.append(row)
             wanted.append(right)
+    for other in beside:
+        for d in range(depth):
+            row = [_ZERO] * (first_change + len(moved))
+            for k in free:
+                row[place[d, k]] = other[k]
+            equations.append(row)
+            wanted.append(-sum((W[d, k] * other[k] for k in held), _ZERO))
     if not place and not moved:
         return rows if not any(wanted) else None
     start = [W[d, k] for d, k in place] + [rows.change[i, j] for i, j in moved]

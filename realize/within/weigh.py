@@ -46,6 +46,12 @@ _SPLITTING: Final = 0.85
 _PIECES: Final = 6000
 """How many pieces are tested on each side before splitting the box is given up."""
 
+_ZOOMED: Final = 2.0**-12
+"""Share of the reach at which squares have closed in on a point, so that a mode may be there."""
+
+_FINEST: Final = 2.0**-40
+"""Share of the reach below which squares are not split any more."""
+
 _LARGEST: Final = 2.0
 """Factor on the radii up to which minimality is of interest."""
 
@@ -181,14 +187,14 @@ class _Weighing:
     def _prove(self, wanted: float, share: float) -> None:
         """Refine until all is proved, or what cannot be proved is seen, or the time is up.
 
-        ``wanted`` 1: stop as soon as smaller squares alone cannot prove a factor of 1. Below 1:
-        go on until what they can prove is nearly reached.
+        ``wanted`` 1: stop as soon as smaller squares alone cannot prove a factor of 1, or close
+        in on a point. Below 1: go on until what they can prove is nearly reached.
         """
         for covering in self.coverings.values():
             while covering.lower < 1:
-                if wanted == 1 and covering.bound < 1:
+                if wanted == 1 and (covering.bound < 1 or covering.fineness < _ZOOMED):
                     break
-                if covering.lower >= wanted * covering.bound:
+                if covering.lower >= wanted * covering.bound or covering.fineness < _FINEST:
                     break
                 if self._late(share):
                     self.unfinished = "the time was up before the plane was covered"
@@ -198,8 +204,10 @@ class _Weighing:
     def _split(self) -> None:
         """Try to prove what is left by splitting the box too, as long as there is hope."""
         for covering in self.coverings.values():
-            # Much of a square must be lost already, or splitting would never end.
+            # As long as smaller squares may do it alone, they are cheaper.
             while covering.bound >= 1 and covering.lower < 1 and not self._late(_SPLITTING):
+                if covering.fineness < _FINEST:
+                    break
                 covering.refine(1.0)
             covering.split_box(_PIECES, lambda: self._late(_SPLITTING))
             if covering.lower < 1:
