@@ -32,6 +32,9 @@ _BATCH: Final = 64
 _STEPS: Final = 8
 """Power iterations towards a bound on all eigenvalues."""
 
+FINEST: Final = 2.0**-90
+"""Half side of the squares that are split no more, over the covering's reach."""
+
 _APART: Final = 0.02
 """Share of the covering's reach by which two places must differ to count as two."""
 
@@ -53,6 +56,7 @@ class Covering:
         x = -reach + side * (np.arange(_FIRST) + 0.5)
         y = side * (np.arange(_FIRST // 2) + 0.5)
         self.z = (x[None, :] + 1j * y[:, None]).ravel()
+        self.rest = np.zeros(self.z.shape, dtype=complex)
         self.half = np.full(self.z.shape, side / 2)
         self.factor = np.zeros(self.z.shape)
         self.limit = np.zeros(self.z.shape)
@@ -108,16 +112,18 @@ class Covering:
 
     def refine(self, wanted: float) -> bool:
         """Split the squares that prove least; False when none proves less than wanted."""
-        order = np.argsort(self.factor)[:_BATCH]
+        order = np.argsort(self.factor)
+        order = order[self.half[order] > FINEST * self.reach][:_BATCH]
         split = order[self.factor[order] < wanted]
         if not len(split):
             return False
         keep = np.ones(len(self.z), dtype=bool)
         keep[split] = False
         quarter = self.half[split] / 2
-        z = (self.z[split][:, None] + quarter[:, None] * _CORNERS).ravel()
+        z, rest = _split(self.z[split], self.rest[split], quarter)
         first = int(keep.sum())
         self.z = np.concatenate([self.z[keep], z])
+        self.rest = np.concatenate([self.rest[keep], rest])
         self.half = np.concatenate([self.half[keep], np.repeat(quarter, 4)])
         self.factor = np.concatenate([self.factor[keep], np.repeat(self.factor[split], 4)])
         self.limit = np.concatenate([self.limit[keep], np.repeat(self.limit[split], 4)])
@@ -128,7 +134,7 @@ class Covering:
         """Find what squares prove."""
         for start in range(0, len(cells), 4 * _BATCH):
             some = cells[start : start + 4 * _BATCH]
-            proved = self.discs.proved(self.z[some], _around(self.half[some]))
+            proved = self.discs.proved(self.z[some], _around(self.half[some]), self.rest[some])
             self.factor[some] = np.maximum(self.factor[some], proved.factor)
             self.limit[some] = np.minimum(np.maximum(proved.limit, self.factor[some]), self.largest)
             self.count += len(some)
@@ -145,6 +151,7 @@ class Covering:
         pieces = _Pieces(
             left,
             self.z[left],
+            self.rest[left],
             self.half[left],
             np.broadcast_to(self.pencil.matrix, (len(left), n, width)),
             np.broadcast_to(self.pencil.radius, (len(left), n, width)),
@@ -153,15 +160,19 @@ class Covering:
             # The last ones first, so that a square is done with before the next is begun.
             now, later = pieces.some(slice(-_BATCH, None)), pieces.some(slice(None, -_BATCH))
             r = _around(now.half)
-            proved = self.discs.proved(now.z, r, now.matrix, now.radius)
+            proved = self.discs.proved(now.z, r, now.rest, now.matrix, now.radius)
             self.count += len(r)
             open_ones = np.flatnonzero(proved.factor < 1)
             if not len(open_ones):
                 pieces = later
                 continue
+            if now.half.min() <= FINEST * self.reach:
+                # Closing in on a point, where a mode may well be hidden.
+                break
             of_disc, of_entries = self.discs.burdens(proved, r, now.radius)
             halves = now.some(open_ones).split(of_disc[open_ones], of_entries[open_ones])
             pieces = later.joined(halves)
+        # A round that was broken off leaves its pieces where they were.
         done = np.setdiff1d(left, pieces.owner)
         self.factor[done] = np.maximum(self.factor[done], 1.0)
         self.limit[done] = np.maximum(self.limit[done], 1.0)
@@ -173,6 +184,7 @@ class _Pieces:
 
     owner: Array
     z: Array
+    rest: Array
     half: Array
     matrix: Array
     radius: Array
@@ -181,6 +193,7 @@ class _Pieces:
         return _Pieces(
             self.owner[which],
             self.z[which],
+            self.rest[which],
             self.half[which],
             self.matrix[which],
             self.radius[which],
@@ -190,6 +203,7 @@ class _Pieces:
         return _Pieces(
             np.concatenate([self.owner, other.owner]),
             np.concatenate([self.z, other.z]),
+            np.concatenate([self.rest, other.rest]),
             np.concatenate([self.half, other.half]),
             np.concatenate([self.matrix, other.matrix]),
             np.concatenate([self.radius, other.radius]),
@@ -204,7 +218,7 @@ class _Pieces:
         quarter = squares.half / 2
         fours = _Pieces(
             np.repeat(squares.owner, 4),
-            (squares.z[:, None] + quarter[:, None] * _CORNERS).ravel(),
+            *_split(squares.z, squares.rest, quarter),
             np.repeat(quarter, 4),
             np.repeat(squares.matrix, 4, axis=0),
             np.repeat(squares.radius, 4, axis=0),
@@ -219,8 +233,23 @@ class _Pieces:
         # Wide enough for the rounding of the new centres.
         radius[k, i, j] = half + _U * (np.abs(boxes.matrix[k, i, j]) + half)
         for matrix in (down, up):
-            fours = fours.joined(_Pieces(boxes.owner, boxes.z, boxes.half, matrix, radius))
+            fours = fours.joined(
+                _Pieces(boxes.owner, boxes.z, boxes.rest, boxes.half, matrix, radius)
+            )
         return fours
+
+
+def _split(z: Array, rest: Array, quarter: Array) -> tuple[Array, Array]:
+    """Return the centres of the four quarters of squares, exactly, as doubles and rests.
+
+    Centres are on a grid, so sums of rests are exact; what adding them to the doubles loses is
+    the new rest (Knuth, The Art of Computer Programming, volume 2, section 4.2.2, theorem B).
+    """
+    added = (rest[:, None] + quarter[:, None] * _CORNERS).ravel()
+    z = np.repeat(z, 4)
+    total = z + added
+    part = total - z
+    return total, (z - (total - part)) + (added - part)
 
 
 def _around(half: Array) -> Array:

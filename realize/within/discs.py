@@ -109,7 +109,12 @@ class Discs:
         self._found_bases: list[tuple[list[int], Array]] | None = None
 
     def proved(
-        self, z: Array, r: Array, matrix: Array | None = None, radius: Array | None = None
+        self,
+        z: Array,
+        r: Array,
+        rest: Array | None = None,
+        matrix: Array | None = None,
+        radius: Array | None = None,
     ) -> Proved:
         """Return what discs prove.
 
@@ -117,6 +122,8 @@ class Discs:
         ----------
         z : complex array (count,)
         r : float array (count,)
+        rest : complex array (count,), or None
+            What doubles do not hold of the centres: they are z + rest.
         matrix, radius : float arrays (count, n, n + m)
             The centres and radii of other boxes. None: those of the pencil.
         """
@@ -126,7 +133,8 @@ class Discs:
             matrix = np.broadcast_to(self.pencil.matrix, shape)
             radius = np.broadcast_to(self.pencil.radius, shape)
         with np.errstate(all="ignore"):
-            return self._proved(_Many(z, r, matrix, radius), whole)
+            rest = np.zeros(len(z), dtype=complex) if rest is None else rest
+            return self._proved(_Many(z, rest, r, matrix, radius), whole)
 
     def _proved(self, many: _Many, whole: bool) -> Proved:
         M = self._complex(many)
@@ -137,7 +145,7 @@ class Discs:
         limit = np.full(len(M), self.largest)
         trusted = spread[:, 0] >= _CLOSE * spread[:, 1]
         for k in self._for_balls(many, found, spread, trusted, sizes, H) if whole else ():
-            G_k, H_k, point = self._in_balls(complex(many.z[k]), float(many.r[k]))
+            G_k, H_k, point = self._in_balls(many.some([k]))
             found[k] = max(found[k], self._largest(G_k[None], H_k[None])[0])
             limit[k] = self._largest(point[None], H_k[None])[0]
         open_ones = np.flatnonzero((found < 1) & trusted)
@@ -185,7 +193,8 @@ class Discs:
         real, imag = np.ascontiguousarray(X.real), np.ascontiguousarray(X.imag)
         residual = np.abs(np.eye(n) - (M @ real + y * imag[:, :n]))
         residual += np.abs(M @ imag - y * real[:, :n])
-        own = own + many.r[:, None, None] * self.eye
+        off = (many.r + np.abs(many.rest)) * (1 + 4 * _U)
+        own = own + off[:, None, None] * self.eye
         G = (residual + own @ sizes + 4 * _U * np.eye(n)) * self.slack
         return G, (many.radius @ sizes) * self.slack
 
@@ -320,7 +329,7 @@ class Discs:
             X = (D * (Q @ solved)[:, :, :, 0]).transpose(0, 2, 1)
         return X
 
-    def _in_balls(self, z: complex, r: float) -> tuple[Array, Array, Array]:
+    def _in_balls(self, here: _Many) -> tuple[Array, Array, Array]:
         """Return G, H and the part of G that is left when the disc shrinks, by ball arithmetic.
 
         The right inverse is that of least norm, columns weighted as in doubles.
@@ -329,13 +338,13 @@ class Discs:
 
         pencil = self.pencil
         n, width = pencil.matrix.shape
-        here = _Many(np.array([z]), np.array([r]), pencil.matrix[None], pencil.radius[None])
+        z, rest, r = complex(here.z[0]), complex(here.rest[0]), float(here.r[0])
         weight = here.weights(self.eye)[0].tolist()
         for bits in _BITS:
             with working_precision(bits):
                 rows = [[acb(_ball(entry)) for entry in row] for row in pencil.exact]
                 for i in range(n):
-                    rows[i][i] -= acb(z.real, z.imag)
+                    rows[i][i] -= acb(z.real, z.imag) + acb(rest.real, rest.imag)
                 M = acb_mat(rows)
                 D = acb_mat(width, width, [0] * (width * width))
                 for j in range(width):
@@ -383,15 +392,18 @@ class _Many:
     """Discs and boxes, one box for each disc."""
 
     z: Array
+    rest: Array
     r: Array
     matrix: Array
     radius: Array
 
-    def some(self, which: Array) -> _Many:
-        return _Many(self.z[which], self.r[which], self.matrix[which], self.radius[which])
+    def some(self, which: Any) -> _Many:
+        return _Many(
+            self.z[which], self.rest[which], self.r[which], self.matrix[which], self.radius[which]
+        )
 
     def shrunk(self) -> _Many:
-        return _Many(self.z, 0 * self.r, self.matrix, self.radius)
+        return _Many(self.z, self.rest, 0 * self.r, self.matrix, self.radius)
 
     def weights(self, eye: Array) -> Array:
         """Return how much a column of M should be spared by a right inverse."""

@@ -32,10 +32,10 @@ Array = np.ndarray[Any, Any]
 
 _ZERO: Final = Fraction(0)
 
-_ROUNDINGS: Final = ((1, 16), (60, 24), (10**4, 30), (10**7, 40), (None, 53))
+_ROUNDINGS: Final = ((1, 16), (60, 24), (10**4, 30), (10**7, 40), (None, 53), (None, 106))
 """Largest denominator of a point, and bits of a vector: short numbers first, where they serve."""
 
-_NEAR: Final = 1e-7
+_NEAR: Final = Fraction(1, 10**7)
 """How far a short point may lie from the one found, relative to the norm of A."""
 
 _NOTHING: Final = (1e-6, 1e-10)
@@ -128,8 +128,8 @@ def _turned(side: Side, A: Array, B: Array, C: Array) -> Array:
     return np.hstack([A, B]) if side is Side.INPUT else np.hstack([A.T, C.T])
 
 
-def _short(value: float, denominator: int | None, allowed: float) -> Fraction | None:
-    exact = Fraction(value)
+def _short(exact: Fraction, denominator: int | None, allowed: Fraction) -> Fraction | None:
+    """Return a fraction with a short denominator, if one is near; None for any length."""
     if denominator is None:
         return exact
     near = exact.limit_denominator(denominator)
@@ -158,25 +158,26 @@ def _rows(
     L = np.full((depth, depth), _ZERO, dtype=object)
     targets: list[Array] = []
     for mode in modes:
-        z = doubles.point(mode.point)
-        size = max(float(np.linalg.norm(doubles.A)), abs(mode.point))
-        allowed = _NEAR * math.ldexp(size, doubles.time)
-        vector = np.where(np.abs(mode.vector) > nothing, mode.vector, 0.0)
+        unit = Fraction(2) ** doubles.time
+        x, y = (part * unit for part in mode.exact_point)
+        allowed = _NEAR * unit * Fraction(max(float(np.linalg.norm(doubles.A)), abs(mode.point)))
+        shown = (np.abs(mode.vector) > nothing * np.abs(mode.vector).max()).astype(object)
+        p, q = (part * shown for part in mode.exact_vector)
         at = len(targets)
         if mode.is_real:
-            point = _short(z.real, denominator, allowed)
+            point = _short(x, denominator, allowed)
             if point is None:
                 return None
             L[at, at] = point
-            targets.append(vector)
+            targets.append(p)
             continue
-        first = _short(-2 * z.real, denominator, allowed)
-        last = _short(abs(z) ** 2, denominator, allowed * abs(z))
+        first = _short(-2 * x, denominator, allowed)
+        last = _short(x * x + y * y, denominator, allowed * Fraction(abs(mode.point)) * unit)
         if first is None or last is None:
             return None
         # Rows p and r with p A = r and r A = -last p - first r.
         L[at, at + 1], L[at + 1, at], L[at + 1, at + 1] = Fraction(1), -last, -first
-        targets += [vector.real, np.ldexp((mode.point * vector).real, doubles.time)]
+        targets += [p, x * p - y * q]
     # Rounded to few bits in scaled units, where the components are comparable.
     W = _table(
         [
@@ -202,11 +203,13 @@ def _rows(
     return rows
 
 
-def _bits(value: float, bits: int) -> Fraction:
+def _bits(value: Fraction, bits: int) -> Fraction:
+    """Return a number rounded to about so many binary digits."""
     if not value:
         return _ZERO
-    mantissa, exponent = math.frexp(value)
-    return Fraction(round(math.ldexp(mantissa, bits))) * Fraction(2) ** (exponent - bits)
+    exponent = value.numerator.bit_length() - value.denominator.bit_length()
+    unit = Fraction(2) ** (exponent - bits)
+    return round(value / unit) * unit
 
 
 def _table(rows: Sequence[Sequence[Fraction]]) -> Array:

@@ -14,6 +14,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from fractions import Fraction
 from typing import Any, Final
 
 import numpy as np
@@ -22,7 +23,7 @@ from scipy.optimize import linprog
 from scipy.sparse import coo_array
 
 from realize.results import Side
-from realize.within.box import InDoubles
+from realize.within.box import InDoubles, in_doubles
 
 __all__ = ["Found", "Hidden", "closest", "eigenvalues", "starts"]
 
@@ -46,6 +47,9 @@ _TURN: Final = 0.5
 _LEAST_WEIGHT: Final = 1e-3
 """Weight of a column without uncertainty, relative to the one with most, when a search begins."""
 
+_FINE: Final = 1e-6
+"""Largest radius, relative to the norm of A, below which equations are evaluated exactly."""
+
 _ON_AXIS: Final = 1e-7
 """Imaginary part, relative to the norm of A, below which a point is real."""
 
@@ -54,12 +58,42 @@ _ON_AXIS: Final = 1e-7
 class Hidden:
     """A mode to be hidden: from which side, where, and with which vector (scaled units).
 
-    A real point and a real vector are one mode; others stand for a pair.
+    A real point and a real vector are one mode; others stand for a pair. The rests are what
+    doubles do not hold of the point and of the vector.
     """
 
     side: Side
     point: complex
     vector: Array
+    rest_of_point: complex = 0j
+    rest_of_vector: Array | float = 0.0
+
+    @property
+    def exact_point(self) -> tuple[Fraction, Fraction]:
+        """Real and imaginary part of the point, with its rest."""
+        z, rest = complex(self.point), complex(self.rest_of_point)
+        return Fraction(z.real) + Fraction(rest.real), Fraction(z.imag) + Fraction(rest.imag)
+
+    @property
+    def exact_vector(self) -> tuple[Array, Array]:
+        """Real and imaginary parts of the vector, with its rest, as Fractions."""
+        rest = self.rest_of_vector + np.zeros(len(self.vector))
+        return (
+            _fractions(self.vector.real) + _fractions(rest.real),
+            _fractions(self.vector.imag) + _fractions(rest.imag),
+        )
+
+    def moved(self, point: complex, vector: Array) -> Hidden:
+        """Return the mode with changes added, what is lost in doubles kept as rests."""
+        point, vector = self.rest_of_point + point, self.rest_of_vector + vector
+        new_point, new_vector = self.point + point, self.vector + vector
+        return Hidden(
+            self.side,
+            complex(new_point),
+            new_vector,
+            complex((self.point - new_point) + point),
+            (self.vector - new_vector) + vector,
+        )
 
     @property
     def is_real(self) -> bool:
@@ -204,11 +238,24 @@ class _Program:
         """Return the largest residual of the equations."""
         worst = 0.0
         for mode in found.modes:
-            matrix, change, _ = self._sides(mode.side, found.shares)
-            left = mode.vector @ (matrix + change)
-            left[: len(mode.vector)] -= mode.place * mode.vector
+            left = self._value(mode) + mode.vector @ self._sides(mode.side, found.shares)[1]
             worst = max(worst, float(np.abs(left).max(initial=0.0)))
         return worst
+
+    def _value(self, mode: Hidden) -> Array:
+        """Return u' M(z), exactly rounded where the radii are so small that it matters."""
+        n = len(mode.vector)
+        if self.unit > _FINE * float(np.linalg.norm(self.box.A)):
+            value = mode.vector @ self._sides(mode.side, np.zeros(self.count))[0]
+            value[:n] -= mode.place * mode.vector
+            return value
+        A, B, C = self.box.exact
+        matrix = np.hstack([A, B]) if mode.side is Side.INPUT else np.hstack([A.T, C.T])
+        (x, y), (p, q) = mode.exact_point, mode.exact_vector
+        real, imag = p @ matrix, q @ matrix
+        real[:n] -= x * p - y * q
+        imag[:n] -= x * q + y * p
+        return in_doubles(real) if mode.is_real else in_doubles(real) + 1j * in_doubles(imag)
 
     def step(self, found: Found, turn: float) -> Found | None:
         """Take one Newton step, with the least factor; None when the program has no solution."""
@@ -218,7 +265,7 @@ class _Program:
             matrix, change, index = self._sides(mode.side, found.shares)
             eye = np.eye(*matrix.shape)
             matrix = matrix - mode.place * eye
-            value = mode.vector @ matrix
+            value = self._value(mode)
             left = max(left, float(np.abs(value).max(initial=0.0)))
             parts.append((mode, matrix + change, index, value))
         unit = left or 1.0
@@ -296,17 +343,17 @@ class _Program:
             if not mode.is_real:
                 change = change + 1j * solved.x[at : at + n + 1] * unit
                 at += n + 1
-            moved.append(
-                Hidden(
-                    mode.side,
-                    complex(mode.point + change[n]),
-                    _levelled(mode.vector + change[:n]),
-                )
-            )
+            moved.append(mode.moved(change[n], change[:n]))
         shares = solved.x[width : width + self.count] * (unit / self.unit)
         weights = np.abs(equations.T @ solved.eqlin.marginals)[width : width + self.count]
         factor = float(solved.x[-1]) * unit / self.unit
         return Found(tuple(moved), shares, factor, weights)
+
+
+def _fractions(values: Array) -> Array:
+    result = np.empty(len(values), dtype=object)
+    result[:] = [Fraction(value) for value in values.tolist()]
+    return result
 
 
 def _levelled(vector: Array) -> Array:

@@ -22,7 +22,7 @@ from realize.forms.kalman import reach_and_see
 from realize.model.realization import Realization
 from realize.results import Side
 from realize.within.box import Box, InDoubles
-from realize.within.covering import Covering
+from realize.within.covering import FINEST, Covering
 from realize.within.exactly import Witness, exactly
 from realize.within.search import Found, Hidden, closest, eigenvalues, starts
 
@@ -48,9 +48,6 @@ _PIECES: Final = 6000
 
 _ZOOMED: Final = 2.0**-12
 """Share of the reach at which squares have closed in on a point, so that a mode may be there."""
-
-_FINEST: Final = 2.0**-40
-"""Share of the reach below which squares are not split any more."""
 
 _LARGEST: Final = 2.0
 """Factor on the radii up to which minimality is of interest."""
@@ -194,7 +191,7 @@ class _Weighing:
             while covering.lower < 1:
                 if wanted == 1 and (covering.bound < 1 or covering.fineness < _ZOOMED):
                     break
-                if covering.lower >= wanted * covering.bound or covering.fineness < _FINEST:
+                if covering.lower >= wanted * covering.bound or covering.fineness <= FINEST:
                     break
                 if self._late(share):
                     self.unfinished = "the time was up before the plane was covered"
@@ -206,7 +203,7 @@ class _Weighing:
         for covering in self.coverings.values():
             # As long as smaller squares may do it alone, they are cheaper.
             while covering.bound >= 1 and covering.lower < 1 and not self._late(_SPLITTING):
-                if covering.fineness < _FINEST:
+                if covering.fineness <= FINEST:
                     break
                 covering.refine(1.0)
             covering.split_box(_PIECES, lambda: self._late(_SPLITTING))

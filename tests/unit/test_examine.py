@@ -858,7 +858,8 @@ KEYS = {
     "unscaled_order", "paths_agree", "readings_agree", "answer", "verdict", "stabilizable",
     "detectable", "nearest", "parts", "modes", "decisions", "cutoff_ranges", "conflicts",
     "response_change", "routes", "fragile",
-    "uncertainty", "within_uncertainty", "weighed", "witness", "alike", "cautions", "not_done", "seconds", "environment", "digest",
+    "uncertainty", "within_uncertainty", "weighed", "witness", "alike", "cautions", "not_done",
+    "seconds", "environment", "digest",
 }  # fmt: skip
 
 

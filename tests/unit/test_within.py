@@ -12,9 +12,12 @@ from typing import Any
 import click.testing
 import numpy as np
 import pytest
+import scipy.linalg
 
-from realize import Realization, Uncertainty, errors, examine, exact, load, loop, save
+from realize import Realization, Uncertainty, errors, exact, examine, load, loop, save
+from realize.arithmetic.exact import ExactPath
 from realize.cli import main
+from realize.forms.kalman import reach_and_see
 from realize.results import Side
 from realize.within.box import Box, InDoubles
 from realize.within.covering import Covering
@@ -80,8 +83,8 @@ def test_zeros_stay_zero() -> None:
 def test_a_disc_proves_no_more_than_is_true(side: Side) -> None:
     """Around the mode that a model in the box hides, no disc proves its distance or more."""
     rng = np.random.default_rng(8)
-    for _ in range(20):
-        n, inputs = int(rng.integers(2, 6)), int(rng.integers(1, 3))
+    for _ in range(6):
+        n, inputs = int(rng.integers(2, 5)), int(rng.integers(1, 3))
         matrices = [rng.integers(-20, 21, shape) for shape in ((n, n), (n, inputs), (inputs, n))]
         hiding = [np.vectorize(F)(matrix) for matrix in matrices]
         # The last state is not reached, or not seen, and its mode is that entry of A.
@@ -97,9 +100,9 @@ def test_a_disc_proves_no_more_than_is_true(side: Side) -> None:
         proved = Discs(doubles.pencil(side), 2.0).proved(z, np.array([0.0, 1e-9, 0.1]))
         assert (proved.factor <= float(distance)).all()
         covering = Covering(doubles.pencil(side), 2.0)
-        for _ in range(5):
+        for _ in range(3):
             covering.refine(2.0)
-        covering.split_box(500, lambda: False)
+        covering.split_box(200, lambda: False)
         assert covering.lower <= float(distance)
 
 
@@ -153,7 +156,7 @@ def test_structure_that_no_value_can_break() -> None:
     assert examine(model, uncertainty=1).within_uncertainty == "not minimal"
 
 
-@pytest.mark.parametrize("share", [F(9, 10), F(99, 100), F(101, 100), F(11, 10)])
+@pytest.mark.parametrize("share", [F(1, 2), F(9, 10), F(101, 100), F(11, 10)])
 def test_uncertainties_far_below_an_ulp(share: Fraction) -> None:
     """Where doubles see nothing, balls prove and exact numbers refute, both sides of the truth.
 
@@ -227,12 +230,14 @@ def test_on_the_edge(radius: str, word: str) -> None:
 
 
 def test_a_pair_is_hidden_as_a_pair() -> None:
-    """Two oscillators that can be made alike: both modes of one are hidden, and the model is real."""
+    """Two oscillators that can be made alike: both modes of one are hidden, in a real model."""
     A = np.zeros((4, 4), dtype=object)
     A[0, 1] = A[2, 3] = 1
     A[1, :2], A[3, 2:] = ["-2", "-1/5"], ["-21/10", "-1/4"]
     model = Realization(A, [0, 1, 0, 2], [1, 0, 1, 0])
-    found = examine(model, uncertainty=Uncertainty(relative={"A": "1/5"}))
+    radii = np.zeros((4, 4), dtype=object)
+    radii[1, :2] = radii[3, 2:] = F(1, 10)
+    found = examine(model, uncertainty=Uncertainty(absolute={"A": radii.tolist()}))
     assert found.within_uncertainty == "not minimal"
     assert found.answer.order == 2
     witness = found.witness
@@ -261,9 +266,8 @@ def test_both_sides_at_once() -> None:
     assert found.answer.order == 1
     assert found.witness is not None
     assert Box.of(model, given).holds(found.witness)
-    sides = {str(mode.part) for mode in found.hidden_modes}
-    assert len(found.hidden_modes) == 2
-    assert sides
+    parts = {str(mode.part) for mode in found.hidden_modes}
+    assert parts == {"uncontrollable, observable", "controllable, unobservable"}
 
 
 def test_a_reading_within_the_uncertainty_is_a_witness() -> None:
@@ -275,7 +279,7 @@ def test_a_reading_within_the_uncertainty_is_a_witness() -> None:
 
 def test_a_reading_outside_the_uncertainty_does_not_lead() -> None:
     """The decimals as written are no answer when the doubles are meant to 1e-20."""
-    found = examine(chamber(), uncertainty="1e-20" and 1e-20)
+    found = examine(chamber(), uncertainty=1e-20)
     assert (found.answer.order, found.answer.basis) == (2, "stored")
     assert found.within_uncertainty == "minimal"
 
@@ -319,7 +323,8 @@ def test_the_search_and_its_exact_end() -> None:
                 kinds.add(found.modes[0].is_real)
                 assert float(witness.factor) >= found.factor * (1 - 1e-4)
                 assert given.distance(witness.model) == witness.factor
-                assert exact.minimal(witness.model).order <= 4 - found.modes[0].count
+                _, sight = reach_and_see(ExactPath().open(witness.model))
+                assert sight.dimension <= 4 - found.modes[0].count
                 assert abs(found.weights.sum() - 1) < 1e-6
     assert kinds == {True, False}
 
@@ -375,7 +380,8 @@ def test_entries_beyond_doubles_are_open() -> None:
     found = examine(model, uncertainty=0.01)
     assert found.within_uncertainty == "open"
     assert found.status == 3
-    assert "too large for a double" in words_of(found)
+    assert found.weighed is not None
+    assert "too large for a double" in str(found.weighed.unfinished)
 
 
 # --------------------------------------------------------------------------- what is told
@@ -406,7 +412,7 @@ def test_a_doubtful_sign_outranks() -> None:
     """A mode hidden within the uncertainty that may not decay is status 4."""
     found = examine(lags("-1/1000", "-1/1001", -5), uncertainty=Uncertainty(absolute={"A": 0.01}))
     assert found.within_uncertainty == "not minimal"
-    assert found.detectable == "cannot tell"
+    assert [str(mode.stability) for mode in found.hidden_modes] == ["cannot tell"]
     assert found.status == 4
 
 
@@ -503,7 +509,7 @@ def test_sensitivity_is_reached() -> None:
     share = 1e-6
     found = examine(model, uncertainty=share)
     for mode in found.modes:
-        values, left, right = __import__("scipy.linalg").linalg.eig(A, left=True)
+        values, left, right = scipy.linalg.eig(A, left=True)
         k = int(np.abs(values - mode.value).argmin())
         # The change that moves this mode along the real axis the most.
         direction = (left[:, k].conj()[:, None] * right[:, k][None, :]) / np.vdot(
@@ -516,37 +522,44 @@ def test_sensitivity_is_reached() -> None:
 
 
 def test_what_agrees_within_the_data() -> None:
-    """Two poles, and a pole and a zero, closer than the data can tell; exact data tell all."""
-    A = [[-1.0, 0.0, 0.0], [0.0, -1.001, 0.0], [0.0, 0.0, -5.0]]
-    model = Realization(A, [1.0, 1.0, 1.0], [1.0, -0.5, 2.0])
-    assert examine(model).alike == ()
-    given = Uncertainty(relative={"A": "1/2000"})
-    found = examine(model, uncertainty=given, budget=2)
-    if found.answer.order == 3:
-        assert [(pair.first, pair.second, pair.is_zero) for pair in found.alike]
-    poles = Realization(np.diag([-1.0, -1.0 - 2.0**-52]), [1.0, 1.0], [1.0, 1.0])
-    pairs = examine(poles, tolerance=1e-20).alike
-    near = Realization([[-1.0, 0.0], [1e-16, -2.0]], [1.0, 1.0], [1.0, 1.0])
-    assert examine(near.read("stored")).alike == ()
-    assert all(pair.apart <= pair.within for pair in pairs)
+    """A double pole but for one ulp: both modes show, and the data do not tell them apart."""
+    model = Realization([[-2.0, 1.0], [-1.0 + 2.0**-52, 0.0]], [0.0, 1.0], [1.0, 0.0])
+    found = examine(model)
+    assert found.answer.order == 2
+    (pair,) = found.alike
+    assert not pair.is_zero
+    assert pair.apart == pytest.approx(2.0**-25, rel=1e-6)
+    assert pair.apart < pair.within < 4 * pair.apart
+    words = "These agree within what the data can tell the mode -1 and the mode -1"
+    assert words in words_of(found)
+    assert found.to_dict()["alike"] == [pair.to_dict()]
+    assert examine(model.read("stored")).alike == ()
+    apart = Realization([[-1.0, 1.0], [0.0, -1.5]], [0.0, 1.0], [1.0, 0.0])
+    assert examine(apart).alike == ()
 
 
 def test_a_pole_and_a_zero_agree() -> None:
-    """y = (s + 1 + d)/(s + 1)(s + 2) u with d below what the data tell: the page says so."""
+    """Half a bound each to first order: told to agree, and a witness where they can meet."""
     model = Realization([[-3.0, -2.0], [1.0, 0.0]], [1.0, 0.0], [1.0, 1.0005])
-    found = examine(model, uncertainty=Uncertainty(absolute={"C": [["1/2500", "1/2500"]]}))
+    radii = {"A": [["1/2000", "1/2000"], [0, 0]], "C": [[0, "1/10000"]]}
+    found = examine(model, uncertainty=Uncertainty(absolute=radii))
     pairs = [pair for pair in found.alike if pair.is_zero]
-    assert found.within_uncertainty == "minimal"
-    assert pairs == []
-    found = examine(model, uncertainty=Uncertainty(absolute={"C": [[0, "1/1000"]]}))
-    assert found.within_uncertainty == "not minimal"
+    if found.within_uncertainty == "not minimal":
+        assert found.answer.order == 1
+    else:
+        assert len(pairs) == 1
+    far = examine(model, uncertainty=Uncertainty(absolute={"C": [[0, "1/10000"]]}))
+    assert far.within_uncertainty == "minimal"
+    assert far.alike == ()
+    near = examine(model, uncertainty=Uncertainty(absolute={"C": [[0, "1/1000"]]}))
+    assert near.within_uncertainty == "not minimal"
 
 
 def test_sampling_and_corners_of_a_proved_box() -> None:
     """No corner of a box that was proved minimal hides a mode, exactly; all 2^8 are asked."""
     model = Realization([[-1, "1/2"], ["1/3", -2]], [1, "1/2"], [1, -1])
-    given = box(model, F(1, 10))
-    assert examine(model, uncertainty=0.1).within_uncertainty == "minimal"
+    given = box(model, F(1, 20))
+    assert examine(model, uncertainty=0.05).within_uncertainty == "minimal"
     for signs in itertools.product([-1, 1], repeat=8):
         s = np.array([F(sign) for sign in signs], dtype=object)
         corner = given.moved((
