@@ -123,9 +123,12 @@ def examine(
     replays = {word: floating.replay(found.stairs) for word, found in exact.items()}
     answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
     weighed = None
+    seconds = {"floating": floating.seconds, "exact": exact_seconds}
     if box is not None:
+        began = time.perf_counter()
         settled = settle(box, model, exact, nearest, budget, not_done)
         answer, about, weighed = settled.answer, settled.about, settled.weighed
+        seconds["uncertainty"] = time.perf_counter() - began
     radii = None if box is None else box.radii
     accuracy = None if radii is None else radii.A
     hidden = Deferred(
@@ -157,7 +160,7 @@ def examine(
         },
         routes={word: found.routes for word, found in exact.items()},
         not_done=tuple(not_done),
-        seconds={"floating": floating.seconds, "exact": exact_seconds},
+        seconds=seconds,
         peak_memory=peak_memory(),
         uncertainty=given,
         weighed=weighed,

@@ -92,7 +92,7 @@ class Examination:
     hidden_parts : dict
         Reading -> hidden part -> exact characteristic polynomial.
     seconds : dict
-        Path -> wall-clock seconds.
+        Path -> wall-clock seconds; "uncertainty" too, where one was weighed.
     peak_memory : int or None
         Bytes, the most that the process has held so far; None where the system does not tell.
     """

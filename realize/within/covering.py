@@ -29,6 +29,9 @@ _FIRST: Final = 8
 _BATCH: Final = 64
 """Squares that are split at a time."""
 
+_NUMBERS: Final = 2**17
+"""How many complex numbers the pencils of one round hold at most, so that time can be kept."""
+
 _STEPS: Final = 8
 """Power iterations towards a bound on all eigenvalues."""
 
@@ -45,12 +48,14 @@ class Covering:
     """Squares that cover all eigenvalues of all models in a box, upper half plane only.
 
     ``largest``: factors above this are of no interest; the covering holds for radii up to
-    ``largest`` times those of the box.
+    ``largest`` times those of the box. When it is ``late``, what takes long is left out.
     """
 
-    def __init__(self, pencil: Pencil, largest: float) -> None:
+    def __init__(
+        self, pencil: Pencil, largest: float, late: Callable[[], bool] = lambda: False
+    ) -> None:
         self.pencil, self.largest = pencil, largest
-        self.discs = Discs(pencil, largest)
+        self.discs = Discs(pencil, largest, late)
         reach = self.reach = self._reach()
         side = 2.0 * reach / _FIRST
         x = -reach + side * (np.arange(_FIRST) + 0.5)
@@ -132,8 +137,12 @@ class Covering:
 
     def _weigh(self, cells: Array) -> None:
         """Find what squares prove."""
-        for start in range(0, len(cells), 4 * _BATCH):
-            some = cells[start : start + 4 * _BATCH]
+        count = max(4, min(4 * _BATCH, _NUMBERS // max(self.pencil.matrix.size, 1)))
+        for start in range(0, len(cells), count):
+            if start and self.discs.late():
+                # What is left keeps what the square around it proved.
+                break
+            some = cells[start : start + count]
             proved = self.discs.proved(self.z[some], _around(self.half[some]), self.rest[some])
             self.factor[some] = np.maximum(self.factor[some], proved.factor)
             self.limit[some] = np.minimum(np.maximum(proved.limit, self.factor[some]), self.largest)

@@ -19,6 +19,7 @@ suffice, balls do it.
 from __future__ import annotations
 
 import itertools
+from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any, Final
@@ -62,6 +63,9 @@ _NO_RADIUS: Final = 2.0**-900
 _FLOORS: Final = (1e-1, 1e-2, 1e-3, 1e-4, 1e-5, 1e-6)
 """Weights of the smallest components, beside the largest, from round to round of sharpening."""
 
+_SHARPENED: Final = 24
+"""Up to this order right inverses are sharpened; the time goes with its fourth power."""
+
 _GROUP: Final = 16
 """Discs for which many right inverses are held at a time."""
 
@@ -99,10 +103,15 @@ class Proved:
 
 
 class Discs:
-    """Discs for one pencil; boxes inside that of the pencil may be given instead of all of it."""
+    """Discs for one pencil; boxes inside that of the pencil may be given instead of all of it.
 
-    def __init__(self, pencil: Pencil, largest: float) -> None:
-        self.pencil, self.largest = pencil, largest
+    When it is ``late``, proofs that take long are not tried.
+    """
+
+    def __init__(
+        self, pencil: Pencil, largest: float, late: Callable[[], bool] = lambda: False
+    ) -> None:
+        self.pencil, self.largest, self.late = pencil, largest, late
         n, width = pencil.matrix.shape
         self.slack = 1 + (width + 16) * 8 * _U
         self.eye = np.eye(n, width)
@@ -145,6 +154,8 @@ class Discs:
         limit = np.full(len(M), self.largest)
         trusted = spread[:, 0] >= _CLOSE * spread[:, 1]
         for k in self._for_balls(many, found, spread, trusted, sizes, H) if whole else ():
+            if self.late():
+                break
             G_k, H_k, point = self._in_balls(many.some([k]))
             found[k] = max(found[k], self._largest(G_k[None], H_k[None])[0])
             limit[k] = self._largest(point[None], H_k[None])[0]
@@ -156,6 +167,8 @@ class Discs:
             limit[open_ones] = self._largest(0 * H, H)
             tight = open_ones[limit[open_ones] < _TIGHT]
             for start in range(0, len(tight), _GROUP):
+                if self.late():
+                    break
                 few = tight[start : start + _GROUP]
                 better = self._tried(many.some(few), M[few], X[few])
                 found[few] = np.maximum(found[few], better.factor)
@@ -244,7 +257,7 @@ class Discs:
         n, width = self.pencil.matrix.shape
         best, limit = np.full(len(M), -1.0), np.full(len(M), -1.0)
         chosen = X.copy()
-        for sharpen in (False, True):
+        for sharpen in (False, True) if n <= _SHARPENED else (False,):
             tried = self._sharpened(many, M, chosen)[:, None] if sharpen else self._spared(M)
             count = tried.shape[1]
             repeated = many.some(np.repeat(np.arange(len(M)), count))

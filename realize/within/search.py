@@ -12,7 +12,7 @@ Nothing here is proved: what is found is made exact, and checked, elsewhere.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Any, Final
@@ -31,6 +31,9 @@ Array = np.ndarray[Any, Any]
 
 _STEPS: Final = 20
 """Newton steps at most."""
+
+_SECONDS: Final = 5.0
+"""Time for one linear program, which cannot be broken off otherwise."""
 
 _FREE_STEPS: Final = 4
 """Steps before they are held back more and more: corners can take turns for ever."""
@@ -155,13 +158,15 @@ def starts(box: InDoubles, side: Side, points: Sequence[complex]) -> list[tuple[
     return sorted(found, key=lambda pair: pair[0])
 
 
-def closest(box: InDoubles, modes: Sequence[Hidden], wanted: float) -> Found | None:
+def closest(
+    box: InDoubles, modes: Sequence[Hidden], wanted: float, late: Callable[[], bool]
+) -> Found | None:
     """Return the nearest change found that hides the modes, or None when none was found.
 
     It stops early where a step shows that the modes are hidden with a factor well below
-    ``wanted``.
+    ``wanted``, and when it is late.
     """
-    found = _descend(box, modes, wanted)
+    found = _descend(box, modes, wanted, late)
     if found is None or all(mode.is_real or not _is_flat(box, mode) for mode in found.modes):
         return found
     # A pair that met on the axis is a real mode, which is sought as one.
@@ -171,14 +176,16 @@ def closest(box: InDoubles, modes: Sequence[Hidden], wanted: float) -> Found | N
         else mode
         for mode in found.modes
     ]
-    return _descend(box, flat, wanted)
+    return _descend(box, flat, wanted, late)
 
 
 def _is_flat(box: InDoubles, mode: Hidden) -> bool:
     return abs(mode.point.imag) <= _ON_AXIS * max(float(np.linalg.norm(box.A)), 1e-300)
 
 
-def _descend(box: InDoubles, modes: Sequence[Hidden], wanted: float) -> Found | None:
+def _descend(
+    box: InDoubles, modes: Sequence[Hidden], wanted: float, late: Callable[[], bool]
+) -> Found | None:
     program = _Program(box)
     if not program.count:
         return None
@@ -186,6 +193,8 @@ def _descend(box: InDoubles, modes: Sequence[Hidden], wanted: float) -> Found | 
     first = program.residual(current)
     best: Found | None = None
     for number in range(_STEPS):
+        if late():
+            return best
         if not first:
             # Nothing to be met: the centre hides them, to rounding.
             return replace(current, factor=0.0)
@@ -332,6 +341,7 @@ class _Program:
                 ]
             ),
             method="highs",
+            options={"time_limit": _SECONDS},
         )
         if solved.status != 0:
             return None

@@ -145,16 +145,17 @@ class _Weighing:
         self.witness = known
         self.coverings: dict[Side, Covering] = {}
         self.unfinished: str | None = None
+        self.doubles: InDoubles | None = None
 
     def result(self) -> Weighed:
         try:
-            doubles = InDoubles(self.box)
+            doubles = self.doubles = InDoubles(self.box)
         except (PrecisionError, EntryError) as error:
             self.unfinished = str(error)
             return self._told()
         if self.known is None:
             for side in Side:
-                self.coverings[side] = Covering(doubles.pencil(side), _LARGEST)
+                self.coverings[side] = Covering(doubles.pencil(side), _LARGEST, self._late)
             self._prove(1.0, _PROVING)
             if self._lower() < 1:
                 self._look(doubles)
@@ -227,7 +228,7 @@ class _Weighing:
                 return
 
     def _try(self, doubles: InDoubles, modes: tuple[Hidden, ...]) -> None:
-        found = closest(doubles, modes, 1.0)
+        found = closest(doubles, modes, 1.0, self._late)
         if found is None or found.factor > self._upper():
             return
         witness = exactly(self.box, doubles, found, 1.0)
@@ -260,7 +261,7 @@ class _Weighing:
         for _, mode in sorted(tries, key=lambda each: each[0]):
             if self._late(_ALONE):
                 break
-            found = closest(doubles, (mode,), 1.0)
+            found = closest(doubles, (mode,), 1.0, self._late)
             if found is not None and found.factor <= 1 and not _is_known(doubles, found, alone):
                 alone.append(found)
         together: tuple[Hidden, ...] = ()
@@ -271,7 +272,7 @@ class _Weighing:
                 together = each.modes
                 self._settle(doubles, each)
                 continue
-            found = closest(doubles, (*together, *each.modes), 1.0)
+            found = closest(doubles, (*together, *each.modes), 1.0, self._late)
             if found is not None and found.factor <= 1 and self._settle(doubles, found):
                 together = found.modes
 
@@ -290,10 +291,10 @@ class _Weighing:
             within = Within.MINIMAL
         side, point = None, None
         weights: tuple[tuple[str, float], ...] = ()
-        if self.best is not None:
+        if self.best is not None and self.doubles is not None:
             found = self.best[1]
             mode = found.modes[0]
-            side, point = mode.side, InDoubles(self.box).point(mode.point)
+            side, point = mode.side, self.doubles.point(mode.point)
             weights = tuple(self._heaviest(found))
         return Weighed(
             within=within,

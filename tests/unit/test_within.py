@@ -314,7 +314,7 @@ def test_the_search_and_its_exact_end() -> None:
         doubles = InDoubles(given)
         for side in Side:
             for _, mode in starts(doubles, side, eigenvalues(doubles))[:3]:
-                found = closest(doubles, (mode,), 0.0)
+                found = closest(doubles, (mode,), 0.0, lambda: False)
                 if found is None:
                     continue
                 witness = exactly(given, doubles, found, 0.0)
