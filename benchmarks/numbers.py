@@ -175,7 +175,7 @@ def staircase() -> list[Number]:
     ]
 
 
-def _three_masses(*, hidden: bool) -> Realization:
+def three_masses(*, hidden: bool) -> Realization:
     """Return three masses in a row on springs and dampers: force on the first, the second seen.
 
     The numbers are decimals that doubles cannot hold. Hidden: nothing acts on the third mass any
@@ -194,7 +194,7 @@ def _three_masses(*, hidden: bool) -> Realization:
 
 def small() -> list[Number]:
     """Small models: what a call costs beyond arithmetic."""
-    whole, partly = _three_masses(hidden=False), _three_masses(hidden=True)
+    whole, partly = three_masses(hidden=False), three_masses(hidden=True)
     orders = floating.minimal(whole).order, floating.minimal(partly).order
     if orders != (6, 4):
         raise AssertionError(f"orders {orders} instead of 6 and 4")
@@ -327,12 +327,12 @@ def main() -> int:
     numbers = [number for name in names or MEASURES for number in MEASURES[name]()]
     print(report(numbers))
     if not names:
-        target = save("numbers", {"numbers": [_plain(number) for number in numbers]})
+        target = save("numbers", {"numbers": [plain(number) for number in numbers]})
         print(f"\nwritten to {target.relative_to(ROOT)}")
     return 0 if all(number.reached for number in numbers) else 1
 
 
-def _plain(number: Number) -> dict[str, Any]:
+def plain(number: Number) -> dict[str, Any]:
     return {
         "what": number.what,
         "asked_at_most": number.asked,

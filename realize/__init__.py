@@ -30,6 +30,7 @@ if TYPE_CHECKING:
         AlgebraicLoopWarning,
         ArithmeticMismatchError,
         BudgetError,
+        CertificateError,
         DisagreementError,
         EntryError,
         HiddenInstabilityWarning,
@@ -62,6 +63,9 @@ if TYPE_CHECKING:
     from realize.model.files import load, save
     from realize.model.realization import Realization
     from realize.model.transfer import TransferMatrix
+    from realize.proof.certify import certify
+    from realize.proof.compare import same_transfer
+    from realize.proof.record import Certificate, Comparison, check
     from realize.results import (
         Cancellation,
         KalmanParts,
@@ -83,6 +87,9 @@ __all__ = [
     "ArithmeticMismatchError",
     "BudgetError",
     "Cancellation",
+    "Certificate",
+    "CertificateError",
+    "Comparison",
     "DisagreementError",
     "EntryError",
     "Examination",
@@ -122,6 +129,8 @@ __all__ = [
     "block_diagonal",
     "cancel",
     "cascade",
+    "certify",
+    "check",
     "companion",
     "exact",
     "examine",
@@ -133,6 +142,7 @@ __all__ = [
     "markov_parameters",
     "minimal",
     "multiprecision",
+    "same_transfer",
     "save",
     "staircase",
     "sum_of",
@@ -158,6 +168,7 @@ _HOMES = {
         "AlgebraicLoopWarning",
         "ArithmeticMismatchError",
         "BudgetError",
+        "CertificateError",
         "DisagreementError",
         "EntryError",
         "HiddenInstabilityWarning",
@@ -190,6 +201,9 @@ _HOMES = {
     "realize.model.files": ("load", "save"),
     "realize.model.realization": ("Realization",),
     "realize.model.transfer": ("TransferMatrix",),
+    "realize.proof.certify": ("certify",),
+    "realize.proof.compare": ("same_transfer",),
+    "realize.proof.record": ("Certificate", "Comparison", "check"),
     "realize.results": (
         "Cancellation",
         "KalmanParts",

@@ -1,7 +1,7 @@
-"""The command line: `realize examine`, `realize minimal`, `realize demo`.
+"""The command line: `examine`, `minimal`, `certify`, `check`, `score`, `demo`.
 
-Data go to stdout, messages to stderr. Exit statuses: 0 clean; 1 findings; 2 usage or input error;
-3 undecided; 4 something hidden is not known to be stable.
+Data go to stdout, messages to stderr. Exit statuses: 0 clean or proved; 1 findings or not proved;
+2 usage or input error; 3 undecided; 4 something hidden is not known to be stable.
 """
 
 from __future__ import annotations
@@ -10,6 +10,7 @@ import json
 import os
 import sys
 import traceback
+from contextlib import ExitStack
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any, NoReturn
@@ -18,12 +19,12 @@ import click
 from rich.console import Console
 from rich.text import Text
 
-from realize import __version__
+from realize import __version__, checker
 from realize.convert import as_realization
 from realize.demo import stories
 from realize.dispatch import path_for
 from realize.entries import Reading
-from realize.errors import RealizeError
+from realize.errors import CertificateError, RealizeError
 from realize.examination import Examination
 from realize.examination.against import differences, read_record
 from realize.examination.examine import DEFAULT_BUDGET, examine
@@ -32,8 +33,12 @@ from realize.forms import reduce
 from realize.model.files import load, save, to_document
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
+from realize.proof.certify import certify
+from realize.proof.record import check
 from realize.results import Mode, Reduction, spelled
 from realize.stability import Stability, hidden_cautions
+from realize.testing.problems import DIFFICULTIES, families
+from realize.testing.scoring import check_picture_name, load_routine, score
 from realize.uncertainty import Rounding, Uncertainty
 
 __all__ = ["main"]
@@ -44,6 +49,12 @@ _EXIT_TEXT = (
     "Exit status: 0 nothing hidden and nothing in doubt; 1 hidden modes, or paths or readings "
     "that disagree; 2 usage or input error; 3 undecided; 4 something hidden is not known to be "
     "stable (4 outranks the others)."
+)
+
+
+_CERTIFICATE_TEXT = (
+    "Exit status: 0 proved; 1 not proved; 2 usage or input error; 4 proved, and something hidden "
+    "is not known to be stable (certify)."
 )
 
 
@@ -136,7 +147,8 @@ def _print_page(text: str) -> None:
     type=click.FloatRange(min=0),
     default=DEFAULT_BUDGET,
     show_default=True,
-    help="Seconds that the exact path may take, and the uncertainty as many.",
+    help="Seconds that the exact path may take, as many for steps of precision without it, and as "
+    "many for the uncertainty.",
 )
 @click.option(
     "--against",
@@ -251,6 +263,126 @@ def _report(reduction: Reduction, modes: tuple[Mode, ...]) -> dict[str, Any]:
         "decisions": [decision.to_dict() for decision in reduction.decisions],
         "model": to_document(reduction.model),
     }
+
+
+@main.command("score")
+@click.argument("routine", metavar="MODULE:FUNCTION")
+@click.option(
+    "--family",
+    "names",
+    multiple=True,
+    type=click.Choice([family.name for family in families()]),
+    help="Which families of problems; may be repeated. Default: all.",
+)
+@click.option(
+    "--hardest",
+    type=click.IntRange(DIFFICULTIES[0], DIFFICULTIES[-1]),
+    default=DIFFICULTIES[-1],
+    show_default=True,
+    help="Difficulties go from 0 to this one.",
+)
+@click.option(
+    "--seeds",
+    type=click.IntRange(min=1),
+    default=10,
+    show_default=True,
+    help="Problems of each family and difficulty.",
+)
+@click.option("--picture", metavar="FILE", help="Also draw it; needs the extra plot.")
+@click.option("--json", "as_json", is_flag=True, help="Print the stable form.")
+def score_command(
+    routine: str,
+    names: tuple[str, ...],
+    hardest: int,
+    seeds: int,
+    picture: str | None,
+    as_json: bool,
+) -> None:
+    """Score a routine of yours on families of problems with known answers.
+
+    It takes float arrays A, B, C, D and returns an order, or A, B, C, D of a reduced model. Exit
+    status: 0 all right; 1 some wrong or crashed; 2 usage or input error.
+    """
+    if picture is not None:
+        check_picture_name(picture)
+    called = load_routine(routine)
+    total = len(names or families()) * (hardest + 1) * seeds
+    with ExitStack() as stack:
+        bar: Any = None
+        if sys.stderr.isatty():
+            bar = stack.enter_context(click.progressbar(length=total, file=sys.stderr))
+        card = score(
+            called,
+            names or None,
+            difficulties=range(hardest + 1),
+            seeds=range(seeds),
+            name=routine,
+            progress=None if bar is None else lambda done, of: bar.update(1),
+        )
+    if picture is not None:
+        card.save_picture(picture)
+    click.echo(json.dumps(card.to_dict(), indent=2) if as_json else str(card))
+    sys.exit(0 if card.right == len(card.results) else FINDINGS)
+
+
+@main.command("certify", epilog=_CERTIFICATE_TEXT)
+@click.argument("file", metavar="FILE")
+@click.option(
+    "-o",
+    "--output",
+    metavar="FILE",
+    default="-",
+    help='Where to write the certificate; "-", the default, is standard output.',
+)
+@click.option(
+    "--reading",
+    type=click.Choice([str(word) for word in Reading]),
+    help="Reduce exactly, with floats read so. Default: the arithmetic follows the data.",
+)
+def certify_command(file: str, output: str, reading: str | None) -> None:
+    """Write a certificate of the minimal realization of the model in FILE."""
+    source = _read(file)
+    if reading is not None:
+        source = source.read(reading)
+    reduction = reduce(path_for(source), source)
+    try:
+        certificate = certify(reduction)
+    except CertificateError as error:
+        _not_proved(error)
+    if output == "-":
+        click.echo(certificate.to_json(), nl=False)
+    else:
+        with open(output, "w", encoding="ascii", newline="\n") as stream:
+            stream.write(certificate.to_json())
+    modes = reduction.removed.modes
+    click.echo(
+        f"order {reduction.source_order} to {reduction.order}, certificate {certificate.digest}",
+        err=True,
+    )
+    for caution in hidden_cautions(modes):
+        click.echo(f"caution: {caution}", err=True)
+    sys.exit(NOT_STABLE if _status_of(reduction, modes) == NOT_STABLE else 0)
+
+
+@main.command("check", epilog=_CERTIFICATE_TEXT)
+@click.argument("file", metavar="FILE")
+def check_command(file: str) -> None:
+    """Check the certificate in FILE and print its claim in words."""
+    if file == "-":
+        content = sys.stdin.buffer.read(checker.MAX_BYTES + 1)
+    else:
+        with open(file, "rb") as stream:
+            content = stream.read(checker.MAX_BYTES + 1)
+    try:
+        # A certificate is ASCII; whatever is not stays visible, and is refused.
+        click.echo(check(content.decode("latin-1")))
+    except CertificateError as error:
+        _not_proved(error)
+
+
+def _not_proved(error: CertificateError) -> NoReturn:
+    click.echo(f"realize: not proved: {error}", err=True)
+    sys.exit(FINDINGS)
 
 
 @main.command("demo")

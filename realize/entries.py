@@ -46,6 +46,7 @@ __all__ = [
     "Place",
     "Reading",
     "constant_near",
+    "decided",
     "description_bits",
     "fraction_array",
     "int_from_digits",
@@ -284,6 +285,29 @@ def constant_near(value: Constant, digits: int, where: Place = "number") -> Frac
         raise _too_large_exponent(where)
     exact = sympy.Rational(number)
     return make_fraction(int(exact.p), int(exact.q))
+
+
+def decided(value: Constant, where: Place = "number") -> Constant:
+    """Return an expression that arithmetic made of constants, zero only if it is written so.
+
+    An expression is not zero when its decimals say so. What they do not tell from zero is expanded,
+    which multiplies out and simplifies nothing: (1 + sqrt(2))**2 - 2*sqrt(2) - 3 becomes zero so,
+    cos(1)**2 + sin(1)**2 - 1 does not.
+
+    Raises
+    ------
+    EntryError
+        When neither tells the value from zero: whether it is zero is then not decidable here.
+    """
+    if isinstance(value, numbers.Rational):
+        return value
+    try:
+        constant_near(value, _DOUBT_DIGITS, where)
+    except EntryError:
+        value = value.expand()
+        if not isinstance(value, numbers.Rational):
+            constant_near(value, _DOUBT_DIGITS, where)
+    return value
 
 
 def round_constant(value: Constant, where: Place = "number") -> float:

@@ -18,6 +18,7 @@ __all__ = [
     "AlgebraicLoopWarning",
     "ArithmeticMismatchError",
     "BudgetError",
+    "CertificateError",
     "DisagreementError",
     "EntryError",
     "HiddenInstabilityWarning",
@@ -392,6 +393,20 @@ class BudgetError(RealizeError, RuntimeError):
         super().__init__(message)
         self.budget = budget
         self.spent = spent
+
+
+class CertificateError(RealizeError, ValueError):
+    """A certificate that does not prove what it claims, or a result that none can be made of.
+
+    Attributes
+    ----------
+    reason : str or None
+        What fails, as the checker tells it.
+    """
+
+    def __init__(self, message: str, *, reason: str | None = None) -> None:
+        super().__init__(message)
+        self.reason = reason
 
 
 class NotBuiltError(RealizeError, NotImplementedError):

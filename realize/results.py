@@ -23,6 +23,8 @@ from realize.stability import Stability
 __all__ = [
     "Cancellation",
     "Deferred",
+    "Echelon",
+    "Evidence",
     "KalmanParts",
     "Mode",
     "NearPair",
@@ -311,6 +313,50 @@ class ResponseChange:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Echelon:
+    """A basis of a subspace: independent columns, the identity in the rows `pivots`.
+
+    Attributes
+    ----------
+    size : int
+        Number of rows.
+    pivots : tuple of int, of length k
+    rest : array (size - k, k) of Fraction
+        The other rows.
+    """
+
+    size: int
+    pivots: tuple[int, ...]
+    rest: Array
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
+class Evidence:
+    """What a reduction found on its way, for a certificate of it.
+
+    Attributes
+    ----------
+    model : Realization, order n
+        What was reduced; the realization of the transfer matrix where the source was one.
+    state_map : array (order, n), or None
+        Reduced state = state_map @ state of ``model``, on the floating path.
+    reached : Echelon, or None
+        Basis V (n, k) of what the inputs reach, on the exact path.
+    seen : Echelon, or None
+        Basis (k, order) of what the outputs see of it, in the dual: reduced state = U w for the
+        state V w, with U its transpose.
+    modulus : int
+        A prime modulo which the reduced model is seen to be reachable and observable.
+    """
+
+    model: Realization
+    state_map: Array | None = None
+    reached: Echelon | None = None
+    seen: Echelon | None = None
+    modulus: int = 0
+
+
+@dataclass(frozen=True, kw_only=True, slots=True, eq=False)
 class Reduction:
     """A minimal realization and what was removed to reach it.
 
@@ -335,6 +381,8 @@ class Reduction:
     _response_change: Deferred[ResponseChange | None] = field(
         default_factory=lambda: Deferred.known(None)
     )
+    _source: Realization | TransferMatrix | None = None
+    _evidence: Deferred[Evidence | None] = field(default_factory=lambda: Deferred.known(None))
 
     @property
     def backward_error(self) -> float | None:

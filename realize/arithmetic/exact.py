@@ -16,11 +16,12 @@ from realize.arithmetic import modular
 from realize.arithmetic.modular import Clock, Profile
 from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor, frozen
 from realize.arithmetic.rational import RationalMatrix
+from realize.arithmetic.similar import rank_modulus
 from realize.entries import Reading
 from realize.errors import InexactInputError
 from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
-from realize.results import Mode, Part, RankDecision
+from realize.results import Echelon, Evidence, Mode, Part, RankDecision
 from realize.stability import Stability, damping, is_stable, judge, time_constant
 
 __all__ = ["ExactPath", "ExactReach", "OpenedExact"]
@@ -117,6 +118,12 @@ class ExactReach:
         for k, i in enumerate(lifted.others):
             entries[i * rank : (i + 1) * rank] = table[k]
         return RationalMatrix.from_entries(size, rank, entries)
+
+    def echelon(self) -> Echelon:
+        """Return the basis as plain values."""
+        lifted = self._lifted
+        size = len(lifted.pivots) + len(lifted.others)
+        return Echelon(size=size, pivots=lifted.pivots, rest=frozen(lifted.below.to_array()))
 
     @property
     def coordinates(self) -> RationalMatrix:
@@ -363,6 +370,14 @@ class OpenedExact:
 
     def state_map(self, matrix: RationalMatrix) -> Array:
         return frozen(matrix.to_array())
+
+    def evidence(self, reach: ExactReach, sight: ExactReach) -> Evidence:
+        return Evidence(
+            model=self.model,
+            reached=reach.echelon(),
+            seen=sight.echelon(),
+            modulus=rank_modulus(sight.A.T, sight.C.T, sight.B.T, self.clock),
+        )
 
     def condition(self, state_map: Array) -> float | None:
         return None

@@ -23,7 +23,7 @@ from realize.arithmetic.path import Completion, Frame, Sequenced, SharedFactor, 
 from realize.arithmetic.scaling import Scaling, scaling_of, unscaled
 from realize.errors import PrecisionError
 from realize.model.realization import Kind, Realization
-from realize.results import Mode, Part, RankDecision
+from realize.results import Evidence, Mode, Part, RankDecision
 from realize.stability import Stability, computed_stability, damping, time_constant
 
 __all__ = ["FloatingPath", "FloatingReach", "OpenedFloating"]
@@ -287,6 +287,11 @@ class OpenedFloating:
 
     def state_map(self, matrix: Array) -> Array:
         return frozen(np.ldexp(matrix, -self.scaling.states))
+
+    def evidence(self, reach: FloatingReach, sight: FloatingReach) -> Evidence:
+        return Evidence(
+            model=self.model, state_map=self.state_map(sight.basis.T @ reach.coordinates)
+        )
 
     def condition(self, state_map: Array) -> float | None:
         return float(np.linalg.cond(state_map)) if state_map.size else 1.0

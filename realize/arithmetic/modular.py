@@ -32,7 +32,9 @@ __all__ = [
     "images",
     "krylov_steps",
     "lift",
+    "pivot_columns",
     "primes",
+    "reached_rank",
     "reached_rows",
 ]
 
@@ -85,12 +87,14 @@ class Clock:
     ----------
     seconds : float or None
         None for no limit.
+    runner : str
+        What spends it, for messages.
     """
 
-    __slots__ = ("_end", "seconds")
+    __slots__ = ("_end", "runner", "seconds")
 
-    def __init__(self, seconds: float | None) -> None:
-        self.seconds = seconds
+    def __init__(self, seconds: float | None, runner: str = "the exact path") -> None:
+        self.seconds, self.runner = seconds, runner
         self._end = math.inf if seconds is None else time.monotonic() + seconds
 
     def check(self, where: str) -> None:
@@ -103,7 +107,7 @@ class Clock:
         """
         if time.monotonic() > self._end:
             raise BudgetError(
-                f"the exact path ran out of its budget of {self.seconds:g} s in: {where}. Give a "
+                f"{self.runner} ran out of its budget of {self.seconds:g} s in: {where}. Give a "
                 "larger budget, or use the floating path alone"
             )
 
@@ -119,7 +123,7 @@ class Clock:
         left = self._end - time.monotonic()
         if estimate > left:
             raise BudgetError(
-                f"the exact path did not begin: {where} is estimated at {estimate:.3g} s, and "
+                f"{self.runner} did not begin: {where} is estimated at {estimate:.3g} s, and "
                 f"{max(left, 0.0):.3g} s of the budget of {self.seconds:g} s are left. Give a "
                 "larger budget, or use the floating path alone"
             )
@@ -148,7 +152,8 @@ class Profile:
         return self.pivots < other.pivots
 
 
-def _pivots(echelon: nmod_mat, rank: int) -> tuple[int, ...]:
+def pivot_columns(echelon: nmod_mat, rank: int) -> tuple[int, ...]:
+    """Return the column of the leading 1 of each non-zero row of a reduced echelon form."""
     found: list[int] = []
     column = 0
     for i in range(rank):
@@ -189,10 +194,25 @@ def reached_rows(A: nmod_mat, B: nmod_mat, clock: Clock) -> Profile:
     A : nmod_mat (n, n)
     B : nmod_mat (n, m)
     """
-    order, inputs = B.nrows(), B.ncols()
-    prime = B.modulus()
+    order, prime = B.nrows(), B.modulus()
+    table, columns, stairs = _independent_columns(A, B, clock)
+    basis = [row[column] for column in columns for row in table]
+    rows, rank = nmod_mat(len(columns), order, basis, prime).rref()
+    return Profile(rows, pivot_columns(rows, rank), tuple(step for step in stairs if step))
+
+
+def reached_rank(A: nmod_mat, B: nmod_mat, clock: Clock) -> int:
+    """Return the rank of [B, AB, A^2 B, ...] modulo a prime."""
+    return len(_independent_columns(A, B, clock)[1])
+
+
+def _independent_columns(
+    A: nmod_mat, B: nmod_mat, clock: Clock
+) -> tuple[list[list[Any]], tuple[int, ...], list[int]]:
+    """Return the rows of [B, AB, ...], which of its columns are independent, and the stairs."""
+    order, inputs, prime = B.nrows(), B.ncols(), B.modulus()
     if not order or not inputs:
-        return Profile(nmod_mat(0, order, [], prime), ())
+        return [], (), []
     block = B
     table: list[list[Any]] = [[] for _ in range(order)]
     count, wanted = 0, -(-order // inputs) + 1
@@ -205,16 +225,13 @@ def reached_rows(A: nmod_mat, B: nmod_mat, clock: Clock) -> Profile:
             block = A * block
         flat = [value for row in table for value in row]
         echelon, rank = nmod_mat(order, count * inputs, flat, prime).rref()
-        columns = _pivots(echelon, rank)
+        columns = pivot_columns(echelon, rank)
         stairs = [0] * count
         for column in columns:
             stairs[column // inputs] += 1
         if rank == order or stairs[-1] == 0:
-            break
+            return table, columns, stairs
         wanted = min(order + 1, 2 * count)
-    basis = [row[column] for column in columns for row in table]
-    rows, _ = nmod_mat(rank, order, basis, prime).rref()
-    return Profile(rows, _pivots(rows, rank), tuple(step for step in stairs if step))
 
 
 def krylov_steps(A: nmod_mat, B: nmod_mat, clock: Clock) -> list[Profile]:
@@ -237,7 +254,7 @@ def krylov_steps(A: nmod_mat, B: nmod_mat, clock: Clock) -> list[Profile]:
         rows, rank = _echelon(pending)
         if rank == 0:
             return steps
-        step = Profile(rows, _pivots(rows, rank))
+        step = Profile(rows, pivot_columns(rows, rank))
         steps.append(step)
         if known is None:
             known = step

@@ -35,7 +35,7 @@ from realize.entries import constant_near, fraction_array, is_constant, make_fra
 from realize.errors import EntryError, LimitError, PrecisionError, UnsupportedEntryError
 from realize.model.realization import Kind, Realization
 from realize.model.transfer import TransferMatrix
-from realize.results import Mode, Part, RankDecision
+from realize.results import Evidence, Mode, Part, RankDecision
 from realize.stability import Stability, computed_stability, damping, time_constant
 
 __all__ = [
@@ -323,6 +323,11 @@ class OpenedMultiprecision:
     def state_map(self, matrix: Array) -> Array:
         numbers = self.numbers
         return frozen(numbers.fractions(numbers.shifted(matrix, -self.scaling.states)))
+
+    def evidence(self, reach: MultiprecisionReach, sight: MultiprecisionReach) -> Evidence:
+        return Evidence(
+            model=self.model, state_map=self.state_map(sight.basis.T @ reach.coordinates)
+        )
 
     def condition(self, state_map: Array) -> float | None:
         if not state_map.size:

@@ -15,7 +15,7 @@ from typing import Any, Protocol, Self, TypeVar
 import numpy as np
 
 from realize.model.realization import Kind, Realization
-from realize.results import Mode, Part, RankDecision
+from realize.results import Evidence, Mode, Part, RankDecision
 from realize.stability import Stability
 
 __all__ = [
@@ -177,6 +177,10 @@ class Opened(Protocol[R_co]):
 
     def state_map(self, matrix: Any) -> Array:
         """Return a matrix that acts on states, for the user's states."""
+        ...
+
+    def evidence(self, reach: Any, sight: Any) -> Evidence:
+        """Return what a certificate of a reduction needs, as plain values."""
         ...
 
     def condition(self, state_map: Array) -> float | None:

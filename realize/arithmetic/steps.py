@@ -10,11 +10,16 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from enum import StrEnum
 from itertools import pairwise
-from typing import Any, Final
+from time import perf_counter
+from typing import TYPE_CHECKING, Any, Final
 
 from realize.arithmetic.multiprecision import MultiprecisionPath
+from realize.entries import is_constant
 from realize.errors import LimitError
 from realize.model.realization import Realization
+
+if TYPE_CHECKING:
+    from realize.arithmetic.modular import Clock
 
 __all__ = ["PrecisionStep", "PrecisionSteps", "Trend", "precision_steps"]
 
@@ -55,6 +60,15 @@ class PrecisionStep:
         """Whether the trend bears out the decision."""
         return self.trend is (Trend.STAYS if self.kept else Trend.SHRINKS)
 
+    def to_dict(self) -> dict[str, Any]:
+        """Return the step as plain JSON values."""
+        return {
+            "where": self.where,
+            "kept": self.kept,
+            "values": list(self.values),
+            "trend": str(self.trend),
+        }
+
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class PrecisionSteps:
@@ -82,6 +96,16 @@ class PrecisionSteps:
         """Whether every value kept stays and every value dropped shrinks."""
         return all(step.is_settled for step in self.steps)
 
+    def to_dict(self) -> dict[str, Any]:
+        """Return the record as plain JSON values."""
+        return {
+            "digits": list(self.digits),
+            "order": self.order,
+            "settled": self.is_settled,
+            "stairs": [list(stairs) for stairs in self.stairs],
+            "steps": [step.to_dict() for step in self.steps],
+        }
+
 
 _SLACK: Final = 6
 """Decades by which rounding noise at two precisions may differ beyond the digits between them."""
@@ -92,9 +116,24 @@ _APART: Final = 2 * _SLACK
 _AGREE: Final = 0.01
 """Relative difference up to which two precisions show the same singular value."""
 
+_REFLECTION_SECONDS: Final = 1e-5
+"""Estimated time of one staircase at 128 digits over the cube of the order: a generous figure."""
+
+_ROTATION_SECONDS: Final = 4e-4
+"""The same for its singular values, over the order times the square of the channels."""
+
+_LIGHTER: Final = 0.75
+"""Share of the time of the first staircase that those after it take, on the average."""
+
+_CONSTANT_SECONDS: Final = 7e-4
+"""Estimated time to compute the digits of one irrational constant, which may be a long one."""
+
 
 def precision_steps(
-    model: Realization, *, digits: Sequence[int] = (16, 32, 64, 128)
+    model: Realization,
+    *,
+    digits: Sequence[int] = (16, 32, 64, 128),
+    clock: Clock | None = None,
 ) -> PrecisionSteps:
     """Replay both staircases at rising precision, and say which singular values are zeros.
 
@@ -105,6 +144,9 @@ def precision_steps(
         precision.
     digits : sequence of int, keyword-only
         At least two precisions, each at least 12 more than the one before.
+    clock : Clock or None, keyword-only
+        The time that they may take: estimated before the first step, and from the time of the
+        first staircase, the dearest, before the second.
 
     Returns
     -------
@@ -114,6 +156,8 @@ def precision_steps(
     ------
     LimitError, UnsupportedEntryError
         When digits are no such integers, or beyond the limits of the path.
+    BudgetError
+        When the clock does not leave the time.
 
     Notes
     -----
@@ -130,11 +174,19 @@ def precision_steps(
             "more than the one before",
             what="digits",
         )
+    if clock is not None:
+        clock.afford(_seconds(model) * len(ladder), f"steps of {_ladder_text(ladder)} digits")
     stairs: tuple[Any, Any] = (None, None)
     columns: list[list[tuple[str, bool, Any]]] = []
     for path in reversed(paths):
+        began = perf_counter()
         opened = path.open(model)
         reach = opened.reached(opened.A, opened.B, opened.C, "reached", stairs[0])
+        if clock is not None:
+            # The second staircase is of what the first reached; fewer digits cost little less.
+            left = 2 * (len(ladder) - len(columns)) - 1
+            spent = perf_counter() - began
+            clock.afford(spent * left * _LIGHTER, f"the rest of {_ladder_text(ladder)} digits")
         sight = opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen", stairs[1])
         stairs = reach.stairs, sight.stairs
         columns.append(
@@ -159,6 +211,21 @@ def precision_steps(
             )
         )
     return PrecisionSteps(digits=ladder, order=sum(stairs[1]), stairs=stairs, steps=tuple(steps))
+
+
+def _seconds(model: Realization) -> float:
+    """Return the estimated time of both staircases at one precision."""
+    order, channels = model.order, (model.input_count, model.output_count)
+    constants = sum(is_constant(entry) for matrix in model.matrices() for entry in matrix.flat)
+    return (
+        2 * _REFLECTION_SECONDS * order**3
+        + sum(_ROTATION_SECONDS * order * min(order, count) ** 2 for count in channels)
+        + _CONSTANT_SECONDS * constants
+    )
+
+
+def _ladder_text(digits: Sequence[int]) -> str:
+    return ", ".join(map(str, digits))
 
 
 def _trend(before: Any, after: Any, fewer: int, more: int) -> Trend:

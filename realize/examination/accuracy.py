@@ -53,7 +53,7 @@ def settle(
         for word in map(str, _LEADING)
         if word in exact and box.holds(exact[word].model)
     }
-    if all(found.model != box.centre for found in inside.values()):
+    if exact and all(found.model != box.centre for found in inside.values()):
         # Not among the readings asked for, or a connection.
         try:
             centre = ExactAnswer(box.centre, Clock(budget))

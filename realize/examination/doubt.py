@@ -17,7 +17,7 @@ from realize.stability import Stability, root_counts
 from realize.tolerance import UNIT_ROUNDOFF, rounding_floor
 from realize.within.box import in_doubles
 
-__all__ = ["weighed_modes"]
+__all__ = ["with_doubt"]
 
 Array = np.ndarray[Any, Any]
 
@@ -25,13 +25,18 @@ _ALLOWANCE: Final = 2.0
 """Factor on a first-order bound."""
 
 
-def weighed_modes(
-    modes: Iterable[Mode], model: Realization, basis: str, radii: Array | None = None
+def with_doubt(
+    modes: Iterable[Mode],
+    model: Realization,
+    basis: str,
+    radii: Array | None = None,
+    exactly: bool = True,
 ) -> tuple[Mode, ...]:
     """Return modes with their sensitivity, and "cannot tell" where the data cannot tell.
 
     ``radii``: how far each entry of A may lie from the number given; None where no uncertainty
-    was given, and then an entry is good to one ulp.
+    was given, and then an entry is good to one ulp. ``exactly``: the modes are more than computed
+    in doubles; others had their doubt when they were computed.
 
     The exact verdict on stability is about one exact model. A model with floats stands for all
     within the accuracy of its data: the uncertainty, where one was given; half a unit in the last
@@ -66,7 +71,7 @@ def weighed_modes(
         replace(mode, sensitivity=_unscaled(spectrum.reach(mode.value * unit, data), shift))
         for mode in found
     )
-    if model.kind is not Kind.FLOATING and radii is None:
+    if not exactly or (model.kind is not Kind.FLOATING and radii is None):
         return found
     if radii is None and basis == "nearest":
         data = np.full(A.shape, rounding_floor(model.order, norm) / model.order)

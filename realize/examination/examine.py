@@ -3,29 +3,36 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, field, replace
+from functools import cached_property
 from typing import Final
+
+import numpy as np
 
 from realize.arithmetic.floating import FloatingPath, FloatingReach, OpenedFloating
 from realize.arithmetic.modular import Clock
-from realize.entries import Reading, is_simple, known_word
+from realize.entries import Reading, is_simple, known_word, read_float
 from realize.errors import (
     AlgebraicLoopError,
     BudgetError,
     EntryError,
+    LimitError,
     PrecisionError,
     UnknownWordError,
     UnsupportedEntryError,
 )
-from realize.examination.accuracy import settle
+from realize.examination.accuracy import Settled, settle
 from realize.examination.alike import alike
-from realize.examination.doubt import weighed_modes
+from realize.examination.doubt import with_doubt
+from realize.examination.eigenvectors import Eigenvectors
 from realize.examination.lost import with_loss
-from realize.examination.nearest import Nearest, nearest_of
-from realize.examination.pairing import ExactAnswer, Replay, with_exact_ranks
+from realize.examination.nearest import Answered, Nearest, nearest_of
+from realize.examination.pairing import ExactAnswer, Replay, replayed, with_exact_ranks
 from realize.examination.record import Answer, Examination, peak_memory
-from realize.examination.why import by_pattern
-from realize.forms.kalman import decompose, reach_and_see
+from realize.examination.stepped import SteppedAnswer
+from realize.examination.why import Coordinates, by_pattern
+from realize.forms.kalman import hidden_blocks, reach_and_see
 from realize.forms.minimal import reduce
 from realize.forms.sources import accept
 from realize.model.realization import Kind, Realization
@@ -41,8 +48,36 @@ __all__ = ["DEFAULT_BUDGET", "examine"]
 DEFAULT_BUDGET: Final = 10.0
 """Seconds that the exact path may take in one examination, unless another budget is given."""
 
-_READING_SECONDS: Final = 6e-6
-"""Estimated time to read one entry, by the slowest reading."""
+STEPS_BUDGET: Final = 5.0
+"""Seconds that the multiprecision steps may take in one examination where its budget is smaller.
+
+They run only where the exact path has no answer, and are most wanted where its budget is small.
+"""
+
+LARGEST_FOR_EIGENVECTORS: Final = 300
+"""Up to this order eigenvectors are always asked for hidden modes that no staircase shows; they
+cost some twenty times as much as a staircase."""
+
+_VISIBLE_ORDER: Final = 24
+"""Up to this order the modes that show are computed with many digits where nothing is exact."""
+
+_READING_SECONDS: Final = {
+    Reading.STORED: 1e-6,
+    Reading.WRITTEN: 2.3e-6,
+    Reading.INTENDED: 1.3e-5,
+    Reading.GIVEN: 0.0,
+}
+"""Estimated time to read one entry that is not zero."""
+
+_ZERO_SECONDS: Final = 1.2e-7
+"""Estimated time to pass over one entry that is."""
+
+_JOINING_SECONDS: Final = 1.2e-6
+"""Estimated time of one product of numbers in joining the blocks of a connection."""
+
+_GROWTH: Final = 80
+"""Signals in an algebraic loop with which that time doubles; their square where the entries have
+denominators of their own, as they have as intended."""
 
 _READINGS: Final = (Reading.STORED, Reading.WRITTEN, Reading.INTENDED)
 _LEADING: Final = (Reading.STORED, Reading.WRITTEN)
@@ -71,10 +106,12 @@ def examine(
     uncertainty : number, "ulp", "last digit", Uncertainty or None, keyword-only
         How far each entry may lie from the number given; a number is relative, and zeros stay
         zero. Then the answer is the lowest order found within it, and `within_uncertainty` says
-        whether every model within it is minimal.
+        whether every model within it is minimal. This may take as long as the exact path.
     budget : float or None, keyword-only
-        Seconds that the exact path may take; None for no limit. When they do not suffice, the
-        answer is the floating one, and says so. As many again may go to the uncertainty.
+        Seconds that the exact path may take; None for no limit. When they do not suffice for any
+        reading that may lead, and for irrational constants, the answer is that of steps of
+        rising precision, which may take as long, and `STEPS_BUDGET` seconds at the least; when
+        these do not suffice either, it is the floating one. Both say that nothing is proved.
 
     Returns
     -------
@@ -85,10 +122,12 @@ def examine(
     ------
     DisagreementError
         When the three routes to the minimal order differ, which would be a bug.
+    PrecisionError
+        When no path has an answer.
     UncertaintyError
         When the uncertainty is negative, or does not have the shapes of the model.
     UnknownWordError
-        For an unknown reading, or one that does not fit the model, or an unknown uncertainty.
+        For an unknown reading, or one that does not fit the model.
 
     References
     ----------
@@ -112,35 +151,45 @@ def examine(
     tolerance = check_tolerance(tolerance)
     _check_budget(budget)
     floating = _Floating(model, tolerance)
-    exact, not_done, exact_seconds = _exact_answers(model, words, budget)
+    exact, not_done, exact_seconds = _exact_answers(
+        model, words, budget, floating_ran=floating.failed is None
+    )
     orders = {word: found.order for word, found in exact.items()}
     if floating.failed is not None:
-        if not exact:
-            raise PrecisionError(
-                f"neither path has an answer: {'; '.join(not_done)}; {floating.failed}"
-            )
         not_done.append(f"the floating path did not run: {floating.failed}")
     replays = {word: floating.replay(found.stairs) for word, found in exact.items()}
-    answer, about, nearest = _answer(model, exact, orders, floating, budget, not_done)
-    weighed = None
     seconds = {"floating": floating.seconds, "exact": exact_seconds}
+    began = time.perf_counter()
+    found = _answered(model, words, exact, floating, budget, not_done)
+    if found.stepped:
+        seconds["multiprecision"] = time.perf_counter() - began
+    weighed = None
     if box is not None:
         began = time.perf_counter()
-        settled = settle(box, model, exact, nearest, budget, not_done)
-        answer, about, weighed = settled.answer, settled.about, settled.weighed
+        settled = settle(box, model, exact, found.nearest, budget, not_done)
         seconds["uncertainty"] = time.perf_counter() - began
+        found, weighed = _within(found, settled), settled.weighed
+    answer, about = found.answer, found.about
     radii = None if box is None else box.radii
-    accuracy = None if radii is None else radii.A
-    hidden = Deferred(
-        lambda: weighed_modes(_hidden_modes(about, floating, answer), model, answer.basis, accuracy)
-    )
-    visible = Deferred(
-        lambda: weighed_modes(
-            _visible_modes(about, floating, budget), model, answer.basis, accuracy
-        )
-    )
+
+    def of_data(modes: tuple[Mode, ...], exactly: bool) -> tuple[Mode, ...]:
+        return with_doubt(modes, model, found.word, None if radii is None else radii.A, exactly)
+
+    def hidden_ones() -> tuple[Mode, ...]:
+        if about is None:
+            # Where the exact path did not run, all may still be proved to show.
+            shows = answer.basis != "floating"
+            modes = () if shows else by_pattern(floating.hidden_modes(), model)
+        elif isinstance(about, ExactAnswer) and about.hidden is None:
+            modes = by_pattern(floating.hidden_modes(about.stairs), model)
+        else:
+            return with_loss(of_data(about.hidden_modes(), True), model, answer.basis, budget)
+        return with_loss(of_data(modes, False), model, answer.basis, budget)
+
+    hidden = Deferred(hidden_ones)
+    visible = Deferred(lambda: of_data(*_visible_modes(about, floating, budget, model)))
     connection = model._connection
-    stairs = {word: found.stairs for word, found in exact.items()}
+    stairs = {word: each.stairs for word, each in exact.items()}
     return Examination(
         model=model,
         order=model.order,
@@ -150,35 +199,36 @@ def examine(
         paths_agree=floating.order in orders.values(),
         readings_agree=len(set(orders.values())) == 1,
         answer=answer,
-        verdict=_verdict(model.order, answer, orders, floating.order, weighed),
-        nearest=nearest,
+        verdict=_verdict(model.order, found, orders, floating.order, weighed),
+        nearest=found.nearest,
         cutoff_ranges={
             word: None if replay is None else replay.interval for word, replay in replays.items()
         },
         conflicts={
             word: () if replay is None else replay.conflicts for word, replay in replays.items()
         },
-        routes={word: found.routes for word, found in exact.items()},
+        routes={word: each.routes for word, each in exact.items()},
         not_done=tuple(not_done),
         seconds=seconds,
         peak_memory=peak_memory(),
+        precision_steps={word: each.steps for word, each in found.stepped.items()},
+        _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
         uncertainty=given,
         weighed=weighed,
-        _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
-        _hidden=Deferred(lambda: with_loss(hidden.get(), model, answer.basis, budget)),
+        _hidden=hidden,
         _loops=Deferred(lambda: () if connection is None else connection.join().loops),
         _visible=visible,
         _alike=Deferred(
             lambda: (
-                ()
-                if model.kind is Kind.RATIONAL and box is None
-                else alike(hidden.get() + visible.get(), model, radii)
+                alike(hidden.get() + visible.get(), model, radii)
+                if model.kind is Kind.FLOATING or box is not None
+                else ()
             )
         ),
-        _parts=Deferred(lambda: {word: _parts_of(found, budget) for word, found in exact.items()}),
+        _parts=Deferred(lambda: {word: _parts_of(each, budget) for word, each in exact.items()}),
         hidden_parts={
-            word: {str(part): polynomial for part, polynomial in found.hidden.items()}
-            for word, found in exact.items()
+            word: {str(part): polynomial for part, polynomial in (each.hidden or {}).items()}
+            for word, each in exact.items()
         },
         _unsimple=Deferred(lambda: _count_unsimple(model)),
         _reduction=Deferred(
@@ -188,6 +238,7 @@ def examine(
                 else None
             )
         ),
+        _nearly_hidden=Deferred(floating.nearly_hidden),
     )
 
 
@@ -196,7 +247,6 @@ class _Floating:
 
     def __init__(self, model: Realization, tolerance: float | None) -> None:
         began = time.perf_counter()
-        self.model = model
         self.path = FloatingPath(tolerance)
         self.failed: str | None = None
         self.run: tuple[FloatingReach, FloatingReach] | None = None
@@ -220,9 +270,23 @@ class _Floating:
             None if self.failed is not None else Replay.of(self._ran()[0], stairs, self._ran()[1])
         )
 
-    def nearest(self, model: Realization, clock: Clock) -> tuple[Nearest, ExactAnswer]:
-        """Return the nearest model of lower order, and what it hides."""
-        return nearest_of(model, *self._ran(), clock)
+    def nearest(
+        self, model: Realization, answered: Callable[[Realization, Coordinates], Answered]
+    ) -> tuple[Nearest, Answered] | None:
+        """Return the nearest model of lower order that the staircases show, and what it hides."""
+        return nearest_of(model, *self._ran(), answered)
+
+    def nearest_by_eigenvectors(
+        self, model: Realization, answered: Callable[[Realization, Coordinates], Answered]
+    ) -> tuple[Nearest, Answered] | None:
+        """Return a model of lower order within rounding that only eigenvectors show, if any."""
+        opened, _ = self._ran()
+        within = rounding_floor(model.order, 1.0)
+        for run in self.eigenvectors.splits():
+            found = nearest_of(model, opened, run, answered, within)
+            if found is not None:
+                return found
+        return None
 
     def decisions(self) -> tuple[RankDecision, ...]:
         if self.failed is not None:
@@ -230,17 +294,23 @@ class _Floating:
         _, run = self._ran()
         return run[0].decisions() + run[1].decisions()
 
-    def hidden_modes(self) -> tuple[Mode, ...]:
+    @cached_property
+    def eigenvectors(self) -> Eigenvectors:
+        """The eigenvectors of the scaled model."""
+        return Eigenvectors.of(self._ran()[0])
+
+    def nearly_hidden(self) -> int:
+        """Return how many modes eigenvectors show within the cutoff of being hidden."""
+        return 0 if self.failed is not None else self.eigenvectors.nearly_hidden()
+
+    def hidden_modes(
+        self, stairs: tuple[tuple[int, ...], tuple[int, ...]] | None = None
+    ) -> tuple[Mode, ...]:
+        """Return the hidden modes by the path's own ranks, or by the stairs given."""
         opened, (reach, sight) = self._ran()
-        try:
-            blocks = decompose(opened, reach, sight).hidden_blocks()
-        except PrecisionError:
-            # At this tolerance what is not reached cannot be split by what is seen of it.
-            blocks = [
-                (Part.CONTROLLABLE_UNOBSERVABLE, sight.quotient()),
-                (Part.UNCONTROLLABLE_UNOBSERVABLE, reach.quotient()),
-            ]
-        return opened.modes(blocks)
+        if stairs is not None:
+            reach, sight = replayed(opened, stairs, (reach, sight))
+        return opened.modes(hidden_blocks(opened, reach, sight))
 
     def visible_modes(self) -> tuple[Mode, ...]:
         if self.failed is not None:
@@ -264,7 +334,7 @@ def _readings_of(model: Realization, readings: Iterable[str] | None) -> tuple[Re
             argument="readings",
             found=readings,
         )
-    if model.kind == Kind.RATIONAL:
+    if model.kind != Kind.FLOATING:
         for word in readings or ():
             known_word(Reading, word, "readings")
         return (Reading.GIVEN,)
@@ -300,7 +370,7 @@ def _check_budget(budget: float | None) -> None:
 
 
 def _exact_answers(
-    model: Realization, words: Sequence[Reading], budget: float | None
+    model: Realization, words: Sequence[Reading], budget: float | None, *, floating_ran: bool
 ) -> tuple[dict[str, ExactAnswer], list[str], float]:
     """Return reading -> exact answer; readings that give one model share one answer."""
     began = time.perf_counter()
@@ -308,9 +378,16 @@ def _exact_answers(
     found: dict[str, ExactAnswer] = {}
     not_done: list[str] = []
     late: dict[str, list[str]] = {}
+    unnamed: dict[str, list[str]] = {}
+    if model._holds_constants():
+        not_done.append(
+            "the exact path did not run: the model holds irrational constants, which no rational "
+            "numbers are"
+        )
+        words = ()
     for word in words:
         try:
-            clock.afford(_READING_SECONDS * model.order**2, f"reading the entries as {word}")
+            clock.afford(_reading_seconds(model, word), f"reading the entries as {word}")
             rational = model.read(word)
             for other in found.values():
                 if other.model == rational:
@@ -318,7 +395,13 @@ def _exact_answers(
                     break
             else:
                 answer = ExactAnswer(rational, clock)
-                answer.find_hidden()
+                try:
+                    answer.find_hidden()
+                except BudgetError as error:
+                    # The order is proved all the same; the floating path can name the modes.
+                    if not floating_ran:
+                        raise
+                    unnamed.setdefault(str(error), []).append(str(word))
                 found[str(word)] = answer
                 if not answer.stairs_proved:
                     not_done.append(
@@ -330,93 +413,277 @@ def _exact_answers(
             late.setdefault(str(error), []).append(str(word))
     for error_text, missed in late.items():
         not_done.append(f"the exact path did not run as {', '.join(missed)}: {error_text}")
+    for error_text, missed in unnamed.items():
+        not_done.append(
+            f"the hidden modes as {', '.join(missed)} are named by the floating path, with the "
+            f"stairs proved: {error_text}"
+        )
     return found, not_done, time.perf_counter() - began
 
 
-def _answer(
+@dataclass(frozen=True, slots=True)
+class _Found:
+    """An answer, and what it rests on.
+
+    ``word``: the reading it is about, or "nearest", or "floating". ``about``: what an exact path,
+    or one of many digits, says of that model; None where only the floating path has an answer.
+    """
+
+    answer: Answer
+    word: str
+    about: ExactAnswer | SteppedAnswer | None = None
+    nearest: Nearest | None = None
+    stepped: dict[str, SteppedAnswer] = field(default_factory=dict)
+
+
+def _answered(
     model: Realization,
+    words: Sequence[Reading],
     exact: dict[str, ExactAnswer],
-    orders: dict[str, int],
     floating: _Floating,
     budget: float | None,
     not_done: list[str],
-) -> tuple[Answer, ExactAnswer | None, Nearest | None]:
-    """Return the answer, the exact answer it rests on, and the nearest model of lower order."""
-    if not exact:
-        order = model.order if floating.order is None else floating.order
-        return Answer(order=order, basis="floating"), None, None
-    if Reading.GIVEN in exact:
-        leading = [str(Reading.GIVEN)]
+) -> _Found:
+    """Return the answer: by the exact path, by steps of precision, or by the floating path.
+
+    Raises
+    ------
+    PrecisionError
+        When none of them has an answer.
+    """
+    leading = [word for word in words if word in (*_LEADING, Reading.GIVEN)]
+    proved = [str(word) for word in leading if word in exact]
+    if proved:
+        best = min(proved, key=lambda word: exact[word].order)
+        order = exact[best].order
+        found = _Found(Answer(order=order, basis=best), best, exact[best])
+        return _or_nearest(model, found, floating, budget, not_done)
+    stepped: dict[str, SteppedAnswer] = {}
+    if leading:
+        clock = Clock(
+            None if budget is None else max(budget, STEPS_BUDGET), "the multiprecision steps"
+        )
+        stepped = _stepped_answers(model, leading, clock, not_done)
+        if stepped:
+            return _by_steps(model, stepped, floating, clock, not_done)
     else:
-        leading = [str(word) for word in _LEADING if word in exact] or list(exact)
-    best = min(leading, key=lambda word: orders[word])
-    answer, about = Answer(order=orders[best], basis=best), exact[best]
-    if floating.order is None or floating.order >= answer.order:
-        return answer, about, None
+        not_done.append(
+            "no reading was asked for that may lead an answer, since intended is a hypothesis; "
+            "without one the floating path says what is near"
+        )
+    if floating.order is None:
+        raise PrecisionError(f"no path has an answer: {'; '.join(not_done)}")
+    found = _Found(Answer(order=floating.order, basis="floating"), "floating")
+    # Where the exact path has no time for the model, it has none for one near it.
+    return found if leading else _or_nearest(model, found, floating, budget, not_done)
+
+
+def _within(found: _Found, settled: Settled) -> _Found:
+    """Return the answer within an uncertainty, where one was settled exactly."""
+    if settled.about is None and settled.weighed.within is Within.OPEN:
+        return found
+    return replace(found, answer=settled.answer, word=settled.answer.basis, about=settled.about)
+
+
+def _or_nearest(
+    model: Realization,
+    found: _Found,
+    floating: _Floating,
+    budget: float | None,
+    not_done: list[str],
+) -> _Found:
+    """Return the answer found, or that about the nearest model where this is within rounding."""
+    above = model.order if found.about is None else found.answer.order
+
+    def proved(shaped: Realization, coordinates: Coordinates) -> ExactAnswer:
+        answer = ExactAnswer(shaped, Clock(budget), coordinates)
+        answer.find_hidden()
+        return answer
+
+    pair = _formed(model, floating, above, proved, not_done)
+    if pair is None:
+        return found
+    nearest, near = pair
+    if _within_rounding(model, nearest):
+        return _Found(Answer(order=near.order, basis="nearest"), "nearest", near, nearest)
+    return replace(found, nearest=nearest)
+
+
+def _by_steps(
+    model: Realization,
+    stepped: dict[str, SteppedAnswer],
+    floating: _Floating,
+    clock: Clock,
+    not_done: list[str],
+) -> _Found:
+    """Return the answer of the steps: of a reading, or of the nearest model within rounding."""
+    best = min(stepped, key=lambda word: stepped[word].order)
+    stepped = {best: stepped[best], **stepped}
+    about = stepped[best]
+    found = _Found(Answer(order=about.order, basis="multiprecision"), best, about, stepped=stepped)
+    if model.kind != Kind.FLOATING:
+        return found
+
+    def answered(shaped: Realization, coordinates: Coordinates) -> SteppedAnswer:
+        return SteppedAnswer(shaped, clock, coordinates)
+
+    pair = _formed(model, floating, about.order, answered, not_done)
+    if pair is None:
+        if floating.order is None or floating.order >= about.order:
+            return found
+        # What the floating path hides may be hidden within the rounding of the data, so the
+        # dangers that it names must not be passed over.
+        order = floating.order
+        return _Found(Answer(order=order, basis="floating"), "floating", stepped=stepped)
+    nearest, near = pair
+    if _within_rounding(model, nearest):
+        return _Found(
+            Answer(order=near.order, basis="multiprecision"),
+            "nearest",
+            near,
+            nearest,
+            {"nearest": near, **stepped},
+        )
+    return replace(found, nearest=nearest)
+
+
+def _formed(
+    model: Realization,
+    floating: _Floating,
+    above: int,
+    answered: Callable[[Realization, Coordinates], Answered],
+    not_done: list[str],
+) -> tuple[Nearest, Answered] | None:
+    """Return the nearest model of an order below one, and what it hides, or say why not.
+
+    The one that the staircases show; where that is none, or lies beyond rounding, one within
+    rounding that eigenvectors show.
+    """
+    pair = None
     try:
-        nearest, near = floating.nearest(model, Clock(budget))
+        if floating.order is not None and floating.order < above:
+            pair = floating.nearest(model, answered)
+            if pair is not None and _within_rounding(model, pair[0]):
+                return pair
+        if _has_more_nearly_hidden(model, floating, above):
+            closer = floating.nearest_by_eigenvectors(model, answered)
+            if closer is not None and closer[1].order < above:
+                return closer
     except (BudgetError, PrecisionError) as error:
         not_done.append(f"the nearest model of lower order was not formed: {error}")
-        return answer, about, None
+    return pair
+
+
+def _has_more_nearly_hidden(model: Realization, floating: _Floating, above: int) -> bool:
+    """Whether eigenvectors of doubles show more hidden modes than an order leaves."""
+    return (
+        model.kind == Kind.FLOATING
+        and 0 < model.order <= LARGEST_FOR_EIGENVECTORS
+        and floating.nearly_hidden() > model.order - above
+    )
+
+
+def _within_rounding(model: Realization, nearest: Nearest) -> bool:
     floor = rounding_floor(model.order, 1.0)
-    if model.kind == Kind.FLOATING and nearest.largest_share <= floor:
-        return Answer(order=near.order, basis="nearest"), near, nearest
-    return answer, about, nearest
+    return model.kind == Kind.FLOATING and nearest.largest_share <= floor
+
+
+def _stepped_answers(
+    model: Realization, words: Sequence[Reading], clock: Clock, not_done: list[str]
+) -> dict[str, SteppedAnswer]:
+    """Return reading -> answer by steps of precision; readings of one model share one answer."""
+    found: dict[str, SteppedAnswer] = {}
+    late: dict[str, list[str]] = {}
+    for word in words:
+        try:
+            clock.afford(_reading_seconds(model, word), f"reading the entries as {word}")
+            read = model if word is Reading.GIVEN else model._with_floats_read(word)
+            same = next((other for other in found.values() if other.model == read), None)
+            answer = SteppedAnswer(read, clock) if same is None else same
+        except (
+            BudgetError,
+            AlgebraicLoopError,
+            EntryError,
+            LimitError,
+            PrecisionError,
+        ) as error:
+            late.setdefault(str(error), []).append(str(word))
+            continue
+        found[str(word)] = answer
+        if answer.stopped is not None and same is None:
+            not_done.append(f"more digits were not tried as {word}: {answer.stopped}")
+    for error_text, missed in late.items():
+        not_done.append(f"no steps of precision as {', '.join(missed)}: {error_text}")
+    return found
+
+
+def _reading_seconds(model: Realization, word: Reading) -> float:
+    """Return the estimated time to read a model, blocks and connection included."""
+    connection = model._connection
+    if connection is None:
+        return sum(
+            _ZERO_SECONDS * matrix.size + _READING_SECONDS[word] * np.count_nonzero(matrix)
+            for matrix in model.matrices()
+        )
+    products, largest = connection.work()
+    growth = largest**2 if word is Reading.INTENDED else largest
+    return sum(_reading_seconds(block, word) for block in connection.blocks) + (
+        _JOINING_SECONDS * products * (1 + growth / _GROWTH)
+    )
 
 
 def _parts_of(answer: ExactAnswer, budget: float | None) -> dict[str, Polynomial | None]:
-    known = {**answer.hidden, Part.CONTROLLABLE_OBSERVABLE: answer.visible_within(budget)}
-    return {str(part): known[part] for part in Part}
-
-
-def _hidden_modes(
-    about: ExactAnswer | None, floating: _Floating, answer: Answer
-) -> tuple[Mode, ...]:
-    if about is not None:
-        return about.hidden_modes()
-    # Where the exact path did not run, all may still be proved to show.
-    return (
-        ()
-        if answer.order == floating.model.order
-        else by_pattern(floating.hidden_modes(), floating.model)
-    )
+    known = {**(answer.hidden or {}), Part.CONTROLLABLE_OBSERVABLE: answer.visible_within(budget)}
+    return {str(part): known.get(part) for part in Part}
 
 
 def _visible_modes(
-    about: ExactAnswer | None, floating: _Floating, budget: float | None
-) -> tuple[Mode, ...]:
-    if about is None or about.visible_within(budget) is None:
-        return floating.visible_modes()
-    return about.visible_modes()
+    about: ExactAnswer | SteppedAnswer | None,
+    floating: _Floating,
+    budget: float | None,
+    model: Realization,
+) -> tuple[tuple[Mode, ...], bool]:
+    """Return the modes that show, and whether they are more than computed in doubles."""
+    if isinstance(about, SteppedAnswer):
+        if model.order > _VISIBLE_ORDER and floating.failed is None:
+            return floating.visible_modes(), False
+    elif about is None or about.visible_within(budget) is None:
+        return floating.visible_modes(), False
+    return about.visible_modes(), True
 
 
 def _count_unsimple(model: Realization) -> int:
-    if model.kind == Kind.RATIONAL:
-        return 0
-    read = model.read(Reading.INTENDED)
-    return sum(
-        not is_simple(value)
-        for matrix, exact in zip(model.matrices(), read.matrices(), strict=True)
-        for value in exact.ravel().tolist()
-    )
+    return sum(not is_simple(read_float(value, Reading.INTENDED)) for value in model._floats())
 
 
 def _verdict(
     order: int,
-    answer: Answer,
+    found: _Found,
     orders: dict[str, int],
     floating_order: int | None,
     weighed: Weighed | None,
 ) -> str:
     """Return the answer in one sentence."""
-    grounds = {
-        "given": "proved for the model as given",
-        "stored": "proved for the doubles as stored",
-        "written": "proved for the decimals as written",
-        "intended": "proved for the fractions as intended, which is a hypothesis",
-        "nearest": "proved for a model within rounding of this one",
-        "floating": "by the floating path alone, nothing is proved",
-    }[answer.basis]
+    answer = found.answer
+    about = {
+        "given": "the model as given",
+        "stored": "the doubles as stored",
+        "written": "the decimals as written",
+        "nearest": "a model within rounding of this one",
+        "floating": "",
+    }[found.word]
+    if answer.basis == "floating":
+        grounds = "by the floating path alone, nothing is proved"
+    elif isinstance(found.about, SteppedAnswer):
+        digits = found.about.steps.digits
+        grounds = (
+            f"by steps of {digits[0]} to {digits[-1]} digits, evidence and not proof, for {about}"
+            if found.about.steps.is_settled
+            else f"by steps of up to {digits[-1]} digits that are not settled, so a guess, for "
+            f"{about}"
+        )
+    else:
+        grounds = f"proved for {about}"
     if weighed is not None and weighed.within is Within.MINIMAL:
         grounds = "proved for every model within the uncertainty"
     elif weighed is not None and answer.basis == "nearest":
@@ -437,7 +704,8 @@ def _verdict(
             f"not minimal: {hidden} of {order} states {'is' if hidden == 1 else 'are'} hidden, "
             f"order {answer.order} remains"
         )
-    others = [f"{word} gives {value}" for word, value in orders.items() if value != answer.order]
+    seen = orders | {f"steps as {word}": each.order for word, each in found.stepped.items()}
+    others = [f"{word} gives {value}" for word, value in seen.items() if value != answer.order]
     if floating_order not in (None, answer.order) and answer.basis != "floating":
         others.append(f"the floating path gives {floating_order}")
     return f"{text}; {grounds}" + (f" ({', '.join(others)})" if others else "")

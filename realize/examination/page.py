@@ -14,6 +14,7 @@ from realize.tolerance import default_tolerance
 from realize.within.weigh import Weighed, Within
 
 if TYPE_CHECKING:
+    from realize.arithmetic.steps import PrecisionSteps
     from realize.examination.record import Examination
 
 __all__ = ["findings", "page"]
@@ -168,6 +169,12 @@ def _danger(examination: Examination) -> str:
                 "no mode is hidden in the model itself; whether one is, and whether that is "
                 "stable, is open for other models within the uncertainty."
             )
+        steps = examination.leading_steps
+        if steps is not None and not steps.is_settled:
+            return (
+                "no hidden mode was found, but the steps of precision are not settled: one may be "
+                "hidden, and may be unstable."
+            )
         return "no mode is hidden, so none can be unstable unseen."
     constants = [mode.time_constant for mode in hidden]
     slowest = max((constant for constant in constants if constant is not None), default=0.0)
@@ -201,7 +208,7 @@ def _why(examination: Examination) -> str:
     modes = _named(examination, examination.hidden_modes)
     if not modes:
         return "every state is reached and seen."
-    untold = "not told, because the exact path did not run"
+    untold = "not told, because no exact polynomial stands behind it"
     if all(mode.why is None for _, mode, _ in modes):
         return f"{untold}."
     grouped: dict[str, list[str]] = {}
@@ -225,18 +232,22 @@ def _doubling(mode: Mode) -> str:
 
 
 def _basis(examination: Examination) -> str:
-    if not examination.minimal_order:
-        return "the exact path did not run; nothing here is proved."
-    orders = ", ".join(f"{word} {value}" for word, value in examination.minimal_order.items())
     floating = examination.floating_order
-    text = f"exact minimal order: {orders}; "
+    if examination.minimal_order:
+        orders = ", ".join(f"{word} {value}" for word, value in examination.minimal_order.items())
+        text = f"exact minimal order: {orders}; "
+    elif examination.precision_steps:
+        text = f"the exact path did not run; nothing here is proved. {_steps(examination)}; "
+    else:
+        return "the exact path did not run; nothing here is proved."
     text += "the floating path did not run" if floating is None else f"floating path: {floating}"
     if examination.unscaled_order not in (None, floating):
         text += f" ({examination.unscaled_order} without scaling)"
     if examination.nearest is not None:
         nearest = examination.nearest
+        kind = "n exact" if examination.leading_steps is None else ""
         text += (
-            f". An exact model of order {nearest.order} lies at relative distance "
+            f". A{kind} model of order {nearest.order} lies at relative distance "
             f"{nearest.relative_distance:.2g}"
         )
     if examination.model.kind == "floating" and "intended" in examination.minimal_order:
@@ -248,9 +259,31 @@ def _basis(examination: Examination) -> str:
     return text + "."
 
 
+def _steps(examination: Examination) -> str:
+    """Say what the steps of precision found, and whether they settle it."""
+    told: dict[str, list[str]] = {}
+    for word, steps in examination.precision_steps.items():
+        *fewer, most = map(str, steps.digits)
+        digits = f"{', '.join(fewer)} and {most} digits"
+        unsettled = [step for step in steps.steps if not step.is_settled]
+        if unsettled:
+            text = (
+                f"order {steps.order}, NOT settled at {digits} ({len(unsettled)} of "
+                f"{_count(len(steps.steps), 'value')} neither stays nor shrinks as it must, the "
+                f"first at {unsettled[0].where})"
+            )
+        else:
+            text = f"order {steps.order}, every step settled at {digits}"
+        told.setdefault(text, []).append(word)
+    texts = [f"as {', '.join(words)}: {text}" for text, words in told.items()]
+    return "Steps of precision " + "; ".join(texts)
+
+
 def _cutoffs(examination: Examination) -> str:
     if not examination.cutoff_ranges:
-        return "no exact ranks to compare with."
+        fragile = examination.fragile
+        told = "no exact ranks to compare with."
+        return told + (f" Fragile: {', '.join(fragile)}." if fragile else "")
     if examination.floating_order is None:
         return "none; the floating path did not run."
     scale = next((d.scale for d in examination.decisions), 0.0)
@@ -296,7 +329,13 @@ def _removal(examination: Examination) -> str:
 def _next(examination: Examination) -> str:
     status = examination.status
     told = {mode.stability for mode in examination.hidden_modes}
+    steps = examination.leading_steps
     if status == 4 and not told & {Stability.UNSTABLE, Stability.MARGINAL}:
+        if steps is not None and examination.model.kind != "floating":
+            return (
+                "work out by hand whether the hidden mode lies on the boundary, which no number of "
+                "digits can tell. Until then treat it as one that does not decay."
+            )
         return (
             "go back for better data, or give the entries exactly: these numbers do not tell "
             "whether the hidden mode decays. Until then treat it as one that does not."
@@ -308,6 +347,8 @@ def _next(examination: Examination) -> str:
         )
     if examination.within_uncertainty is Within.OPEN:
         return _to_settle(examination)
+    if steps is not None and status == 3:
+        return _after_steps(examination, steps)
     if status == 3:
         return "give the exact path a larger budget, or treat the order as a guess."
     if examination.answer.order < examination.order:
@@ -317,6 +358,24 @@ def _next(examination: Examination) -> str:
     if not examination.paths_agree or not examination.readings_agree:
         return "say which reading is meant before a routine with a tolerance decides for you."
     return "use the model as it is."
+
+
+def _after_steps(examination: Examination, steps: PrecisionSteps) -> str:
+    """Say how far to trust steps of precision, and how to get further."""
+    if examination.model._holds_constants():
+        more = "nothing proves the order, and no larger budget does"
+        further = "look with more digits through realize.multiprecision"
+    else:
+        more = "a larger budget for the exact path proves the order"
+        further = "give the exact path a larger budget"
+    if not steps.is_settled:
+        return f"treat the order as a guess; {further}."
+    if examination.answer.order == examination.order:
+        return f"use the model as it is; {more}."
+    return (
+        f"reduce with realize.multiprecision.minimal at {steps.digits[-1]} digits, and keep the "
+        f"list of what was removed; {more}."
+    )
 
 
 def _how_to_reduce(examination: Examination) -> str:
@@ -403,7 +462,7 @@ def _shown_parts(examination: Examination) -> dict[str, dict[str, Polynomial | i
         if examination.order <= _SHORT:
             visible = examination.parts[word][Part.CONTROLLABLE_OBSERVABLE]
         known = {**hidden, str(Part.CONTROLLABLE_OBSERVABLE): visible}
-        shown[word] = {str(part): known[str(part)] for part in Part}
+        shown[word] = {str(part): known.get(str(part)) for part in Part}
     return shown
 
 

@@ -19,7 +19,7 @@ from realize.polynomials import Polynomial
 from realize.results import Mode, Part, RankDecision
 from realize.tolerance import rounding_floor
 
-__all__ = ["ExactAnswer", "Replay", "with_exact_ranks"]
+__all__ = ["ExactAnswer", "Replay", "replayed", "with_exact_ranks"]
 
 
 class ExactAnswer:
@@ -33,11 +33,11 @@ class ExactAnswer:
         self.opened = OpenedExact(model, clock)
         opened = self.opened
         self.reach, self.sight = reach_and_see(opened)
-        self.order = self.sight.dimension
+        self.order: int = self.sight.dimension
         self.stairs = (self.reach.stairs, self.sight.stairs)
         self.stairs_proved = self.reach.stairs_proved and self.sight.stairs_proved
         self.routes = routes(opened, self.order)
-        self.hidden: dict[Part, Polynomial] = {}
+        self.hidden: dict[Part, Polynomial] | None = None
         self._visible: Polynomial | None = None
 
     def find_hidden(self) -> None:
@@ -73,7 +73,9 @@ class ExactAnswer:
 
     def hidden_modes(self) -> tuple[Mode, ...]:
         """Return the hidden modes, with exact stability and the reason they are hidden."""
-        modes = self._modes((part, self.hidden[part]) for part in Part if part.hidden)
+        if self.hidden is None:
+            raise AssertionError("find_hidden comes first")
+        modes = self._modes(self.hidden.items())
         return explained(modes, self.opened, self.coordinates)
 
     def visible_modes(self) -> tuple[Mode, ...]:
@@ -85,6 +87,20 @@ class ExactAnswer:
     def _modes(self, blocks: Iterable[tuple[Part, Polynomial]]) -> tuple[Mode, ...]:
         modes = modes_of(blocks, self.opened.A, self.model.sampling_period)
         return with_channels(modes, self.opened)
+
+
+def replayed(
+    opened: OpenedFloating,
+    stairs: tuple[Sequence[int], Sequence[int]],
+    run: tuple[FloatingReach, FloatingReach],
+) -> tuple[FloatingReach, FloatingReach]:
+    """Return both staircases with given stairs; `run` serves where it took the very same ranks."""
+    reach, sight = run
+    if reach.stairs != tuple(stairs[0]):
+        reach = opened.reached(opened.A, opened.B, opened.C, "reached", stairs[0])
+    if reach is not run[0] or sight.stairs != tuple(stairs[1]):
+        sight = opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen", stairs[1])
+    return reach, sight
 
 
 @dataclass(frozen=True, slots=True)
@@ -111,12 +127,8 @@ class Replay:
         stairs: tuple[Sequence[int], Sequence[int]],
         run: tuple[FloatingReach, FloatingReach],
     ) -> Replay:
-        """Replay with given stairs; `run` is reused where it took the very same ranks."""
-        reach, sight = run
-        if reach.stairs != tuple(stairs[0]):
-            reach = opened.reached(opened.A, opened.B, opened.C, "reached", stairs[0])
-        if reach is not run[0] or sight.stairs != tuple(stairs[1]):
-            sight = opened.reached(reach.A.T, reach.C.T, reach.B.T, "seen", stairs[1])
+        """Replay with given stairs."""
+        reach, sight = replayed(opened, stairs, run)
         decisions = reach.decisions() + sight.decisions()
         floor = rounding_floor(opened.model.order, opened.scaling.scale)
         low, lowest_at = floor, "the rounding floor"

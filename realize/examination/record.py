@@ -7,11 +7,12 @@ import json
 import os
 import sys
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any, Final
 
 import numpy as np
 
+from realize.arithmetic.steps import PrecisionSteps
 from realize.examination.alike import Alike
 from realize.examination.nearest import Nearest
 from realize.model.connections import AlgebraicLoop
@@ -45,7 +46,9 @@ class Answer:
     basis : str
         "given", "stored", "written": the reading it is proved for; "nearest": proved for an exact
         model within the rounding floor of the one examined, or within the uncertainty where one
-        was given; "floating": the exact path did not run, and nothing is proved.
+        was given; "multiprecision": the exact path has no answer, and the steps of precision are
+        the evidence for this one, which is no proof; "floating": by the floating path alone, and
+        nothing is proved.
     """
 
     order: int
@@ -89,6 +92,11 @@ class Examination:
         What is known of the models within it: bounds, and what they rest on.
     not_done : tuple of str
         What was skipped and why.
+    precision_steps : dict
+        Reading -> the steps of precision that were taken for want of an exact answer: "given" for
+        a model of rationals and constants, "nearest" for the nearest model of lower order. Where
+        the answer's basis is "multiprecision" it rests on the first of them. Empty where the
+        exact path answered.
     hidden_parts : dict
         Reading -> hidden part -> exact characteristic polynomial.
     seconds : dict
@@ -113,6 +121,7 @@ class Examination:
     not_done: tuple[str, ...]
     seconds: dict[str, float]
     peak_memory: int | None
+    precision_steps: dict[str, PrecisionSteps] = field(default_factory=dict)
     uncertainty: Uncertainty | None = None
     weighed: Weighed | None = None
     _decisions: Deferred[tuple[RankDecision, ...]]
@@ -122,6 +131,7 @@ class Examination:
     hidden_parts: dict[str, dict[str, Polynomial]]
     _unsimple: Deferred[int]
     _reduction: Deferred[Reduction | None]
+    _nearly_hidden: Deferred[int]
     _loops: Deferred[tuple[AlgebraicLoop, ...]]
     _alike: Deferred[tuple[Alike, ...]]
 
@@ -225,27 +235,51 @@ class Examination:
         """What makes the answer fragile, in words; empty when nothing does.
 
         A floating order that is not the answer's, an answer that no cutoff gives, a cutoff within
-        three decades of one that gives another answer, a hidden mode of which it cannot be told
-        whether it decays.
+        three decades of one that gives another answer, steps of precision that are not settled,
+        eigenvectors that show more modes within the cutoff of being hidden than the answer hides,
+        a hidden mode of which it cannot be told whether it decays.
         """
         found: list[str] = []
         if self.floating_order is None:
             found.append("the floating path did not run")
         elif self.floating_order != self.answer.order:
             found.append("the floating path has another order")
-        basis = self.answer.basis
+        basis = self.rests_on
         span = self.cutoff_ranges.get(basis)
         cutoff = next((decision.cutoff for decision in self.decisions), 0.0)
-        near_edge = basis == "nearest" and self._margin() < NEAR_EDGE
-        if span is not None:
+        conflict = basis in self.cutoff_ranges and span is None
+        if span is None:
+            near_edge = (basis == "nearest" or conflict) and self._margin() < NEAR_EDGE
+        else:
             near_edge = not span[0] * NEAR_EDGE <= cutoff <= span[1] / NEAR_EDGE
-        if basis in self.cutoff_ranges and span is None and self.decisions:
+        # Rounding makes the exact ranks of single stages the largest that there can be, which no
+        # cutoff gives; where the order is the answer's all the same, only its margin counts.
+        if conflict and self.floating_order != self.answer.order and self.decisions:
             found.append("no cutoff gives the answer")
         elif near_edge:
             found.append("a cutoff less than three decades away gives another order")
+        steps = self.leading_steps
+        if steps is not None and not steps.is_settled:
+            found.append("the steps of precision are not settled")
+        if self._nearly_hidden.get() > self.order - self.answer.order:
+            found.append("eigenvectors show a nearly hidden mode that the staircase does not")
         if any(mode.stability is Stability.CANNOT_TELL for mode in self.hidden_modes):
             found.append("it cannot be told whether a hidden mode decays")
         return tuple(found)
+
+    @property
+    def rests_on(self) -> str:
+        """The reading, or the other model, that the answer is about; "floating" without one."""
+        if self.answer.basis == "multiprecision":
+            return next(iter(self.precision_steps))
+        return self.answer.basis
+
+    @property
+    def leading_steps(self) -> PrecisionSteps | None:
+        """The steps of precision that the answer rests on; None where there are none."""
+        if self.answer.basis == "multiprecision":
+            return self.precision_steps[self.rests_on]
+        return None
 
     def _margin(self) -> float:
         """Return the smallest factor between the cutoff and a singular value it decided on."""
@@ -274,12 +308,15 @@ class Examination:
         """Exit status of the command line.
 
         0: nothing hidden, and nothing in doubt. 1: hidden modes, or paths or readings that
-        disagree. 3: undecided, because the exact path did not run, or within the uncertainty.
+        disagree. 3: undecided: nothing is proved, though steps of precision may be evidence, or
+        the question is open within the uncertainty.
         4: a hidden mode is not known to be stable.
         """
         if any(mode.stability is not Stability.STABLE for mode in self.hidden_modes):
             return 4
-        if self.answer.basis == "floating" or self.within_uncertainty is Within.OPEN:
+        if self.answer.basis in ("floating", "multiprecision"):
+            return 3
+        if self.within_uncertainty is Within.OPEN:
             return 3
         clean = self.answer.order == self.order and self.paths_agree and self.readings_agree
         return 0 if clean else 1
@@ -325,6 +362,9 @@ class Examination:
             "witness": None if self.witness is None else to_document(self.witness),
             "cautions": list(self.cautions),
             "not_done": list(self.not_done),
+            "precision_steps": {
+                reading: steps.to_dict() for reading, steps in self.precision_steps.items()
+            },
             "seconds": dict(self.seconds),
             "peak_memory": self.peak_memory,
             "algebraic_loops": [

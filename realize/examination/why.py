@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
-from typing import Any, Final
+from typing import Any, Final, TypeVar
 
 import numpy as np
 from scipy.sparse import csr_array
@@ -14,6 +14,7 @@ from scipy.sparse.csgraph import maximum_bipartite_matching
 
 from realize import polynomials
 from realize.arithmetic.exact import OpenedExact
+from realize.arithmetic.multiprecision import OpenedMultiprecision
 from realize.arithmetic.rational import RationalMatrix
 from realize.arithmetic.scaling import scaling_of
 from realize.model.realization import Realization
@@ -21,20 +22,22 @@ from realize.polynomials import Polynomial
 from realize.results import Mode, Part
 from realize.tolerance import SAME_MODE
 
-__all__ = ["Coordinates", "by_pattern", "explained"]
+__all__ = ["Coordinates", "by_pattern", "explained", "explained_from_decimals"]
 
 Array = np.ndarray[Any, Any]
+Place = TypeVar("Place")
+"""Where modes lie: a factor that they are roots of, or a value."""
 
 _EXACT_VECTORS: Final = 32
 """Up to this order vectors of rational modes are exact; beyond, they are computed in doubles."""
-
-_UNREACHED: Final = (Part.UNCONTROLLABLE_OBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
-_UNSEEN: Final = (Part.CONTROLLABLE_UNOBSERVABLE, Part.UNCONTROLLABLE_UNOBSERVABLE)
 
 _AT_ZERO: Final[Polynomial] = (Fraction(1), Fraction(0))
 
 _PHASE: Final = 1e-6
 """Share of a component below which its imaginary, or its real, part is rounding."""
+
+_SAME: Final = 1e-12
+"""Distance over the norm of A within which two modes computed with many digits are one."""
 
 _NEGLIGIBLE: Final = 1e-9
 """Components of a computed vector below this share of the largest are not shown."""
@@ -54,18 +57,95 @@ def explained(
     comes with a left vector w, w A = z w and w B = 0 (or a right vector v, A v = z v and C v = 0),
     in named states.
     """
+
+    def roots(states: list[int]) -> Iterable[tuple[Polynomial, int]]:
+        # Every root of a factor is a mode of its own; one root of each part tells how many.
+        return polynomials.factor(opened.A.take(states, states).characteristic_polynomial())
+
+    def is_at(mode: Mode, factor: Polynomial) -> bool:
+        return mode.polynomial == factor
+
     modes = tuple(modes)
-    user = opened.model if coordinates is None else coordinates.model
-    names = user.state_names
-    structural = () if coordinates is not None else _structural(modes, opened)
+    structural: set[int] = set()
+    if coordinates is None:  # in others no pattern is the user's
+        structural = _structural(modes, opened.model, roots, is_at, _AT_ZERO)
+    return _told(modes, opened.model, (opened.A, opened.B, opened.C), structural, coordinates)
+
+
+def explained_from_decimals(
+    modes: Iterable[Mode], opened: OpenedMultiprecision, coordinates: Coordinates | None
+) -> tuple[Mode, ...]:
+    """Return hidden modes with their reasons, as `explained`, from computed modes.
+
+    The zero pattern is as exact as there; which mode belongs to which states is told by values
+    that agree to `_SAME`, and vectors are computed in doubles.
+    """
+    model = opened.model
+    A, B, C = (RationalMatrix.from_array(M) for M in model.matrices()[:3])
+    size = float(np.linalg.norm(A.rounded()))
+    unit = opened.numbers.context.ldexp(1, opened.scaling.time)
+
+    def roots(states: list[int]) -> Iterable[tuple[complex, int]]:
+        block = opened.A[np.ix_(states, states)]
+        return [(complex(value * unit), copies) for value, copies, _ in opened.eigenvalues(block)]
+
+    def is_at(mode: Mode, value: complex) -> bool:
+        return abs(mode.value - value) <= _SAME * size
+
+    modes = tuple(modes)
+    structural: set[int] = set()
+    if coordinates is None:
+        structural = _structural(modes, model, roots, is_at, 0j)
+    return _told(modes, model, (A, B, C), structural, coordinates)
+
+
+def by_pattern(modes: Iterable[Mode], model: Realization) -> tuple[Mode, ...]:
+    """Return modes computed in doubles, with the reason of those that the zero pattern hides.
+
+    Needs neither the exact path nor many digits, so it serves models that are too large for both.
+    Values agree to `SAME_MODE`; what is not structural is left without a reason.
+    """
+    modes = tuple(modes)
+    near = SAME_MODE * float(np.abs(model.A).max(initial=0.0))
+
+    def roots(states: list[int]) -> Iterable[tuple[complex, int]]:
+        values = np.linalg.eigvals(np.asarray(model.A[np.ix_(states, states)], dtype=float))
+        return [(value, int((np.abs(values - value) <= near).sum())) for value in values.tolist()]
+
+    def is_at(mode: Mode, value: complex) -> bool:
+        return abs(mode.value - value) <= near
+
+    counted = [
+        replace(
+            mode,
+            multiplicity=sum(m.part is mode.part and is_at(m, mode.value) for m in modes),
+        )
+        for mode in modes
+    ]
+    structural = _structural(counted, model, roots, is_at, 0j)
+    return tuple(
+        replace(mode, why="structural") if k in structural else mode for k, mode in enumerate(modes)
+    )
+
+
+def _told(
+    modes: Sequence[Mode],
+    model: Realization,
+    matrices: tuple[RationalMatrix, RationalMatrix, RationalMatrix],
+    structural: set[int],
+    coordinates: Coordinates | None,
+) -> tuple[Mode, ...]:
+    """Return modes with the reason in words, and the vector where it is by value."""
+    A, B, C = matrices
+    names = (model if coordinates is None else coordinates.model).state_names
     found: list[Mode] = []
-    for mode in modes:
+    for index, mode in enumerate(modes):
         by_output = mode.part is Part.CONTROLLABLE_UNOBSERVABLE
-        if (mode.part, mode.polynomial) in structural:
+        if index in structural:
             found.append(replace(mode, why="structural"))
             continue
         # Transposed, a left vector is a right one of the dual.
-        pair = (opened.A, opened.C) if by_output else (opened.A.T, opened.B.T)
+        pair = (A, C) if by_output else (A.T, B.T)
         vector = _vector(*pair, mode)
         if coordinates is not None:
             vector = coordinates.back(vector, by_output)
@@ -74,27 +154,6 @@ def explained(
         found.append(
             replace(mode, why=f"by value, {side} vector {_combination(shown)}", vector=shown)
         )
-    return tuple(found)
-
-
-def by_pattern(modes: Iterable[Mode], model: Realization) -> tuple[Mode, ...]:
-    """Return computed hidden modes, with the reason of those that the zero pattern alone hides.
-
-    Needs no exact path, so it serves models that are too large for it: graph reachability is
-    exact, and which computed mode belongs to the states cut off is told by its value.
-    """
-    found = list(modes)
-    A, B, C = (np.asarray(M != 0) for M in (model.A, model.B, model.C))
-    near = SAME_MODE * float(np.abs(model.A).max(initial=0.0))
-    for states, parts in _cuts(A, B, C):
-        values = np.linalg.eigvals(np.asarray(model.A[np.ix_(states, states)], dtype=float))
-        inside = [mode for mode in found if mode.part in parts]
-        for k, mode in enumerate(found):
-            if mode.part in parts:
-                copies = np.count_nonzero(np.abs(values - mode.value) <= near)
-                hidden = sum(abs(other.value - mode.value) <= near for other in inside)
-                if hidden <= copies:
-                    found[k] = replace(mode, why="structural")
     return tuple(found)
 
 
@@ -136,63 +195,51 @@ def _cleaned(vector: Sequence[complex]) -> list[complex | float]:
     return found
 
 
-def _structural(modes: Sequence[Mode], opened: OpenedExact) -> set[tuple[Part, Polynomial | None]]:
-    """Return the parts and factors whose modes the zero pattern alone hides.
+def _structural(
+    modes: Sequence[Mode],
+    model: Realization,
+    roots: Callable[[list[int]], Iterable[tuple[Place, int]]],
+    is_at: Callable[[Mode, Place], bool],
+    zero: Place,
+) -> set[int]:
+    """Return the indices of the modes that the zero pattern alone hides.
 
-    The states cut off from the inputs (the outputs; both) hold some copies of a factor. When those
+    The states cut off from the inputs (the outputs; both) hold some copies of a root. When those
     are all the copies that are not controllable (not observable; neither), no other copy could be
-    meant.
+    meant. ``roots`` returns those of the block of some states, with their copies.
     """
-    model = opened.model
-    A, B, C = (np.asarray(M != 0) for M in (model.A, model.B, model.C))
-    found: set[tuple[Part, Polynomial | None]] = set()
-    for states, parts in _cuts(A, B, C):
-        block = opened.A.take(states, states).characteristic_polynomial()
-        for factor, copies in polynomials.factor(block):
-            # Every root of a factor is a mode of its own; one root of each part tells how many.
-            hidden = {
-                mode.part: mode.multiplicity
-                for mode in modes
-                if mode.part in parts and mode.polynomial == factor
-            }
-            if sum(hidden.values()) <= copies:
-                found |= {(part, factor) for part in hidden}
-    found |= _dilations(modes, A, B, _UNREACHED)
-    found |= _dilations(modes, A.T, C.T, _UNSEEN)
+    A, B, C = (np.asarray(M != 0) for M in model.matrices()[:3])
+    unreached, unseen = _cut_off(A, np.any(B, axis=1)), _cut_off(A.T, np.any(C, axis=0))
+    neither = Part.UNCONTROLLABLE_UNOBSERVABLE
+    not_reached = (Part.UNCONTROLLABLE_OBSERVABLE, neither)
+    not_seen = (Part.CONTROLLABLE_UNOBSERVABLE, neither)
+
+    def covered(parts: tuple[Part, ...], place: Place, copies: int) -> set[int]:
+        here = [k for k, m in enumerate(modes) if m.part in parts and is_at(m, place)]
+        hidden = {modes[k].part: modes[k].multiplicity for k in here}
+        return set(here) if sum(hidden.values()) <= copies else set()
+
+    found: set[int] = set()
+    for states, parts in (
+        (unreached, not_reached),
+        (unseen, not_seen),
+        ([i for i in unreached if i in set(unseen)], (neither,)),
+    ):
+        for place, copies in roots(states) if states else ():
+            found |= covered(parts, place, copies)
+    found |= covered(not_reached, zero, _missing(A, B))
+    found |= covered(not_seen, zero, _missing(A.T, C.T))
     return found
 
 
-def _cuts(A: Array, B: Array, C: Array) -> list[tuple[list[int], tuple[Part, ...]]]:
-    """Return the states cut off from the inputs, the outputs, or both, and the parts they are in.
-
-    Takes the zero patterns; leaves out what holds no state.
-    """
-    unreached, unseen = _cut_off(A, np.any(B, axis=1)), _cut_off(A.T, np.any(C, axis=0))
-    both = sorted(set(unreached) & set(unseen))
-    cuts = (
-        (unreached, _UNREACHED),
-        (unseen, _UNSEEN),
-        (both, (Part.UNCONTROLLABLE_UNOBSERVABLE,)),
-    )
-    return [(states, parts) for states, parts in cuts if states]
-
-
-def _dilations(
-    modes: Sequence[Mode], A: Array, B: Array, parts: tuple[Part, ...]
-) -> set[tuple[Part, Polynomial | None]]:
-    """Return the zero modes that the pattern hides because too few entries lead into the states.
+def _missing(A: Array, B: Array) -> int:
+    """Return how many modes at zero the pattern hides, too few entries leading into the states.
 
     The pattern of [A B] has rank n for almost all values of its entries, or for none; what is
     missing are modes at zero (Lin 1974, the dilation half).
     """
     pattern = csr_array(np.hstack([A, B]).astype(np.int8))
-    missing = A.shape[0] - int(np.count_nonzero(maximum_bipartite_matching(pattern) >= 0))
-    hidden = {
-        mode.part: mode.multiplicity
-        for mode in modes
-        if mode.part in parts and mode.polynomial == _AT_ZERO
-    }
-    return {(part, _AT_ZERO) for part in hidden} if sum(hidden.values()) <= missing else set()
+    return int(A.shape[0] - np.count_nonzero(maximum_bipartite_matching(pattern) >= 0))
 
 
 def _cut_off(pattern: Array, first: Array) -> list[int]:

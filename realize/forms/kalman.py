@@ -13,7 +13,14 @@ from realize.forms.sources import accept
 from realize.model.realization import Realization
 from realize.results import Deferred, KalmanParts, Part
 
-__all__ = ["Decomposition", "decompose", "kalman_parts", "reach_and_see", "zeroed"]
+__all__ = [
+    "Decomposition",
+    "decompose",
+    "hidden_blocks",
+    "kalman_parts",
+    "reach_and_see",
+    "zeroed",
+]
 
 # A maps each part into itself, into what is both reached and unseen, and, from the part that is
 # neither, anywhere (Kailath, Linear Systems, section 2.4).
@@ -135,6 +142,18 @@ def decompose(opened: Opened[Reach], reach: Reach, sight: Reach) -> Decompositio
 
     A, B, C = zeroed(opened, A, B, C, spans)
     return Decomposition(T=T, A=A, B=B, C=C, spans=tuple(spans), outside=outside)
+
+
+def hidden_blocks(opened: Opened[R], reach: R, sight: R) -> list[tuple[Part, Any]]:
+    """Return the hidden blocks; where the path cannot split them all, those it can."""
+    try:
+        return decompose(opened, reach, sight).hidden_blocks()
+    except PrecisionError:
+        # At this tolerance what is not reached cannot be split by what is seen of it.
+        return [
+            (Part.CONTROLLABLE_UNOBSERVABLE, sight.quotient()),
+            (Part.UNCONTROLLABLE_UNOBSERVABLE, reach.quotient()),
+        ]
 
 
 def zeroed(

@@ -87,6 +87,8 @@ def _reduce(
             lambda: None if (map_ := state_map.get()) is None else opened.condition(map_)
         ),
         **_changes(opened, (reach, sight), reduced),
+        _source=source,
+        _evidence=Deferred(lambda: opened.evidence(reach, sight)),
     )
     return reduction, opened, blocks
 

@@ -9,19 +9,20 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Any, Final
+from typing import Any, Final, Protocol
 
 import numpy as np
 import scipy.linalg
 
-from realize.arithmetic.floating import FloatingReach, OpenedFloating
+from realize.arithmetic.floating import OpenedFloating
 from realize.arithmetic.rational import RationalMatrix
+from realize.arithmetic.scaling import Scaling
 from realize.errors import PrecisionError
 from realize.forms.kalman import decompose, reach_and_see, zeroed
 from realize.model.realization import Kind, Realization
 from realize.tolerance import rounding_floor
 
-__all__ = ["Nearby", "nearby"]
+__all__ = ["Nearby", "Spanned", "nearby"]
 
 Array = np.ndarray[Any, Any]
 
@@ -42,6 +43,18 @@ class Nearby:
 
     model: Realization
     T: Array
+
+    def in_units(self, scaling: Scaling) -> Nearby:
+        """Return the same model for the user's model in scaled units."""
+        A, B, C, D = self.model.matrices()
+        scaled = Realization._trusted(
+            np.ldexp(A, -scaling.time),
+            np.ldexp(B, scaling.inputs),
+            np.ldexp(C, -scaling.outputs[:, None]),
+            D,
+            kind=Kind.FLOATING,
+        )
+        return Nearby(scaled, np.ldexp(self.T, -scaling.states[:, None]))
 
     def distance(self, user: Realization) -> float:
         """Return the relative distance from a rational model, in the user's units.
@@ -80,7 +93,21 @@ def _share(change: Array, of: Array) -> float:
     return moved / size if size else (math.inf if moved else 0.0)
 
 
-def nearby(opened: OpenedFloating, run: tuple[FloatingReach, FloatingReach]) -> Nearby:
+class Spanned(Protocol):
+    """An orthogonal Q whose first ``dimension`` columns span what is reached (or is seen)."""
+
+    @property
+    def Q(self) -> Array:
+        """The orthogonal matrix, in the scaled coordinates."""
+        ...
+
+    @property
+    def dimension(self) -> int:
+        """The dimension of the subspace."""
+        ...
+
+
+def nearby(opened: OpenedFloating, run: tuple[Spanned, Spanned]) -> Nearby:
     """Return the model that the reduction with these two staircases reduces exactly.
 
     Raises
@@ -95,9 +122,7 @@ def _norm(M: Array) -> float:
     return float(np.linalg.norm(M))
 
 
-def _shaped(
-    opened: OpenedFloating, run: tuple[FloatingReach, FloatingReach]
-) -> tuple[Realization, Array]:
+def _shaped(opened: OpenedFloating, run: tuple[Spanned, Spanned]) -> tuple[Realization, Array]:
     """Return the model with exact zeros where the reduction dropped, and its coordinates T.
 
     States: reached and seen; reached and unseen; not reached. What is not reached is then split

@@ -67,20 +67,22 @@ def encode_entry(entry: Entry | Constant) -> float | str:
 
 
 def expression(entry: Entry | Constant) -> Any:
-    """Return a rational or a constant as an expression of sympy."""
+    """Return an entry as an expression of sympy, a float as the number it is."""
     import sympy
 
+    if isinstance(entry, float):
+        entry = Fraction(entry)
     if isinstance(entry, Fraction):
         return sympy.Rational(entry.numerator, entry.denominator)
     return entry
 
 
-def entry_reader(reading: Reading) -> Callable[[Entry], Fraction]:
-    """Return the function that reads floats by a reading and leaves rationals alone."""
+def entry_reader(reading: Reading) -> Callable[[Entry | Constant], Fraction | Constant]:
+    """Return the function that reads floats by a reading and leaves other entries alone."""
     zero = Fraction(0)
 
-    def read(entry: Entry) -> Fraction:
-        if isinstance(entry, Fraction):
+    def read(entry: Entry | Constant) -> Fraction | Constant:
+        if not isinstance(entry, float):
             return entry
         return read_float(entry, reading) if entry else zero
 
@@ -180,7 +182,14 @@ class SystemModel:
     object), `_key` (its numbers as something hashable) and the pair `_state` and `_restore`.
     """
 
-    __slots__ = ("_digest", "_input_names", "_kind", "_output_names", "_sampling_period")
+    __slots__ = (
+        "_digest",
+        "_input_names",
+        "_kind",
+        "_origin",
+        "_output_names",
+        "_sampling_period",
+    )
 
     _KEY: ClassVar[str]
     """The name of the numbers in a document: "realization" or "transfer"."""
@@ -188,6 +197,9 @@ class SystemModel:
     _digest: str | None
     _input_names: Names | None
     _kind: Kind
+    # The reading that made this model, and the model that was read; filled by `read` alone. No
+    # part of the model's identity.
+    _origin: tuple[Reading, SystemModel]
     _output_names: Names | None
     _sampling_period: Period
 
@@ -243,6 +255,22 @@ class SystemModel:
             self._digest = hashlib.sha256(text.encode("ascii")).hexdigest()
         return self._digest
 
+    @property
+    def provenance(self) -> tuple[str, str]:
+        """The reading that made this model, and the digest of the table that was read.
+
+        "given" and its own digest for a model that is no reading of another.
+        """
+        if hasattr(self, "_origin"):
+            reading, table = self._origin
+            return str(reading), table.digest
+        return str(Reading.GIVEN), self.digest
+
+    def _read_from(self, reading: Reading, table: SystemModel) -> Self:
+        """Remember where this model comes from, and return it."""
+        self._origin = reading, table
+        return self
+
     def _body(self) -> dict[str, Any]:
         """Return the numbers of the model as a JSON object, entries by `encode_entry`."""
         raise NotImplementedError
@@ -266,8 +294,22 @@ class SystemModel:
         """Yield the numbers as they were given, with places in words; none if all are doubles."""
         raise NotImplementedError
 
-    def _refuse_constants(self, advice: str) -> None:
+    def _readable(self) -> Iterator[tuple[str, Entry | Constant]]:
+        """Yield the numbers that `read` goes back to, with places; none if all are doubles."""
+        return self._placed()
+
+    def _holds_constants(self) -> bool:
+        """Whether `read` would meet an irrational constant."""
+        return self._kind is not Kind.RATIONAL and any(
+            is_constant(entry) for _, entry in self._readable()
+        )
+
+    def _refuse_constants(
+        self, advice: str, placed: Iterator[tuple[str, Entry | Constant]] | None = None
+    ) -> None:
         """Refuse a model that holds irrational constants, naming the first.
+
+        ``placed``: the numbers to look at, unless they are those of the model itself.
 
         Raises
         ------
@@ -276,7 +318,7 @@ class SystemModel:
         """
         if self._kind is Kind.RATIONAL:
             return
-        for where, entry in self._placed():
+        for where, entry in self._placed() if placed is None else placed:
             if is_constant(entry):
                 raise UnsupportedEntryError(
                     f"{where}: found the irrational constant {entry}; {advice}",
@@ -314,7 +356,8 @@ class SystemModel:
         word = known_word(Reading, reading, "reading")
         self._refuse_constants(
             "no rational number is what it stands for, so the model has no reading. Use "
-            "realize.multiprecision, which takes any number of digits of it, or to_float()"
+            "realize.multiprecision, which takes any number of digits of it, or to_float()",
+            self._readable(),
         )
         if self._kind is Kind.RATIONAL:
             return None if word is Reading.GIVEN else word
@@ -352,7 +395,12 @@ class SystemModel:
         return hash((self._kind, self._period_key(), self._key()))
 
     def __reduce__(self) -> tuple[Any, ...]:
+        if hasattr(self, "_origin"):
+            return type(self)._restore, self._state(), self._origin
         return type(self)._restore, self._state()
+
+    def __setstate__(self, origin: tuple[Reading, SystemModel]) -> None:
+        self._origin = origin
 
     # A model cannot change, so it is its own copy.
     def __copy__(self) -> Self:

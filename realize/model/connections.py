@@ -1,8 +1,9 @@
 """Models made of models: series, parallel, side by side, a loop, any wiring of named blocks.
 
 A connected model remembers its blocks. Its matrices hold what the blocks' entries multiply out to,
-in doubles if any entry is one; `Realization.read` goes back to the blocks, reads each of them as it
-was given, and connects exactly. Two models with equal entries are equal, whatever they remember.
+in doubles if any entry is one, and as expressions if there are irrational constants and no doubles.
+`Realization.read` goes back to the blocks, reads each of them as it was given, and connects
+exactly. Two models with equal entries are equal, whatever they remember.
 
 One text serves all five functions. The inputs v of all blocks, their outputs w, the external
 inputs u and outputs y satisfy ``v = K w + L u`` and ``y = M w + N u`` with the gains of the wires,
@@ -26,32 +27,44 @@ from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from enum import StrEnum
 from fractions import Fraction
-from typing import TYPE_CHECKING, Any, NoReturn
+from typing import TYPE_CHECKING, Any, Final, NoReturn
 
 import numpy as np
 
 from realize.entries import (
+    Constant,
     Entry,
     Kind,
     Reading,
+    constant_near,
+    decided,
     fraction_array,
+    is_constant,
     known_word,
     make_fraction,
     parse_entry,
     place_text,
-    round_fraction,
+    round_entry,
 )
 from realize.errors import (
     AlgebraicLoopError,
     AlgebraicLoopWarning,
     EntryError,
-    NotBuiltError,
+    LimitError,
     SamplingPeriodError,
     ShapeError,
     UnknownWordError,
     UnsupportedEntryError,
 )
-from realize.model.base import Names, Period, count_text, entry_reader, own_names, parse_names
+from realize.model.base import (
+    Names,
+    Period,
+    count_text,
+    entry_reader,
+    expression,
+    own_names,
+    parse_names,
+)
 from realize.model.realization import Matrix, Realization
 from realize.tolerance import LOOP_MARGIN, UNIT_ROUNDOFF
 
@@ -70,13 +83,17 @@ __all__ = [
     "sum_of",
 ]
 
-Link = tuple[int, int, Entry]
+LARGEST_LOOP: Final = 6
+"""Most signals in an algebraic loop whose gains are expressions, which grow as it is solved."""
+
+Link = tuple[int, int, Entry | Constant]
 """A gain from a column (where a signal comes from) to a row (where it goes)."""
 
 _Matrices = tuple[Matrix, Matrix, Matrix, Matrix]
 _ONE = Fraction(1)
 _LARGEST = Fraction(sys.float_info.max)
 _SHOWN = 8  # names listed in a message
+_GAIN = "gain of a wire"
 _OUTSIDE = {"output": "input", "input": "output"}  # what serves a wire beside a block's port
 
 
@@ -148,16 +165,40 @@ class Connection:
 
     @property
     def kind(self) -> Kind:
-        """Rational when every block and every gain is, else floating."""
-        links = (*self.inner, *self.entering, *self.leaving, *self.through)
-        rational = all(block.kind is Kind.RATIONAL for block in self.blocks) and all(
-            isinstance(gain, Fraction) for _, _, gain in links
+        """Floating when a block or a gain is; else parametric when one is; else rational."""
+        kinds = {block.kind for block in self.blocks}
+        for _, _, gain in self._links():
+            if isinstance(gain, float):
+                kinds.add(Kind.FLOATING)
+            elif is_constant(gain):
+                kinds.add(Kind.PARAMETRIC)
+        return next(
+            (kind for kind in (Kind.FLOATING, Kind.PARAMETRIC) if kind in kinds), Kind.RATIONAL
         )
-        return Kind.RATIONAL if rational else Kind.FLOATING
+
+    def _links(self) -> tuple[Link, ...]:
+        return (*self.inner, *self.entering, *self.leaving, *self.through)
+
+    def placed(self) -> Iterator[tuple[str, Entry | Constant]]:
+        """Yield what a reading reads, with places; nothing of blocks that are all doubles."""
+        for name, block in zip(self.names, self.blocks, strict=True):
+            for where, entry in block._readable():
+                yield f"block {name}: {where}", entry
+        for _, _, gain in self._links():
+            yield _GAIN, gain
+
+    def floats(self) -> Iterator[float]:
+        """Yield the floats of all blocks and gains."""
+        for block in self.blocks:
+            yield from block._floats()
+        for _, _, gain in self._links():
+            if isinstance(gain, float):
+                yield gain
 
     def read(self, reading: Reading) -> Connection:
-        """Return the connection with every float of it read."""
-        return self._with([block.read(reading) for block in self.blocks], entry_reader(reading))
+        """Return the connection with every float of it read, and its constants kept."""
+        blocks = [block._with_floats_read(reading) for block in self.blocks]
+        return self._with(blocks, entry_reader(reading))
 
     def to_float(self) -> Connection:
         """Return the connection with blocks and gains in doubles."""
@@ -176,7 +217,11 @@ class Connection:
             through=_transposed(self.through),
         )
 
-    def _with(self, blocks: Iterable[Realization], gain: Callable[[Entry], Entry]) -> Connection:
+    def _with(
+        self,
+        blocks: Iterable[Realization],
+        gain: Callable[[Entry | Constant], Entry | Constant],
+    ) -> Connection:
         def links(given: tuple[Link, ...]) -> tuple[Link, ...]:
             return tuple((row, column, gain(entry)) for row, column, entry in given)
 
@@ -189,22 +234,52 @@ class Connection:
             through=links(self.through),
         )
 
+    def work(self) -> tuple[int, int]:
+        """Return how many products of numbers joining takes, and the size of the largest loop.
+
+        Counted on the patterns of zeros, without the blocks' own connections.
+        """
+        given = [[(M != 0).astype(float) for M in block.matrices()] for block in self.blocks]
+        _, B, C, D = (_beside([each[letter] for each in given], 0.0) for letter in range(4))
+        inputs, outputs = B.shape[1], len(C)
+        K = _pattern(self.inner, (inputs, outputs))
+        L = _pattern(self.entering, (inputs, self.input_count))
+        M = _pattern(self.leaving, (self.output_count, outputs))
+        direct = K @ D > 0.0
+        reach = _closure(direct)
+        circles = (reach & reach.T) & (direct.any(axis=1) & direct.any(axis=0))
+        largest = int(circles.sum(axis=0).max(initial=0))
+        driven = reach.astype(float) @ np.concatenate([K @ C, L], axis=1) > 0.0
+        # To the inputs of blocks; from there to the states, and to the outputs; and the loops.
+        products = K.sum(axis=0) @ (C.sum(axis=1) + D.sum(axis=1))
+        products += (B.sum(axis=0) + D.sum(axis=0)) @ driven.sum(axis=1)
+        products += M.sum() * driven.shape[1] + largest**2 * driven.shape[1]
+        return int(products), largest
+
     def join(self) -> Joined:
-        """Return the connection multiplied out, exactly if it is rational, else in doubles.
+        """Return the connection multiplied out, in doubles if it holds any, else exactly.
+
+        Irrational constants are multiplied out as expressions. Nothing is simplified; a number
+        made so must be known to be zero or not, by its decimals or by being expanded.
 
         Raises
         ------
         AlgebraicLoopError
             When an algebraic loop has no solution, or more than one.
         EntryError
-            When a number is too large for a double.
+            When a number is too large for a double; when one made of constants cannot be told
+            from zero.
+        LimitError
+            When an algebraic loop of more than `LARGEST_LOOP` signals holds constants.
         """
-        zero: Entry
-        if self.kind is Kind.RATIONAL:
-            zero, blocks = make_fraction(0, 1), self.blocks
-        else:
+        zero: Entry | Constant = make_fraction(0, 1)
+        blocks, kind = self.blocks, self.kind
+        if kind is Kind.FLOATING:
             zero, blocks = 0.0, tuple(map(_in_doubles, self.names, self.blocks))
-        given = [block.matrices() for block in blocks]
+        given: list[Sequence[Matrix]] = [block.matrices() for block in blocks]
+        if kind is Kind.PARAMETRIC:
+            zero = expression(zero)
+            given = [[_expressions(matrix) for matrix in matrices] for matrices in given]
         A, B, C, D = (_beside([each[letter] for each in given], zero) for letter in range(4))
         order, inputs, outputs = len(A), B.shape[1], len(C)
         K = _gains(self.inner, (inputs, outputs), zero)
@@ -222,6 +297,9 @@ class Connection:
                 _plus(N, _times(M, _times(D, from_inputs))),
             )
         for letter, matrix in zip("ABCD", matrices, strict=True):
+            if kind is Kind.PARAMETRIC:
+                # Two wires, or two blocks, may add up to a zero that is not written as one.
+                _decide(matrix, letter)
             _check_finite(matrix, letter)
         return Joined(matrices=matrices, loops=loops)
 
@@ -229,7 +307,9 @@ class Connection:
         self, K: Matrix, D: Matrix, right: Matrix
     ) -> tuple[Matrix, tuple[AlgebraicLoop, ...]]:
         """Return V with (I - K D) V = right, and the loops that had to be solved for it."""
-        direct, rational = _times(K, D), self.kind is Kind.RATIONAL
+        direct, exact = _times(K, D), self.kind is not Kind.FLOATING
+        if self.kind is Kind.PARAMETRIC:
+            _decide(direct, "gains from input to input")
         solution, loops = right.copy(), []
         for here in _components(direct != 0):
             around, others = direct[np.ix_(here, here)], direct[here]
@@ -237,11 +317,15 @@ class Connection:
             solution[here] += _times(others, solution)
             if not (around != 0).any():
                 continue
-            inverse = _inverse_beside_one(around)
+            ports = self._around(here, around != 0, K, D)
+            if self.kind is Kind.PARAMETRIC:
+                inverse = _expressions_inverse_beside_one(around, ports)
+            else:
+                inverse = _inverse_beside_one(around)
             margin = 0.0 if inverse is None else _margin(inverse, around)
-            found = AlgebraicLoop(ports=self._around(here, around != 0, K, D), margin=margin)
-            if inverse is None or (not rational and margin < UNIT_ROUNDOFF):
-                raise _ill_posed(found.ports, rational)
+            found = AlgebraicLoop(ports=ports, margin=margin)
+            if inverse is None or (not exact and margin < UNIT_ROUNDOFF):
+                raise _ill_posed(ports, exact)
             solution[here] = _times(inverse, solution[here])
             loops.append(found)
         return solution, tuple(loops)
@@ -303,8 +387,8 @@ def _transposed(links: tuple[Link, ...]) -> tuple[Link, ...]:
     return tuple((column, row, gain) for row, column, gain in links)
 
 
-def _ill_posed(ports: tuple[str, ...], rational: bool) -> AlgebraicLoopError:
-    within = "" if rational else "within the rounding of doubles "
+def _ill_posed(ports: tuple[str, ...], exact: bool) -> AlgebraicLoopError:
+    within = "" if exact else "within the rounding of doubles "
     return AlgebraicLoopError(
         f"the direct feedthroughs around {listed(ports)} form an algebraic loop that is "
         f"ill-posed: {within}its equations have no unique solution. Change a gain, or give a block "
@@ -320,15 +404,15 @@ def listed(names: Sequence[str]) -> str:
 
 
 # ---------------------------------------------------------------------------------------------
-# Arithmetic on arrays of doubles or of Fractions
+# Arithmetic on arrays of doubles, of Fractions, or of expressions
 # ---------------------------------------------------------------------------------------------
 
 
-def _full(shape: tuple[int, int], zero: Entry) -> Matrix:
+def _full(shape: tuple[int, int], zero: Entry | Constant) -> Matrix:
     return np.full(shape, zero, dtype=float if isinstance(zero, float) else object)
 
 
-def _beside(parts: Sequence[Matrix], zero: Entry) -> Matrix:
+def _beside(parts: Sequence[Matrix], zero: Entry | Constant) -> Matrix:
     """Return the block diagonal matrix of the parts."""
     rows, columns = (sum(part.shape[axis] for part in parts) for axis in (0, 1))
     result = _full((rows, columns), zero)
@@ -339,19 +423,33 @@ def _beside(parts: Sequence[Matrix], zero: Entry) -> Matrix:
     return result
 
 
-def _gains(links: Iterable[Link], shape: tuple[int, int], zero: Entry) -> Matrix:
+def _gains(links: Iterable[Link], shape: tuple[int, int], zero: Entry | Constant) -> Matrix:
     """Return the matrix of the links; those with one place are added exactly."""
-    sums: dict[tuple[int, int], Fraction] = {}
+    sums: dict[tuple[int, int], list[Entry | Constant]] = {}
     for row, column, gain in links:
-        sums[row, column] = sums.get((row, column), Fraction(0)) + Fraction(gain)
+        sums.setdefault((row, column), []).append(gain)
     result = _full(shape, zero)
-    for place, total in sums.items():
+    for place, gains in sums.items():
+        if any(map(is_constant, gains)):
+            total = decided(sum(map(expression, gains)), _GAIN)
+        else:
+            total = sum((Fraction(gain) for gain in gains), Fraction(0))
+            if not isinstance(zero, Fraction | float):
+                total = expression(total)
         result[place] = _rounded_gain(total) if isinstance(zero, float) else total
     return result
 
 
-def _rounded_gain(gain: Entry) -> float:
-    return gain if isinstance(gain, float) else round_fraction(gain, "gain of a wire")
+def _pattern(links: Iterable[Link], shape: tuple[int, int]) -> Matrix:
+    """Return ones where there are links."""
+    result = np.zeros(shape)
+    for row, column, _ in links:
+        result[row, column] = 1.0
+    return result
+
+
+def _rounded_gain(gain: Entry | Constant) -> float:
+    return round_entry(gain, _GAIN)
 
 
 def _times(left: Matrix, right: Matrix) -> Matrix:
@@ -359,6 +457,8 @@ def _times(left: Matrix, right: Matrix) -> Matrix:
     if left.dtype != object:
         product: Matrix = left @ right
         return product
+    if _holds_expressions(left) or _holds_expressions(right):
+        return _expressions_times(left, right)
     result = _full((len(left), right.shape[1]), make_fraction(0, 1))
     rows, within = (np.flatnonzero(left.any(axis=axis)) for axis in (1, 0))
     columns = np.flatnonzero(right[within].any(axis=0))
@@ -376,15 +476,20 @@ def _plus(left: Matrix, right: Matrix) -> Matrix:
     return result
 
 
-def _components(pattern: Matrix) -> Iterator[Matrix]:
-    """Yield the strongly connected components of row <- column, what they depend on first."""
-    reach = pattern | np.eye(len(pattern), dtype=bool)
+def _closure(pattern: Matrix) -> Matrix:
+    """Return which rows are reached from which columns, in any number of steps or none."""
+    reach: Matrix = pattern | np.eye(len(pattern), dtype=bool)
     while True:
         # Counting paths in doubles is far faster than boolean products, and as exact.
         further = reach.astype(float) @ reach.astype(float) > 0.0
         if (further == reach).all():
-            break
+            return reach
         reach = further
+
+
+def _components(pattern: Matrix) -> Iterator[Matrix]:
+    """Yield the strongly connected components of row <- column, what they depend on first."""
+    reach = _closure(pattern)
     # Whatever depends on something is reached from more places than that is, or from the same.
     sources = reach.sum(axis=1)
     done = np.zeros(len(pattern), dtype=bool)
@@ -410,6 +515,84 @@ def _inverse_beside_one(around: Matrix) -> Matrix | None:
         return _from_flint(_to_flint(difference).inv())
     except ZeroDivisionError:  # FLINT's word for singular
         return None
+
+
+def _expressions(matrix: Matrix) -> Matrix:
+    """Return an object array of Fractions and constants as expressions."""
+    return fraction_array(map(expression, matrix.flat), matrix.shape)
+
+
+def _holds_expressions(matrix: Matrix) -> bool:
+    return any(not isinstance(entry, Fraction | int) for entry in matrix.flat)
+
+
+def _expressions_times(left: Matrix, right: Matrix) -> Matrix:
+    """Return the product of two matrices of expressions, multiplied out and no more."""
+    import sympy
+
+    result = _full((len(left), right.shape[1]), sympy.Integer(0))
+    columns = [[(k, entry) for k, entry in enumerate(column) if entry] for column in right.T]
+    for i, row in enumerate(left):
+        for j, column in enumerate(columns):
+            result[i, j] = sympy.Add(*(row[k] * entry for k, entry in column if row[k]))
+    return result
+
+
+def _decide(matrix: Matrix, what: str) -> None:
+    """Replace what is zero by zero, in place; refuse what cannot be told from it.
+
+    Raises
+    ------
+    EntryError
+        Saying where, and what to do.
+    """
+    for (i, j), entry in np.ndenumerate(matrix):
+        try:
+            matrix[i, j] = decided(expression(entry), (what, i, j))
+        except EntryError as error:
+            raise EntryError(
+                f"connecting the blocks makes a number of which it cannot be told whether it is "
+                f"zero: {error.message}. Simplify the entries of the blocks first, or give "
+                "floats or fractions near them",
+                where=error.where,
+                found=error.found,
+            ) from None
+
+
+def _expressions_inverse_beside_one(around: Matrix, ports: tuple[str, ...]) -> Matrix | None:
+    """Return the inverse of I - around, by elimination; None when it is singular.
+
+    A pivot is a number known not to be zero by its decimals, and a column without one is known to
+    be zero; what cannot be told is refused.
+    """
+    import sympy
+
+    size = len(around)
+    if size > LARGEST_LOOP:
+        raise LimitError(
+            f"the algebraic loop around {listed(ports)} has {size} signals and holds irrational "
+            f"constants; at most {LARGEST_LOOP} are solved. Give floats or fractions near them",
+            what="signals of a loop with constants",
+            found=size,
+            limit=LARGEST_LOOP,
+        )
+    one = _expressions(np.array([[Fraction(i == j) for j in range(size)] for i in range(size)]))
+    table = np.concatenate([one - around, one], axis=1)
+    for column in range(size):
+        below = table[column:, column : column + 1]
+        _decide(below, f"the algebraic loop around {listed(ports)}")
+        pivot = next((i for i, (entry,) in enumerate(below, start=column) if entry), None)
+        if pivot is None:
+            return None
+        table[[column, pivot]] = table[[pivot, column]]
+        table[column] = table[column] / table[column, column]
+        for row in range(size):
+            if row != column and table[row, column]:
+                table[row] = table[row] - table[row, column] * table[column]
+                table[row, column] = sympy.Integer(0)
+    inverse: Matrix = table[:, size:]
+    _decide(inverse, f"the algebraic loop around {listed(ports)}")
+    return inverse
 
 
 def _to_flint(matrix: Matrix) -> fmpq_mat:
@@ -440,8 +623,16 @@ def _sizes(matrix: Matrix) -> Matrix:
     """Return absolute values in doubles, infinity where they are too large."""
     if matrix.dtype != object:
         return np.abs(matrix)
-    sizes = [math.inf if abs(entry) > _LARGEST else float(abs(entry)) for entry in matrix.flat]
-    return np.array(sizes).reshape(matrix.shape)
+    sizes = [abs(_rational_near(entry)) for entry in matrix.flat]
+    doubles = [math.inf if size > _LARGEST else float(size) for size in sizes]
+    return np.array(doubles).reshape(matrix.shape)
+
+
+def _rational_near(entry: Constant) -> Fraction:
+    """Return an exact entry, or a rational near an irrational one, near enough for a size."""
+    if is_constant(entry):
+        return constant_near(entry, 20)
+    return Fraction(int(entry.numerator), int(entry.denominator))
 
 
 def _check_finite(matrix: Matrix, letter: str) -> None:
@@ -481,7 +672,7 @@ def cascade(first: Realization, second: Realization) -> Realization:
     Returns
     -------
     Realization
-        Of order n + l, with m inputs and p outputs; rational when both are, else floating. It
+        Of order n + l, with m inputs and p outputs; of the kind that its blocks call for. It
         remembers its blocks, "first" and "second": see `Realization.read`.
 
     Raises
@@ -491,7 +682,8 @@ def cascade(first: Realization, second: Realization) -> Realization:
     SamplingPeriodError
         When the sampling periods differ.
     EntryError
-        When a number becomes too large for a double.
+        When a number becomes too large for a double, or one made of irrational constants cannot
+        be told from zero.
     UnsupportedEntryError
         When an argument is no Realization.
 
@@ -545,7 +737,7 @@ def sum_of(first: Realization, second: Realization) -> Realization:
     Returns
     -------
     Realization
-        Of order n + l, with m inputs and p outputs; rational when both are, else floating. It
+        Of order n + l, with m inputs and p outputs; of the kind that its blocks call for. It
         remembers its blocks, "first" and "second": see `Realization.read`.
 
     Raises
@@ -555,7 +747,8 @@ def sum_of(first: Realization, second: Realization) -> Realization:
     SamplingPeriodError
         When the sampling periods differ.
     EntryError
-        When a number becomes too large for a double.
+        When a number becomes too large for a double, or one made of irrational constants cannot
+        be told from zero.
     UnsupportedEntryError
         When an argument is no Realization.
 
@@ -608,8 +801,8 @@ def block_diagonal(first: Realization, second: Realization) -> Realization:
     Returns
     -------
     Realization
-        Of order n + l, with m + k inputs and p + q outputs; rational when both are, else
-        floating. It remembers its blocks, "first" and "second": see `Realization.read`.
+        Of order n + l, with m + k inputs and p + q outputs; of the kind that its
+        blocks call for. It remembers its blocks, "first" and "second": see `Realization.read`.
 
     Raises
     ------
@@ -671,7 +864,7 @@ def loop(plant: Realization, controller: Realization, *, feedback: str = "negati
     -------
     Realization
         Of order n + l, with p inputs, named as those of the controller, and p outputs, named as
-        those of the plant; rational when both are, else floating. It remembers its blocks,
+        those of the plant; of the kind that its blocks call for. It remembers its blocks,
         "plant" and "controller": see `Realization.read`.
 
     Raises
@@ -680,12 +873,15 @@ def loop(plant: Realization, controller: Realization, *, feedback: str = "negati
         When I + D Dc (I - D Dc for positive feedback) is singular, D being the feedthrough of the
         plant and Dc that of the controller; in doubles also when it is singular to within their
         rounding.
+    LimitError
+        When the loop has more than `LARGEST_LOOP` signals and holds irrational constants.
     ShapeError
         When inputs and outputs of the two do not fit.
     SamplingPeriodError
         When the sampling periods differ.
     EntryError
-        When a number becomes too large for a double.
+        When a number becomes too large for a double, or one made of irrational constants cannot
+        be told from zero.
     UnknownWordError
         When feedback is another word.
     UnsupportedEntryError
@@ -771,8 +967,8 @@ def assemble(
     Returns
     -------
     Realization
-        Its states are those of the blocks, in their order, called "block.state"; rational when
-        all blocks and gains are, else floating. It remembers its blocks: see `Realization.read`.
+        Its states are those of the blocks, in their order, called "block.state"; of the kind that
+        blocks and gains call for. It remembers its blocks: see `Realization.read`.
 
     Raises
     ------
@@ -782,8 +978,10 @@ def assemble(
         When direct feedthroughs run in a circle and have no unique solution; in doubles also when
         that is so to within their rounding.
     EntryError
-        When a name cannot serve, a gain is no finite number, or a number becomes too large for a
-        double.
+        When a name cannot serve, a gain is no finite number, a number becomes too large for a
+        double, or one made of irrational constants cannot be told from zero.
+    LimitError
+        When an algebraic loop of more than `LARGEST_LOOP` signals holds irrational constants.
     ShapeError
         When a wire has not two or three items.
     SamplingPeriodError
@@ -918,12 +1116,6 @@ def _check_blocks(blocks: Mapping[str, Realization]) -> Names:
                 where=name,
                 found=type(block).__name__,
             )
-        if block.kind not in (Kind.RATIONAL, Kind.FLOATING):
-            raise NotBuiltError(
-                f"{name}: connections of {block.kind} models are not built yet; give the entries "
-                "as rationals or floats",
-                feature=f"connections of {block.kind} models",
-            )
     return names
 
 
@@ -958,7 +1150,9 @@ def _check_outside(names: Sequence[str], argument: str, blocks: Names) -> Names:
     return checked
 
 
-def _check_wires(wires: Iterable[Sequence[Any]]) -> Iterator[tuple[str, str, str, Entry]]:
+def _check_wires(
+    wires: Iterable[Sequence[Any]],
+) -> Iterator[tuple[str, str, str, Entry | Constant]]:
     """Yield place, source, target and gain of each wire."""
     if isinstance(wires, str | Mapping) or not isinstance(wires, Iterable):
         raise UnsupportedEntryError(
@@ -994,7 +1188,8 @@ def _check_wires(wires: Iterable[Sequence[Any]]) -> Iterator[tuple[str, str, str
                 )
         source, target = wire[:2]
         place = f"{place} ({source!r} to {target!r})"
-        yield place, source, target, parse_entry(wire[2] if len(wire) == 3 else 1, place)
+        gain = parse_entry(wire[2] if len(wire) == 3 else 1, place, constants=True)
+        yield place, source, target, gain
 
 
 class _Ends:

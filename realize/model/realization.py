@@ -20,6 +20,7 @@ from realize.entries import (
     Constant,
     Entry,
     Kind,
+    Reading,
     fraction_array,
     is_constant,
     make_fraction,
@@ -289,6 +290,12 @@ class Realization(SystemModel):
             if period is self._sampling_period:
                 return self
             return self._like(self.matrices(), Kind.RATIONAL, period, connection)
+        return self._joined_or_read(word, Kind.RATIONAL, period, connection)._read_from(word, self)
+
+    def _joined_or_read(
+        self, word: Reading, kind: Kind, period: Period, connection: Connection | None
+    ) -> Realization:
+        """Return the model of a connection whose floats are read, or of own entries read here."""
         if connection is not None:
             matrices = connection.join().matrices
         else:
@@ -297,9 +304,23 @@ class Realization(SystemModel):
                 lambda matrix, _: fraction_array(
                     map(reader, matrix.ravel().tolist()), matrix.shape
                 ),
-                self._given or self.matrices(),
+                self._as_given(),
             )
-        return self._like(matrices, Kind.RATIONAL, period, connection)
+            if kind is Kind.PARAMETRIC:
+                matrices = _each(_expressions, matrices)
+        return self._like(matrices, kind, period, connection)
+
+    def _with_floats_read(self, word: Reading) -> Realization:
+        """Return the model with its floats read and its irrational constants kept.
+
+        Like `read`, and for models that hold constants a parametric model.
+        """
+        if not self._holds_constants():
+            return self.read(word)
+        if self._kind is Kind.PARAMETRIC:
+            return self
+        connection = None if self._connection is None else self._connection.read(word)
+        return self._joined_or_read(word, Kind.PARAMETRIC, self._period_read(word), connection)
 
     def to_float(self) -> Realization:
         """Return the model in doubles, each entry correctly rounded.
@@ -393,6 +414,17 @@ class Realization(SystemModel):
         for letter, matrix in zip(_LETTERS, self._as_given(), strict=True):
             for (i, j), entry in np.ndenumerate(matrix):
                 yield place_text((letter, i, j)), entry
+
+    def _readable(self) -> Iterator[tuple[str, Entry | Constant]]:
+        return self._placed() if self._connection is None else self._connection.placed()
+
+    def _floats(self) -> Iterator[float]:
+        """Yield the floats that a reading reads: of a connected model those of its blocks."""
+        if self._connection is not None:
+            yield from self._connection.floats()
+        elif self._kind is Kind.FLOATING:
+            for matrix in self._as_given():
+                yield from (x for x in matrix.ravel().tolist() if isinstance(x, float))
 
     def _body(self) -> dict[str, Any]:
         return {

@@ -18,11 +18,11 @@ from realize.entries import (
     Constant,
     Entry,
     Kind,
+    decided,
     fraction_array,
     is_constant,
     parse_entry,
     round_entry,
-    round_fraction,
 )
 from realize.errors import (
     EntryError,
@@ -54,7 +54,8 @@ Coefficients: TypeAlias = tuple[Any, ...]
 Table: TypeAlias = tuple[tuple[Coefficients, ...], ...]
 """A polynomial for each output and input: table[output][input]."""
 
-_Gaussian: TypeAlias = tuple[Fraction, Fraction]
+_Gaussian: TypeAlias = tuple[Any, Any]
+"""Real and imaginary part: Fractions, or expressions of sympy."""
 
 _ZERO = Fraction(0)
 
@@ -237,34 +238,37 @@ class TransferMatrix(SystemModel):
         Returns
         -------
         numpy.ndarray, shape (outputs, inputs)
-            Fractions for a rational model at a rational point. Else doubles, complex ones at a
-            complex point: the value of the stored coefficients at the stored point, correctly
-            rounded.
+            Fractions for a rational model at a rational point; expressions of sympy for a
+            parametric one, exact, not simplified. Else doubles, complex ones at a complex point:
+            the value of the stored coefficients at the stored point, correctly rounded.
 
         Raises
         ------
         EntryError
             At a pole of an entry; at a point that is not finite; where a value is too large for
-            a double.
+            a double. With irrational constants also where it cannot be told whether the point is
+            a pole, or whether a value to be rounded is zero.
         UnsupportedEntryError
-            A point that is not a number; a transfer matrix with irrational constants.
+            A point that is not a number.
 
         Notes
         -----
         Computed in rational arithmetic and rounded once, so that nothing overflows or cancels on
-        the way. Cost grows with the square of the degree.
+        the way. Cost grows with the square of the degree. Irrational constants are carried along
+        as expressions; see `realize.entries.decided` for when one counts as zero.
         """
-        self._refuse_constants(
-            "values are computed in rational arithmetic. Evaluate to_float(), or the transfer "
-            "matrix that realize.multiprecision.cancel returns"
-        )
         at, exact, is_complex = _parse_point(point)
         numerators, denominators = self._as_given()
+        constants = self._holds_constants()
+        if constants:
+            at = expression(at[0]), expression(at[1])
         values: list[_Gaussian] = []
         for row, column, numerator, denominator in _pairs(numerators, denominators):
+            where = _entry_text(row, column)
             below = _horner(denominator, at)
-            if below == (_ZERO, _ZERO):
-                where = _entry_text(row, column)
+            if constants:
+                below = _decided_denominator(below, where, point)
+            if not any(below):
                 raise EntryError(
                     f"{where}: the point {point!r} is a pole; evaluate next to it, or cancel "
                     "first if it is only a common factor",
@@ -275,10 +279,14 @@ class TransferMatrix(SystemModel):
         shape = (self.output_count, self.input_count)
         if exact and self._kind is Kind.RATIONAL:
             return fraction_array((real for real, _ in values), shape)
-        real = [round_fraction(part, "value") for part, _ in values]
+        if exact and self._kind is Kind.PARAMETRIC:
+            return fraction_array((expression(real) for real, _ in values), shape)
+        if constants:
+            values = [(decided(real, "value"), decided(other, "value")) for real, other in values]
+        real = [round_entry(part, "value") for part, _ in values]
         if not is_complex:
             return np.array(real, dtype=np.float64).reshape(shape)
-        imaginary = [round_fraction(part, "value") for _, part in values]
+        imaginary = [round_entry(part, "value") for _, part in values]
         return np.array(list(map(complex, real, imaginary)), dtype=np.complex128).reshape(shape)
 
     # Other models
@@ -320,7 +328,7 @@ class TransferMatrix(SystemModel):
                 return tuple(map(reader, polynomial))
 
             tables = _map(change, numerators), _map(change, denominators)
-        return self._like(*tables, Kind.RATIONAL, period)
+        return self._like(*tables, Kind.RATIONAL, period)._read_from(word, self)
 
     def to_float(self) -> TransferMatrix:
         """Return the transfer matrix in doubles, each coefficient correctly rounded.
@@ -724,14 +732,29 @@ def _parse_point(point: Any) -> tuple[_Gaussian, bool, bool]:
 
 def _horner(polynomial: Coefficients, point: _Gaussian) -> _Gaussian:
     x, y = point
-    real, imaginary = _ZERO, _ZERO
+    as_number = Fraction if isinstance(x, Fraction) else expression
+    real, imaginary = as_number(_ZERO), as_number(_ZERO)
     if not y:
         for entry in polynomial:
-            real = real * x + Fraction(entry)
+            real = real * x + as_number(entry)
         return real, imaginary
     for entry in polynomial:
-        real, imaginary = real * x - imaginary * y + Fraction(entry), real * y + imaginary * x
+        real, imaginary = real * x - imaginary * y + as_number(entry), real * y + imaginary * x
     return real, imaginary
+
+
+def _decided_denominator(below: _Gaussian, where: str, point: Any) -> _Gaussian:
+    """Return a value of a denominator made of constants, with zeros written as zeros."""
+    real, imaginary = below
+    try:
+        return decided(real, where), decided(imaginary, where)
+    except EntryError as error:
+        raise EntryError(
+            f"{where}: it cannot be told whether the point {point!r} is a pole: {error.message}. "
+            "Evaluate next to it, or evaluate to_float()",
+            where=where,
+            found=repr(point),
+        ) from None
 
 
 def _quotient(above: _Gaussian, below: _Gaussian) -> _Gaussian:

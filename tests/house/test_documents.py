@@ -68,18 +68,26 @@ def test_every_command_of_the_readme_runs(
 ) -> None:
     """With a file of its own for each FILE: no usage error, nothing on the error stream."""
     monkeypatch.chdir(tmp_path)
+    monkeypatch.syspath_prepend(str(tmp_path))
     realize.save(hidden_in_every_part(), "model.json")
+    reduction = realize.exact.minimal(hidden_in_every_part())
+    certificate = realize.certify(reduction)
+    Path("certificate.json").write_text(certificate.to_json(), "utf-8")
+    (tmp_path / "module.py").write_text("def function(A, B, C, D):\n    return len(A)\n", "utf-8")
     words = shlex.split(line)[1:]
-    targets = {"-o": "out.json"}
+    read = "certificate.json" if words[0] == "check" else "model.json"
+    stands_for = {"FILE": read, "MODULE:FUNCTION": "module:function"}
     arguments = [
-        targets.get(words[i - 1], "model.json") if word == "FILE" else word
+        "out.json" if words[i - 1] == "-o" else stands_for.get(word, word)
         for i, word in enumerate(words)
     ]
     done = click.testing.CliRunner().invoke(main, arguments)
     assert done.exit_code in (0, 1, 3, 4), done.output
     assert done.exception is None or isinstance(done.exception, SystemExit)
-    if "-o" in words:
-        assert realize.load("out.json") == realize.exact.minimal(hidden_in_every_part()).model
+    if words[0] == "minimal":
+        assert realize.load("out.json") == reduction.model
+    if words[0] == "certify":
+        assert realize.check(Path("out.json").read_text("utf-8")) == certificate.claim
 
 
 def test_the_readme_tells_of_every_command_and_only_of_options_there_are() -> None:

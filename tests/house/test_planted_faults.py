@@ -18,7 +18,7 @@ from realize.arithmetic.exact import ExactPath, verified
 from realize.arithmetic.modular import Profile
 from realize.arithmetic.rational import RationalMatrix
 from realize.examination import routes
-from tests.helpers import PARTS
+from tests.helpers import PARTS, markov_by_hand
 from tests.strategies import FACTORS, plant
 
 pytestmark = pytest.mark.filterwarnings("ignore::realize.HiddenInstabilityWarning")
@@ -212,3 +212,33 @@ def test_a_hidden_polynomial_that_does_not_divide_is_caught(
     monkeypatch.setattr(RationalMatrix, "characteristic_polynomial", wrong)
     with pytest.raises(errors.VerificationError):
         realize.examine(subject)
+
+
+@pytest.mark.parametrize("first", [2, 3, 5, 7, 11])
+def test_small_primes_do_not_decide_wrongly(first: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Equal and different models, with primes that lose ranks and divide denominators first."""
+    genuine = modular.primes
+    small = [prime for prime in (2, 3, 5, 7, 11, 13) if prime >= first]
+    monkeypatch.setattr(modular, "primes", lambda: itertools.chain(small, genuine()))
+    rng, different = np.random.default_rng(first), 0
+    for _ in range(15):
+        order = int(rng.integers(1, 4))
+        A, B = rng.integers(-3, 4, (order, order)), rng.integers(-3, 4, (order, 1))
+        C, T = rng.integers(-3, 4, (1, order)), np.eye(order, dtype=int)
+        T[0, -1] += order > 1
+        back = np.eye(order, dtype=int)
+        back[0, -1] -= order > 1
+        model = Realization(A, B, C)
+        other = back @ A @ T, back @ B, C @ T
+        found = realize.same_transfer(model, Realization(*other))
+        assert found
+        realize.check(realize.certify(found))
+        # Modulo each of the small primes this is the same model.
+        away = Realization(other[0], other[1], other[2] + 30030)
+        changed = realize.same_transfer(model, away)
+        parameters = [markov_by_hand(each, 2 * order + 1) for each in (model, away)]
+        equal = all(map(np.array_equal, *parameters))
+        assert bool(changed) == equal
+        different += not equal
+        realize.check(realize.certify(changed))
+    assert different > 5

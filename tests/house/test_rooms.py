@@ -40,7 +40,9 @@ def test_the_walk_sees_imports() -> None:
 
 def test_foreign_imports_are_declared() -> None:
     """Only the standard library and the declared dependencies are imported."""
-    allowed = {"realize", "numpy", "scipy", "sympy", "mpmath", "flint", "click", "rich"}
+    allowed = {"realize", "numpy", "scipy", "sympy", "mpmath", "flint"}
+    only_in = {"click": {"cli", "demo"}, "rich": {"cli", "demo"}}
+    only_in |= {"hypothesis": {"testing"}, "matplotlib": {"testing"}}
     foreign = set()
     for name, path in modules().items():
         for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
@@ -51,11 +53,11 @@ def test_foreign_imports_are_declared() -> None:
                 names = [node.module or ""]
             for found in names:
                 top = found.split(".")[0]
-                if top not in allowed and top not in sys.stdlib_module_names:
+                if top not in {*allowed, *only_in} and top not in sys.stdlib_module_names:
                     foreign.add((name, found))
                 if found.startswith("scipy.signal"):
                     foreign.add((name, found))
-                if top in ("click", "rich") and room(name) not in ("cli", "demo"):
+                if room(name) not in only_in.get(top, {room(name)}):
                     foreign.add((name, found))
     assert foreign == set()
 

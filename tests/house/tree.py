@@ -15,7 +15,7 @@ TESTS = Path(__file__).parent.parent
 #: The rooms from the ground up; a module belongs to the one that its first part names. "" is the
 #: package itself, the public names, which only what is made for people may use.
 ROOMS: tuple[tuple[str, ...], ...] = (
-    ("entries", "tolerance", "errors", "polynomials"),
+    ("entries", "tolerance", "errors", "polynomials", "checker"),
     ("model",),
     ("results", "stability", "uncertainty"),
     ("arithmetic",),
@@ -23,8 +23,9 @@ ROOMS: tuple[tuple[str, ...], ...] = (
     ("exact", "floating", "multiprecision", "dispatch"),
     ("convert",),
     ("within",),
-    ("examination",),
+    ("examination", "proof"),
     ("",),
+    ("testing",),
     ("cli", "demo", "__main__"),
 )
 FLOOR = {name: floor for floor, names in enumerate(ROOMS) for name in names}

@@ -15,7 +15,15 @@ from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 import realize
-from realize import Realization, TransferMatrix, errors, exact, floating, multiprecision
+from realize import (
+    Realization,
+    TransferMatrix,
+    errors,
+    exact,
+    examine,
+    floating,
+    multiprecision,
+)
 from realize.arithmetic.steps import precision_steps
 from tests.helpers import PARTS, product, times
 from tests.strategies import (
@@ -446,3 +454,55 @@ def test_results_are_the_same_after_pickling() -> None:
     assert back.removed == found.removed
     assert (back.state_map == found.state_map).all()
     assert pickle.loads(pickle.dumps(precision_steps(model))) == precision_steps(model)
+
+
+# --------------------------------------------------------------------------- examinations
+
+
+def told(modes: Any) -> list[tuple[str, float, float, int, str]]:
+    """Part, value, multiplicity and stability of modes, in an order that rounding does not turn.
+
+    On the boundary computed digits cannot tell what a proof can, so there the word is theirs.
+    """
+    return sorted(
+        (
+            str(mode.part),
+            round(mode.value.real, 9) + 0.0,
+            round(mode.value.imag, 9) + 0.0,
+            mode.multiplicity,
+            "cannot tell" if abs(mode.value.real) < 1e-9 else str(mode.stability),
+        )
+        for mode in modes
+    )
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_an_irrational_model_is_examined_as_the_rational_one_that_it_was(seed: int) -> None:
+    """Turned by an irrational angle nothing is hidden or shown anew: the proof is of the other."""
+    case = hidden_in_three_parts(seed)
+    found = examine(turned(case.model, seed, sympy.Integer(1)))
+    proved = examine(case.model)
+    assert (found.answer.basis, proved.answer.basis) == ("multiprecision", "given")
+    assert found.answer.order == proved.answer.order == case.dimensions[PARTS[1]]
+    assert found.precision_steps["given"].is_settled
+    assert told(found.hidden_modes) == told(proved.hidden_modes)
+    assert all(mode.why is not None for mode in found.hidden_modes)
+    for evident, known in (
+        (found.stabilizable, proved.stabilizable),
+        (found.detectable, proved.detectable),
+    ):
+        assert evident in (known, "cannot tell")
+
+
+@few
+@given(model=models)
+def test_without_time_the_evidence_is_what_would_be_proved(model: Realization) -> None:
+    """At budget 0 the order is the proved one, and a reason by pattern is so on both paths."""
+    found, proved = examine(model, budget=0), examine(model)
+    if "given" not in found.precision_steps:
+        assert model.order == 0
+        return
+    assert found.answer.order == proved.answer.order
+    assert {(str(m.part), m.why == "structural") for m in found.hidden_modes} == {
+        (str(m.part), m.why == "structural") for m in proved.hidden_modes
+    }

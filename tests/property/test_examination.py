@@ -214,7 +214,7 @@ def test_the_page_fits_and_says_the_order(model: Realization) -> None:
 
 
 @given(models)
-def test_without_time_the_floating_answer_is_given_and_says_so(model: Realization) -> None:
+def test_without_time_the_steps_answer_and_say_so(model: Realization) -> None:
     """A budget of zero: nothing is proved, and nothing claims to be."""
     found = examine(model, budget=0)
     if found.minimal_order:
@@ -222,8 +222,8 @@ def test_without_time_the_floating_answer_is_given_and_says_so(model: Realizatio
         assert model.order == 0
         return
     assert found.not_done
-    assert found.answer.basis == "floating"
-    assert found.answer.order == found.floating_order
+    assert found.answer.basis == "multiprecision"
+    assert found.answer.order == next(iter(found.precision_steps.values())).order
     assert found.paths_agree is False
     assert found.cutoff_ranges == {}
     assert found.routes == {}

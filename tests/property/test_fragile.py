@@ -47,3 +47,29 @@ def test_planted_fragile_models_are_called_fragile() -> None:
         if not examine(model).fragile:
             missed.append(seed)
     assert missed == []
+
+
+def test_a_lost_hidden_part_is_told_by_eigenvectors() -> None:
+    """200 states, 40 of them out of reach: the staircase loses them, without a small number."""
+    rng = np.random.default_rng(1)
+    order, kept = 200, 160
+    A, B, C = (rng.standard_normal(shape) for shape in ((order, order), (order, 1), (1, order)))
+    A[kept:, :kept] = 0.0
+    B[kept:] = 0.0
+    T = np.linalg.qr(rng.standard_normal((order, order)))[0]
+    found = examine(Realization(T @ A @ T.T, T @ B, C @ T.T), budget=0)
+    assert found.floating_order != kept
+    assert "eigenvectors show a nearly hidden mode" in " ".join(found.fragile)
+
+
+def test_stages_that_rounding_widened_are_no_alarm() -> None:
+    """Two outputs that see the same states: rounding makes two ranks of one, and no order moves."""
+    rng = np.random.default_rng(2)
+    T = np.linalg.qr(rng.standard_normal((4, 4)))[0]
+    A = np.diag([-1.0, -2.0, -3.0, -4.0])
+    C = np.array([[1.0, 1.0, 1.0, 1.0], [0.0, 0.0, 0.0, 0.0]])
+    C[1] = C[0] @ A
+    found = examine(Realization(T @ A @ T.T, T @ np.ones((4, 1)), C @ T.T))
+    assert found.cutoff_ranges["stored"] is None
+    assert found.floating_order == found.answer.order == 4
+    assert found.fragile == ()

@@ -534,6 +534,7 @@ FACTS: dict[str, dict[str, Any]] = {
     "PrecisionError": {"wanted": 1e-9, "reached": 1e-3},
     "VerificationError": {"identity": "A V = V A1"},
     "DisagreementError": {"answers": {"state": 3, "hankel": 2}},
+    "CertificateError": {"reason": "digest: that of claim and evidence is another"},
     "BudgetError": {"budget": 10.0, "spent": 11.0},
     "NotBuiltError": {"feature": "E"},
 }
@@ -556,6 +557,7 @@ BUILTINS: dict[str, type[Exception]] = {
     "PrecisionError": ArithmeticError,
     "VerificationError": ArithmeticError,
     "DisagreementError": ArithmeticError,
+    "CertificateError": ValueError,
     "BudgetError": RuntimeError,
     "NotBuiltError": NotImplementedError,
 }

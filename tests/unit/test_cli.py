@@ -300,6 +300,66 @@ def test_minimal_reports_in_json(file: Callable[[Any], str], tmp_path: Path) -> 
     assert floating["order"] == 1
 
 
+# --------------------------------------------------------------------------- certificates
+
+
+@pytest.mark.parametrize(
+    ("model", "arguments", "status"),
+    [
+        pytest.param(minimal_model, [], 0, id="nothing to remove"),
+        pytest.param(no_states, [], 0, id="no states"),
+        pytest.param(hidden_stable, [], 0, id="hidden and stable"),
+        pytest.param(hidden_growing, [], 4, id="hidden and growing"),
+        pytest.param(square_transfer, [], 0, id="transfer matrix"),
+        pytest.param(decimals, [], 0, id="floats"),
+        pytest.param(decimals, ["--reading", "stored"], 0, id="floats as stored"),
+    ],
+)
+def test_a_certificate_is_written_and_checked(
+    model: Callable[[], Any],
+    arguments: list[str],
+    status: int,
+    file: Callable[[Any], str],
+    tmp_path: Path,
+) -> None:
+    """What `certify` writes, `check` proves; with -o, to stdout, and from a stream."""
+    target = tmp_path / "certificate.json"
+    done = run("certify", file(model()), "-o", str(target), *arguments)
+    assert (done.exit_code, done.stdout) == (status, "")
+    assert ("caution: Hidden unstable mode" in done.stderr) == (status == 4)
+    text = target.read_text("ascii")
+    checked = run("check", str(target))
+    assert (checked.exit_code, checked.stderr) == (0, "")
+    assert checked.stdout == realize.check(text) + "\n"
+    assert json.loads(text)["digest"] in done.stderr
+    assert run("check", "-", text=text).stdout == checked.stdout
+    shown = run("certify", file(model()), *arguments)
+    assert json.loads(shown.stdout)["digest"] == json.loads(text)["digest"]
+
+
+@pytest.mark.parametrize("content", [b"", b"{}", b"\xff\xfe\x00", b'{"format":"realize-model"}'])
+def test_what_is_not_proved(content: bytes, tmp_path: Path) -> None:
+    """A file that is no certificate is status 1, with one line on stderr."""
+    name = tmp_path / "certificate.json"
+    name.write_bytes(content)
+    for done in (run("check", str(name)), run("check", "-", text=content)):
+        assert (done.exit_code, done.stdout) == (1, "")
+        assert done.stderr.startswith("realize: not proved: the certificate does not hold: ")
+        assert done.stderr.count("\n") == 1
+
+
+def test_a_floating_order_that_no_reading_confirms(
+    file: Callable[[Any], str], tmp_path: Path
+) -> None:
+    """Nothing is written, and the status is 1."""
+    model = Realization([[-1.0, 0.1 + 0.2], [1e-17, -2.0]], [[1.0], [1e-18]], [[1.0, 1.0]])
+    target = tmp_path / "certificate.json"
+    done = run("certify", file(model), "-o", str(target))
+    assert (done.exit_code, done.stdout) == (1, "")
+    assert "delivered order 1; the exact minimal order is 2 as stored" in done.stderr
+    assert not target.exists()
+
+
 # --------------------------------------------------------------------------- streams
 
 
@@ -406,7 +466,7 @@ def assert_refused(done: Any, words: str) -> None:
     assert "Traceback" not in done.stderr
 
 
-@pytest.mark.parametrize("command", ["examine", "minimal"])
+@pytest.mark.parametrize("command", ["examine", "minimal", "certify"])
 @pytest.mark.parametrize(("content", "words"), WRONG_FILES)
 def test_files_that_are_no_models(
     command: str, content: Any, words: str, file: Callable[[Any], str]
@@ -440,7 +500,7 @@ def test_a_stream_that_is_not_text() -> None:
     assert b"Traceback" not in done.stderr
 
 
-@pytest.mark.parametrize("command", ["examine", "minimal"])
+@pytest.mark.parametrize("command", ["examine", "minimal", "certify", "check"])
 def test_files_that_cannot_be_read(command: str, tmp_path: Path) -> None:
     """A missing file, and a directory."""
     assert_refused(run(command, str(tmp_path / "nothing.json")), "nothing.json")
@@ -556,9 +616,9 @@ def test_help_names_the_exit_statuses(arguments: list[str]) -> None:
 
 
 def test_commands_are_listed() -> None:
-    """The three commands, each with a sentence."""
+    """The commands, each with a sentence."""
     words = run("--help").stdout
-    for command in ("examine", "minimal", "demo"):
+    for command in ("examine", "minimal", "certify", "check", "demo"):
         assert re.search(rf"^  {command}  +\w.*\.$", words, re.MULTILINE)
 
 

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import copy
+import io
+import math
 import pickle
 import subprocess
 import sys
@@ -20,7 +22,7 @@ from realize import (
     AlgebraicLoopError,
     AlgebraicLoopWarning,
     EntryError,
-    NotBuiltError,
+    LimitError,
     Realization,
     RealizeError,
     SamplingPeriodError,
@@ -32,7 +34,9 @@ from realize import (
     block_diagonal,
     cascade,
     examine,
+    load,
     loop,
+    save,
     stability,
     sum_of,
 )
@@ -702,10 +706,88 @@ def test_unknown_feedback() -> None:
     assert caught.value.allowed == ("negative", "positive")
 
 
-def test_irrational_constants_are_not_connected_yet() -> None:
-    """A block with sqrt(2) is refused by name rather than rounded."""
-    with pytest.raises(NotBuiltError, match="second"):
-        cascade(lag(1), lag(sympy.sqrt(2)))
+# --------------------------------------------------------------------------- constants
+
+ROOT = sympy.sqrt(2)
+
+
+def test_irrational_constants_stay_what_they_are() -> None:
+    """In series nothing is rounded: the entries are the expressions that the formulas give."""
+    chain = cascade(lag(-1), Realization([[-ROOT]], [ROOT], [1], [[1 + ROOT]]))
+    assert chain.kind == "parametric"
+    assert chain.A.tolist() == [[-1, 0], [ROOT, -ROOT]]
+    assert chain.C.tolist() == [[1 + ROOT, 1]]
+    assert all(isinstance(entry, sympy.Expr) for M in chain.matrices() for entry in M.flat)
+    assert pickle.loads(pickle.dumps(chain)) == chain
+    assert chain.dual().dual() == chain
+    assert np.allclose(chain.to_float().A, [[-1, 0], [math.sqrt(2), -math.sqrt(2)]], rtol=1e-15)
+
+
+def test_an_irrational_gain_of_a_wire() -> None:
+    """A gain may be a constant, gains with one place add up, and what cancels is a zero."""
+    wires = [("u", "a", ROOT), ("u", "a", -ROOT), ("a", "y", 1 + ROOT), ("u", "y", sympy.pi)]
+    model = assemble({"a": lag(1)}, wires, inputs=["u"], outputs=["y"])
+    assert model.B.tolist() == [[0]]
+    assert model.C.tolist() == [[1 + ROOT]]
+    assert model.D.tolist() == [[sympy.pi]]
+    rounded = assemble({"a": lag(1.0)}, wires, inputs=["u"], outputs=["y"])
+    assert (rounded.kind, rounded.D[0, 0]) == ("floating", math.pi)
+
+
+def test_a_loop_of_constants_is_solved_exactly() -> None:
+    """sqrt(2) around itself: 2 / (1 + 2), and with three channels what doubles say."""
+    assert loop(gain(ROOT), gain(ROOT)).D.tolist() == [[sympy.Rational(2, 3)]]
+    table = [[sympy.sqrt(3 * i + j + 2) for j in range(3)] for i in range(3)]
+    closed = loop(Realization([], [], [], table), Realization([], [], [], np.eye(3, dtype=int)))
+    K = np.array(table, dtype=float)
+    assert np.allclose(closed.to_float().D, np.linalg.solve(np.eye(3) + K, K), rtol=1e-12)
+
+
+def test_an_ill_posed_loop_of_constants_is_named() -> None:
+    """1 - sqrt(2) / sqrt(2), written so that only multiplying out shows the zero."""
+    other = (1 + ROOT) / (ROOT + 2)
+    with pytest.raises(AlgebraicLoopError, match=r"plant\.u1.*ill-posed: its equations"):
+        loop(gain(ROOT), gain(1 / ROOT), feedback="positive")
+    with pytest.raises(EntryError, match=r"cannot be told whether it is zero.*row 1, column 1"):
+        loop(gain(ROOT), gain(other), feedback="positive")
+
+
+def test_a_nearly_ill_posed_loop_of_constants_warns() -> None:
+    """The margin is measured on decimals of the expressions."""
+    with pytest.warns(AlgebraicLoopWarning, match="by 5e-10"):
+        loop(gain(ROOT), gain((1 - F(1, 10**9)) / ROOT), feedback="positive")
+
+
+def test_what_cannot_be_told_from_zero_is_not_connected() -> None:
+    """cos^2 + sin^2 - 1 is no entry, and no entry is made of it; (1 + sqrt 2)^2 is multiplied out.
+
+    Nothing is simplified, so the sum of squares is refused; expanding decides the other.
+    """
+    c, s = sympy.cos(1), sympy.sin(1)
+    with pytest.raises(EntryError, match=r"D, row 1, column 1.*Simplify the entries"):
+        sum_of(cascade(gain(c), gain(c)), gain(s**2 - 1))
+    square = cascade(gain(1 + ROOT), gain(1 + ROOT))
+    assert sum_of(square, gain(-3 - 2 * ROOT)).D.tolist() == [[0]]
+
+
+def test_a_long_loop_of_constants_is_refused() -> None:
+    """Four channels make eight signals in one circle, whose expressions would grow for minutes."""
+    table = [[sympy.sqrt(4 * i + j + 2) for j in range(4)] for i in range(4)]
+    square = Realization([], [], [], table)
+    with pytest.raises(LimitError, match=r"has 8 signals.*at most 6"):
+        loop(square, square)
+
+
+def test_constants_beside_floats_are_kept_for_the_blocks_to_tell() -> None:
+    """The doubles are rounded; no reading is possible, and the block is named with the constant."""
+    mixed = cascade(lag(0.1), lag(-ROOT))
+    assert mixed.kind == "floating"
+    assert mixed.A[1, 1] == -math.sqrt(2)
+    with pytest.raises(UnsupportedEntryError, match=r"block second: A, row 1, column 1.*sqrt"):
+        mixed.read("written")
+    target = io.StringIO()
+    save(mixed, target)
+    assert load(io.StringIO(target.getvalue())).A.tolist() == mixed.A.tolist()
 
 
 def wired(*wires: Any, **changes: Any) -> Realization:

@@ -283,13 +283,49 @@ def test_a_model_file_is_never_an_expression() -> None:
 
 
 def test_what_stays_rational() -> None:
-    """A sampling period and a point are no constants; values are not computed from constants."""
+    """A sampling period and a point are no constants."""
     with pytest.raises(errors.SamplingPeriodError):
         Realization([[-1]], [1], [1], sampling_period=sympy.pi)
     with pytest.raises(errors.UnsupportedEntryError):
         TransferMatrix([1], [1, 2]).evaluate(ROOT)
-    with pytest.raises(errors.UnsupportedEntryError, match=r"coefficient 2.*to_float"):
-        transfer().evaluate(1)
+
+
+@pytest.mark.parametrize("point", [1, "1/3", F(-2, 7), 0])
+def test_values_of_constants_are_expressions_at_a_rational_point(point: Any) -> None:
+    """Exact: the value is the fraction of the polynomials there, and nothing is rounded."""
+    (value,) = transfer().evaluate(point).flat
+    assert isinstance(value, sympy.Expr)
+    at = sympy.Rational(str(F(point)))
+    assert sympy.simplify(value - (at + ROOT) / (at**2 + (3 + ROOT) * at + F(1, 2))) == 0
+
+
+@pytest.mark.parametrize(
+    "make", [transfer, lambda: TransferMatrix([1.0, ROOT], [1, 3 + ROOT, 0.5])]
+)
+@pytest.mark.parametrize("point", [0.1, -3.75, 0.1 + 2j, 1j])
+def test_values_of_constants_in_doubles(make: Callable[[], TransferMatrix], point: Any) -> None:
+    """At a float or complex point correctly rounded, beside floats too: 40 digits round alike."""
+    (value,) = make().evaluate(point).flat
+    with mpmath.workdps(40):
+        s = mpmath.mpmathify(point)
+        root = mpmath.sqrt(2)
+        expected = (s + root) / (s * s + (3 + root) * s + mpmath.mpf(1) / 2)
+        rounded = complex(float(mpmath.re(expected)), float(mpmath.im(expected)))
+    assert value == (rounded if isinstance(point, complex) else rounded.real)
+    assert type(value) in (np.float64, np.complex128)
+
+
+def test_poles_among_constants() -> None:
+    """A zero that multiplying out shows is a pole; one that nothing decides is said to be so."""
+    hidden = TransferMatrix([1], [(1 + ROOT) ** 2, -3 - 2 * ROOT])
+    with pytest.raises(errors.EntryError, match="the point 1 is a pole"):
+        hidden.evaluate(1)
+    open_one = TransferMatrix([1], [sympy.cos(1) ** 2, sympy.sin(1) ** 2 - 1])
+    with pytest.raises(errors.EntryError, match=r"cannot be told whether the point 1 is a pole"):
+        open_one.evaluate(1)
+    assert TransferMatrix([ROOT, -ROOT], [1, ROOT]).evaluate(1.0).tolist() == [[0.0]]
+    with pytest.raises(errors.EntryError, match=r"value: .* cannot be told from zero"):
+        TransferMatrix([sympy.cos(1) ** 2, sympy.sin(1) ** 2 - 1], [1, 1]).evaluate(1.0)
 
 
 def test_looks() -> None:

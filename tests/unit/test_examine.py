@@ -226,7 +226,7 @@ def test_a_minimal_model() -> None:
 def test_readings_asked_for(words: Any) -> None:
     """Only the readings named are examined, in the order named.
 
-    Where the only one named is `intended` it is the basis, for want of another.
+    Where the only one named is `intended` it does not lead all the same.
     """
     found = examine(chamber(), readings=words)
     known = examine(chamber()).minimal_order
@@ -235,7 +235,7 @@ def test_readings_asked_for(words: Any) -> None:
         assert list(fields) == list(words)
     assert found.minimal_order == {word: known[word] for word in words}
     assert found.readings_agree is (len(set(found.minimal_order.values())) == 1)
-    assert found.answer.basis in {*words, "nearest"}
+    assert found.answer.basis in {*words, "nearest"} - {"intended"}
 
 
 def test_intended_never_leads() -> None:
@@ -739,8 +739,11 @@ def test_a_gain_is_minimal() -> None:
 # --------------------------------------------------------------------------- budget
 
 
-def test_without_time_the_answer_is_the_floating_one() -> None:
-    """Budget 0: nothing is proved, every reading is named with the reason, status 3."""
+def test_without_time_for_any_steps_the_answer_is_the_floating_one(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """No time at all: nothing is proved, every reading is named with the reason, status 3."""
+    monkeypatch.setattr(sys.modules["realize.examination.examine"], "STEPS_BUDGET", 0.0)
     found = examine(chamber(), budget=0)
     assert found.answer.basis == "floating"
     assert found.answer.order == found.floating_order == 1
@@ -749,9 +752,12 @@ def test_without_time_the_answer_is_the_floating_one() -> None:
     assert found.routes == {}
     assert found.nearest is None
     assert found.paths_agree is False
-    for reading, text in zip(READINGS, found.not_done, strict=True):
-        assert reading in text
+    missed = [f"did not run as {word}" for word in READINGS]
+    missed += [f"no steps of precision as {word}" for word in READINGS[:2]]
+    for start, text in zip(missed, found.not_done, strict=True):
+        assert start in text
         assert "budget" in text
+    assert found.precision_steps == {}
     assert found.status == 3
     assert "nothing is proved" in found.verdict
     assert [mode.value for mode in found.hidden_modes] == pytest.approx([-0.1])
@@ -762,9 +768,9 @@ def test_without_time_the_answer_is_the_floating_one() -> None:
 
 
 def test_without_time_danger_still_outranks_doubt() -> None:
-    """A growing hidden mode found in floats alone is named, and the status is 4."""
+    """A growing hidden mode that nothing proves is named, and the status is 4."""
     found = examine(diagonal(-1.0, 0.25, B=[1, 0]), budget=0)
-    assert found.answer.basis == "floating"
+    assert found.answer.basis == "multiprecision"
     assert found.status == 4
     assert found.stabilizable == "no"
     assert "unstable" in found.cautions[0]
@@ -792,8 +798,12 @@ def test_a_model_too_large_for_the_budget() -> None:
     found = examine(model, budget=0.01)
     assert time.perf_counter() - began < 30
     assert (found.answer.basis, found.answer.order, found.status) == ("floating", size, 3)
-    assert len(found.not_done) == 3
-    assert all("0.01 s" in text for text in found.not_done)
+    missed, steps = found.not_done[:3], found.not_done[3:]
+    assert all("0.01 s" in text for text in missed)
+    assert len(steps) == 2
+    for word, text in zip(("stored", "written"), steps, strict=True):
+        assert re.search(rf"no steps of precision as {word}.*budget of 5 s", text)
+    assert found.precision_steps == {}
     assert max(map(len, str(found).splitlines())) <= 80
 
 
@@ -824,10 +834,16 @@ def test_time_may_run_out_anywhere(name: str, monkeypatch: pytest.MonkeyPatch) -
         plain(found)
         assert str(found)
         done = list(found.minimal_order)
-        assert done + [w for w in words if any(w in text for text in found.not_done)] == words
+        named = [w for w in words if any(w in text for text in found.not_done)]
+        assert done + [w for w in named if w not in done] == words
         assert all(found.minimal_order[word] == whole.minimal_order[word] for word in done)
-        assert all(found.hidden_parts[word] == whole.hidden_parts[word] for word in done)
-        assert (found.answer.basis == "floating") is (not done)
+        # An order may be proved in time, and the polynomials of what it hides not be.
+        parts = found.hidden_parts
+        unnamed = [word for word in done if not parts[word] and whole.hidden_parts[word]]
+        assert set(unnamed) <= set(named)
+        assert all(parts[w] == whole.hidden_parts[w] for w in done if w not in unnamed)
+        proved = any(word != "intended" for word in done)
+        assert (found.answer.basis in ("floating", "multiprecision")) is (not proved)
         if done == words and found.answer == whole.answer:
             complete = True
             break
@@ -857,7 +873,7 @@ KEYS = {
     "format", "version", "model", "order", "inputs", "outputs", "minimal_order", "floating_order",
     "unscaled_order", "paths_agree", "readings_agree", "answer", "verdict", "stabilizable",
     "detectable", "nearest", "parts", "modes", "decisions", "cutoff_ranges", "conflicts",
-    "response_change", "routes", "fragile",
+    "response_change", "routes", "fragile", "precision_steps",
     "uncertainty", "within_uncertainty", "weighed", "witness", "alike", "cautions", "not_done",
     "seconds", "environment", "digest",
 }  # fmt: skip

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import sys
 from fractions import Fraction
 
 import pytest
@@ -19,6 +20,8 @@ from realize import (
     loop,
     sum_of,
 )
+from realize.errors import BudgetError
+from realize.examination.pairing import ExactAnswer
 from realize.stability import (
     HIDDEN_IS_RELATIVE,
     NEARLY_ILL_POSED_LOOP,
@@ -27,6 +30,7 @@ from realize.stability import (
 )
 
 F = Fraction
+ROOM = sys.modules["realize.examination.examine"]
 
 
 def fraction(numerator: list[object], denominator: list[object]) -> Realization:
@@ -228,12 +232,15 @@ def test_the_page_says_what_it_took() -> None:
 
 
 @pytest.mark.parametrize("side", ["input", "output"])
-def test_the_pattern_tells_without_the_exact_path(side: str) -> None:
+def test_the_pattern_tells_without_the_exact_path(
+    side: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
     """With no time for the exact path, modes of states cut off are still told as structural."""
     rows = [[-1.0, 0.0, 0.0, 0.0], [1.0, -2.0, 0.0, 0.0], [0.0, 0.0, 0.5, 0.0], [0, 0, 1, -0.25]]
     model = Realization(rows, [1.0, 0.0, 0.0, 0.0], [0.0, 1.0, 0.0, 1.0])
     if side == "output":
         model = model.dual()
+    monkeypatch.setattr(ROOM, "STEPS_BUDGET", 0.0)
     found = examine(model, budget=0)
     assert found.answer.basis == "floating"
     values = sorted(mode.value.real for mode in found.hidden_modes)
@@ -242,12 +249,13 @@ def test_the_pattern_tells_without_the_exact_path(side: str) -> None:
     assert ": structural." in " ".join(str(found).split())
 
 
-def test_the_pattern_does_not_tell_what_values_hide() -> None:
+def test_the_pattern_does_not_tell_what_values_hide(monkeypatch: pytest.MonkeyPatch) -> None:
     """Two equal lags on one input: every state is joined to it, so nothing is structural."""
+    monkeypatch.setattr(ROOM, "STEPS_BUDGET", 0.0)
     model = Realization([[-1.0, 0.0], [0.0, -1.0]], [1.0, 1.0], [1.0, 2.0])
     found = examine(model, budget=0)
     assert [mode.why for mode in found.hidden_modes] == [None]
-    assert "not told, because the exact path did not run" in " ".join(str(found).split())
+    assert "not told, because no exact polynomial stands behind it" in " ".join(str(found).split())
     # And a copy that is cut off does not make the other one structural.
     three = Realization(
         [[-1.0, 0.0, 0.0], [0.0, -1.0, 0.0], [0.0, 0.0, -1.0]], [1.0, 1.0, 0.0], [1.0, 2.0, 3.0]
@@ -262,3 +270,27 @@ def test_modes_with_one_reason_share_it() -> None:
     )
     words = " ".join(str(examine(model)).split())
     assert "Why -5, -4, -3, -2 and 1 more: structural. Basis" in words
+
+
+def test_a_proved_order_stands_without_the_polynomials(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Where time is left for the order only, the floating path names what is hidden."""
+
+    def out_of_time(_: ExactAnswer) -> None:
+        raise BudgetError("no time for a characteristic polynomial", budget=1.0)
+
+    rows = [[-1.0, 0.0, 0.0], [0.0, -1.0, 0.0], [0.0, 0.0, 0.5]]
+    model = Realization(rows, [1.0, 1.0, 0.0], [1.0, 2.0, 1.0])
+    whole = examine(model)
+    monkeypatch.setattr(ExactAnswer, "find_hidden", out_of_time)
+    found = examine(model)
+    assert found.answer == whole.answer
+    assert found.minimal_order == whole.minimal_order
+    assert found.cutoff_ranges == whole.cutoff_ranges
+    assert found.hidden_parts == {"stored": {}, "written": {}, "intended": {}}
+    assert [round(mode.value.real, 9) for mode in found.hidden_modes] == [-1.0, 0.5]
+    assert found.stabilizable == "no"
+    assert found.status == 4
+    assert "not computed within the budget" in str(found)
+    assert any("named by the floating path" in text for text in found.not_done)
+    told = list(found.to_dict()["parts"]["stored"].values())
+    assert told.count(None) == 3  # all but what shows
