@@ -39,6 +39,7 @@ from realize.results import Mode, Reduction, spelled
 from realize.stability import Stability, hidden_cautions
 from realize.testing.problems import DIFFICULTIES, families
 from realize.testing.scoring import check_picture_name, load_routine, score
+from realize.uncertainty import Rounding, Uncertainty
 
 __all__ = ["main"]
 
@@ -136,11 +137,18 @@ def _print_page(text: str) -> None:
 )
 @click.option("--tolerance", type=float, help="For the floating path; default order * 2^-32.")
 @click.option(
+    "--uncertainty",
+    metavar="HOW",
+    help="How far each entry of A, B and C may lie from the number given: a number, relative; "
+    '"ulp"; or "last digit".',
+)
+@click.option(
     "--budget",
     type=click.FloatRange(min=0),
     default=DEFAULT_BUDGET,
     show_default=True,
-    help="Seconds that the exact path may take, and as many for steps of precision without it.",
+    help="Seconds that the exact path may take, as many for steps of precision without it, and as "
+    "many for the uncertainty.",
 )
 @click.option(
     "--against",
@@ -152,6 +160,7 @@ def examine_command(
     file: str,
     readings: tuple[str, ...],
     tolerance: float | None,
+    uncertainty: str | None,
     budget: float,
     against: str | None,
     as_json: bool,
@@ -162,7 +171,13 @@ def examine_command(
         with open(against, encoding="utf-8") as stream:
             recorded = read_record(stream)
     model = as_realization(_read(file))
-    examination = examine(model, readings=readings or None, tolerance=tolerance, budget=budget)
+    examination = examine(
+        model,
+        readings=readings or None,
+        tolerance=tolerance,
+        uncertainty=None if uncertainty is None else _uncertainty(uncertainty),
+        budget=budget,
+    )
     if recorded is not None:
         sys.exit(_compare(recorded, examination, as_json))
     if as_json:
@@ -170,6 +185,13 @@ def examine_command(
     else:
         _print_page(page(examination, "" if file == "-" else Path(file).stem))
     sys.exit(examination.status)
+
+
+def _uncertainty(text: str) -> Uncertainty:
+    """Return what the option means: one of the words, or a number."""
+    if text in tuple(Rounding):
+        return Uncertainty(rounding=Rounding(text))
+    return Uncertainty(relative=text)
 
 
 def _compare(recorded: dict[str, Any], examination: Examination, as_json: bool) -> int:

@@ -171,6 +171,10 @@ class Mode:
     inputs, outputs : tuple of str, or None
         Names of the inputs that reach the mode and of the outputs that see it, each taken alone;
         None where that was not computed.
+    sensitivity : float or None
+        In an examination: how far the uncertainty of the entries of A, or one ulp of each where
+        none was given, can move the value, to first order; inf where nothing of first order
+        bounds it (units: 1 / time; none in discrete time).
     """
 
     value: complex
@@ -186,6 +190,7 @@ class Mode:
     lost: str | None = None
     inputs: tuple[str, ...] | None = None
     outputs: tuple[str, ...] | None = None
+    sensitivity: float | None = None
 
     @property
     def doubling_time(self) -> float | None:
@@ -211,6 +216,7 @@ class Mode:
             "lost": self.lost,
             "inputs": None if self.inputs is None else list(self.inputs),
             "outputs": None if self.outputs is None else list(self.outputs),
+            "sensitivity": self.sensitivity if self.sensitivity != float("inf") else None,
         }
 
 

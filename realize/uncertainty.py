@@ -180,6 +180,21 @@ class Uncertainty:
         if spread:
             _settle(self, "confidence", _confidence(self.confidence))
 
+    def __str__(self) -> str:
+        shown = []
+        for name in ("relative", "absolute", "standard_deviation"):
+            figure = getattr(self, name)
+            if figure is not None:
+                text = "by matrix" if isinstance(figure, dict) else f"{float(figure):.6g}"
+                shown.append(f"{name.replace('_', ' ')} {text}")
+        if self.covariance is not None:
+            shown.append("covariance")
+        if self.confidence is not None:
+            shown.append(f"confidence {float(self.confidence):.6g}")
+        if self.rounding is not None:
+            shown.append(f"rounding {self.rounding}")
+        return ", ".join(shown)
+
     @property
     def is_spread(self) -> bool:
         """Whether it is given by standard deviations or a covariance, and not by bounds."""

@@ -24,6 +24,7 @@ _PLAIN: Final = (
     "paths_agree",
     "readings_agree",
     "answer",
+    "within_uncertainty",
     "stabilizable",
     "detectable",
     "routes",

@@ -1,19 +1,21 @@
-"""Stability that the accuracy of the data cannot tell."""
+"""How far the accuracy of the data moves a mode, and what cannot be told for it."""
 
 from __future__ import annotations
 
 import math
 from collections.abc import Iterable
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from typing import Any, Final
 
 import numpy as np
 import scipy.linalg
 
+from realize.errors import EntryError
 from realize.model.realization import Kind, Realization
 from realize.results import Mode
 from realize.stability import Stability, root_counts
 from realize.tolerance import UNIT_ROUNDOFF, rounding_floor
+from realize.within.box import in_doubles
 
 __all__ = ["with_doubt"]
 
@@ -23,48 +25,90 @@ _ALLOWANCE: Final = 2.0
 """Factor on a first-order bound."""
 
 
-def with_doubt(modes: Iterable[Mode], model: Realization, basis: str) -> tuple[Mode, ...]:
-    """Return modes, with "cannot tell" where the data reach across the boundary of stability.
+def with_doubt(
+    modes: Iterable[Mode],
+    model: Realization,
+    basis: str,
+    radii: Array | None = None,
+    exactly: bool = True,
+) -> tuple[Mode, ...]:
+    """Return modes with their sensitivity, and "cannot tell" where the data cannot tell.
 
-    The exact verdict is about one exact model. A model with floats stands for all within the
-    accuracy of its data: half a unit in the last place of each entry when its own reading leads,
-    the rounding floor of the whole when a nearby model does. A mode that lies off the boundary
-    by less than that can move it has no sign. A mode exactly on the boundary keeps its verdict:
-    that is structure, not noise. Rational models have no such doubt.
+    ``radii``: how far each entry of A may lie from the number given; None where no uncertainty
+    was given, and then an entry is good to one ulp. ``exactly``: the modes are more than computed
+    in doubles; others had their doubt when they were computed.
+
+    The exact verdict on stability is about one exact model. A model with floats stands for all
+    within the accuracy of its data: the uncertainty, where one was given; half a unit in the last
+    place of each entry when its own reading leads; the rounding floor of the whole when a nearby
+    model does. A mode that lies off the boundary by less than that can move it has no sign. A
+    mode exactly on the boundary keeps its verdict: that is structure, not noise. Rational models
+    have such doubt only where an uncertainty was given.
 
     Notes
     -----
     First-order bound |y|' E |x| / |y' x| for the change of an eigenvalue with left and right
-    vectors y and x (Stewart and Sun, Matrix Perturbation Theory, section IV.2), and never more
-    than the square root that a double eigenvalue moves by.
+    vectors y and x (Stewart and Sun, Matrix Perturbation Theory, section IV.2), and for the
+    doubt never more than the square root that a double eigenvalue moves by.
     """
     found = tuple(modes)
-    doubtful = (Stability.STABLE, Stability.UNSTABLE)
-    if model.kind != Kind.FLOATING or not any(mode.stability in doubtful for mode in found):
+    if not found:
+        return found
+    try:
+        A = in_doubles(model.A)
+    except EntryError:
+        # Entries beyond doubles: no mode of theirs can be followed in doubles.
         return found
     period = model.sampling_period
-    # In a unit of time that keeps squares within doubles; the boundary |z| = 1 has none to choose.
-    largest_entry = float(np.abs(model.A).max(initial=0.0))
-    shift = max(math.frexp(largest_entry)[1], -1000) if period is None else 0
-    A = np.ldexp(model.A, -shift)
+    # In a unit that keeps squares within doubles.
+    shift = max(math.frexp(float(np.abs(A).max(initial=0.0)))[1], -1000)
+    A = np.ldexp(A, -shift)
     unit = math.ldexp(1.0, -shift)
+    data = UNIT_ROUNDOFF * np.abs(A) if radii is None else np.ldexp(in_doubles(radii), -shift)
     norm = float(np.linalg.norm(A))
-    if basis == "nearest":
-        accuracy = np.full(A.shape, rounding_floor(model.order, norm) / model.order)
-    else:
-        accuracy = UNIT_ROUNDOFF * np.abs(A)
-    values, left, right = scipy.linalg.eig(A, left=True, right=True)
-    largest = _ALLOWANCE * math.sqrt(float(np.linalg.norm(accuracy)) * norm)
+    spectrum = _Spectrum(*scipy.linalg.eig(A, left=True, right=True))
+    found = tuple(
+        replace(mode, sensitivity=_unscaled(spectrum.reach(mode.value * unit, data), shift))
+        for mode in found
+    )
+    if not exactly or (model.kind is not Kind.FLOATING and radii is None):
+        return found
+    if radii is None and basis == "nearest":
+        data = np.full(A.shape, rounding_floor(model.order, norm) / model.order)
+    largest = _ALLOWANCE * math.sqrt(float(np.linalg.norm(data)) * norm)
     return tuple(
         replace(mode, stability=Stability.CANNOT_TELL)
-        if mode.stability in doubtful
+        if mode.stability in (Stability.STABLE, Stability.UNSTABLE)
         and not _on_boundary(mode, period)
-        and abs(_margin(mode.value * unit, period)) <= largest
-        and abs(_margin(mode.value * unit, period))
-        <= _reach(mode.value * unit, values, left, right, accuracy)
+        and abs(_margin(mode.value, period)) * unit
+        <= min(largest, _ALLOWANCE * spectrum.reach(mode.value * unit, data))
         else mode
         for mode in found
     )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Spectrum:
+    """Eigenvalues with left and right vectors."""
+
+    values: Array
+    left: Array
+    right: Array
+
+    def reach(self, value: complex, data: Array) -> float:
+        """Return how far the data can move the computed eigenvalue nearest to a value."""
+        k = int(np.abs(self.values - value).argmin())
+        y, x = np.abs(self.left[:, k]), np.abs(self.right[:, k])
+        overlap = abs(np.vdot(self.left[:, k], self.right[:, k]))
+        change = float(y @ data @ x)
+        return math.inf if overlap * 1e300 <= change else change / overlap
+
+
+def _unscaled(size: float, shift: int) -> float:
+    try:
+        return math.ldexp(size, shift)
+    except OverflowError:
+        return math.inf
 
 
 def _margin(value: complex, period: Any) -> float:
@@ -75,12 +119,3 @@ def _margin(value: complex, period: Any) -> float:
 def _on_boundary(mode: Mode, period: Any) -> bool:
     """Whether the mode, an exact root, lies exactly on the boundary: counted, not computed."""
     return mode.polynomial is not None and root_counts(mode.polynomial, period).boundary > 0
-
-
-def _reach(value: complex, values: Array, left: Array, right: Array, accuracy: Array) -> float:
-    """Return how far the accuracy of the data can move the computed eigenvalue nearest a mode."""
-    k = int(np.abs(values - value).argmin())
-    y, x = np.abs(left[:, k]), np.abs(right[:, k])
-    overlap = abs(np.vdot(left[:, k], right[:, k]))
-    change = _ALLOWANCE * float(y @ accuracy @ x)
-    return math.inf if overlap * 1e300 <= change else change / overlap

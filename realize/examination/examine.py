@@ -18,11 +18,12 @@ from realize.errors import (
     BudgetError,
     EntryError,
     LimitError,
-    NotBuiltError,
     PrecisionError,
     UnknownWordError,
     UnsupportedEntryError,
 )
+from realize.examination.accuracy import Settled, settle
+from realize.examination.alike import alike
 from realize.examination.doubt import with_doubt
 from realize.examination.eigenvectors import Eigenvectors
 from realize.examination.lost import with_loss
@@ -38,6 +39,9 @@ from realize.model.realization import Kind, Realization
 from realize.polynomials import Polynomial
 from realize.results import Deferred, Mode, Part, RankDecision
 from realize.tolerance import check_tolerance, rounding_floor
+from realize.uncertainty import Uncertainty, as_uncertainty
+from realize.within.box import Box
+from realize.within.weigh import Weighed, Within
 
 __all__ = ["DEFAULT_BUDGET", "examine"]
 
@@ -85,7 +89,7 @@ def examine(
     *,
     readings: Iterable[str] | None = None,
     tolerance: float | None = None,
-    uncertainty: None = None,
+    uncertainty: Uncertainty | float | str | None = None,
     budget: float | None = DEFAULT_BUDGET,
 ) -> Examination:
     """Examine a model on both paths: which modes are hidden, and how much is the tolerance's doing.
@@ -99,8 +103,10 @@ def examine(
     tolerance : float, keyword-only
         For the floating path: the cutoff is this times the Frobenius norm of the scaled model.
         None for the default, order * 2**-32.
-    uncertainty : None, keyword-only
-        Kept for data with an uncertainty, which are not built yet.
+    uncertainty : number, "ulp", "last digit", Uncertainty or None, keyword-only
+        How far each entry may lie from the number given; a number is relative, and zeros stay
+        zero. Then the answer is the lowest order found within it, and `within_uncertainty` says
+        whether every model within it is minimal. This may take as long as the exact path.
     budget : float or None, keyword-only
         Seconds that the exact path may take; None for no limit. When they do not suffice for any
         reading that may lead, and for irrational constants, the answer is that of steps of
@@ -116,10 +122,10 @@ def examine(
     ------
     DisagreementError
         When the three routes to the minimal order differ, which would be a bug.
-    NotBuiltError
-        For any uncertainty but None.
     PrecisionError
         When no path has an answer.
+    UncertaintyError
+        When the uncertainty is negative, or does not have the shapes of the model.
     UnknownWordError
         For an unknown reading, or one that does not fit the model.
 
@@ -139,10 +145,8 @@ def examine(
     [((-2+0j), 'uncontrollable, observable')]
     """
     accept(model, Realization)
-    if uncertainty is not None:
-        raise NotBuiltError(
-            "examine takes no uncertainty yet; leave it at None", feature="uncertainty"
-        )
+    given = as_uncertainty(uncertainty)
+    box = None if given is None else Box.of(model, given)
     words = _readings_of(model, readings)
     tolerance = check_tolerance(tolerance)
     _check_budget(budget)
@@ -159,17 +163,31 @@ def examine(
     found = _answered(model, words, exact, floating, budget, not_done)
     if found.stepped:
         seconds["multiprecision"] = time.perf_counter() - began
+    weighed = None
+    if box is not None:
+        began = time.perf_counter()
+        settled = settle(box, model, exact, found.nearest, budget, not_done)
+        seconds["uncertainty"] = time.perf_counter() - began
+        found, weighed = _within(found, settled), settled.weighed
     answer, about = found.answer, found.about
+    radii = None if box is None else box.radii
 
-    def hidden() -> tuple[Mode, ...]:
+    def of_data(modes: tuple[Mode, ...], exactly: bool) -> tuple[Mode, ...]:
+        return with_doubt(modes, model, found.word, None if radii is None else radii.A, exactly)
+
+    def hidden_ones() -> tuple[Mode, ...]:
         if about is None:
-            modes = by_pattern(floating.hidden_modes(), model)
+            # Where the exact path did not run, all may still be proved to show.
+            shows = answer.basis != "floating"
+            modes = () if shows else by_pattern(floating.hidden_modes(), model)
         elif isinstance(about, ExactAnswer) and about.hidden is None:
             modes = by_pattern(floating.hidden_modes(about.stairs), model)
         else:
-            modes = with_doubt(about.hidden_modes(), model, found.word)
-        return with_loss(modes, model, answer.basis, budget)
+            return with_loss(of_data(about.hidden_modes(), True), model, answer.basis, budget)
+        return with_loss(of_data(modes, False), model, answer.basis, budget)
 
+    hidden = Deferred(hidden_ones)
+    visible = Deferred(lambda: of_data(*_visible_modes(about, floating, budget, model)))
     connection = model._connection
     stairs = {word: each.stairs for word, each in exact.items()}
     return Examination(
@@ -181,7 +199,7 @@ def examine(
         paths_agree=floating.order in orders.values(),
         readings_agree=len(set(orders.values())) == 1,
         answer=answer,
-        verdict=_verdict(model.order, found, orders, floating.order),
+        verdict=_verdict(model.order, found, orders, floating.order, weighed),
         nearest=found.nearest,
         cutoff_ranges={
             word: None if replay is None else replay.interval for word, replay in replays.items()
@@ -195,9 +213,18 @@ def examine(
         peak_memory=peak_memory(),
         precision_steps={word: each.steps for word, each in found.stepped.items()},
         _decisions=Deferred(lambda: with_exact_ranks(floating.decisions(), stairs)),
-        _hidden=Deferred(hidden),
+        uncertainty=given,
+        weighed=weighed,
+        _hidden=hidden,
         _loops=Deferred(lambda: () if connection is None else connection.join().loops),
-        _visible=Deferred(lambda: _visible_modes(about, floating, budget, model, found.word)),
+        _visible=visible,
+        _alike=Deferred(
+            lambda: (
+                alike(hidden.get() + visible.get(), model, radii)
+                if model.kind is Kind.FLOATING or box is not None
+                else ()
+            )
+        ),
         _parts=Deferred(lambda: {word: _parts_of(each, budget) for word, each in exact.items()}),
         hidden_parts={
             word: {str(part): polynomial for part, polynomial in (each.hidden or {}).items()}
@@ -451,6 +478,13 @@ def _answered(
     return found if leading else _or_nearest(model, found, floating, budget, not_done)
 
 
+def _within(found: _Found, settled: Settled) -> _Found:
+    """Return the answer within an uncertainty, where one was settled exactly."""
+    if settled.about is None and settled.weighed.within is Within.OPEN:
+        return found
+    return replace(found, answer=settled.answer, word=settled.answer.basis, about=settled.about)
+
+
 def _or_nearest(
     model: Realization,
     found: _Found,
@@ -608,21 +642,27 @@ def _visible_modes(
     floating: _Floating,
     budget: float | None,
     model: Realization,
-    word: str,
-) -> tuple[Mode, ...]:
+) -> tuple[tuple[Mode, ...], bool]:
+    """Return the modes that show, and whether they are more than computed in doubles."""
     if isinstance(about, SteppedAnswer):
         if model.order > _VISIBLE_ORDER and floating.failed is None:
-            return floating.visible_modes()
+            return floating.visible_modes(), False
     elif about is None or about.visible_within(budget) is None:
-        return floating.visible_modes()
-    return with_doubt(about.visible_modes(), model, word)
+        return floating.visible_modes(), False
+    return about.visible_modes(), True
 
 
 def _count_unsimple(model: Realization) -> int:
     return sum(not is_simple(read_float(value, Reading.INTENDED)) for value in model._floats())
 
 
-def _verdict(order: int, found: _Found, orders: dict[str, int], floating_order: int | None) -> str:
+def _verdict(
+    order: int,
+    found: _Found,
+    orders: dict[str, int],
+    floating_order: int | None,
+    weighed: Weighed | None,
+) -> str:
     """Return the answer in one sentence."""
     answer = found.answer
     about = {
@@ -644,6 +684,12 @@ def _verdict(order: int, found: _Found, orders: dict[str, int], floating_order: 
         )
     else:
         grounds = f"proved for {about}"
+    if weighed is not None and weighed.within is Within.MINIMAL:
+        grounds = "proved for every model within the uncertainty"
+    elif weighed is not None and answer.basis == "nearest":
+        grounds = "proved for a model within the uncertainty"
+    elif weighed is not None and weighed.within is Within.OPEN:
+        grounds += ", but open for other models within the uncertainty"
     if answer.order == order:
         text = "minimal: it has no states"
         if order:

@@ -8,9 +8,10 @@ from typing import TYPE_CHECKING
 
 from realize.polynomials import Polynomial
 from realize.polynomials import text as polynomial_text
-from realize.results import Mode, Part
+from realize.results import Mode, Part, Side
 from realize.stability import Stability
 from realize.tolerance import default_tolerance
+from realize.within.weigh import Weighed, Within
 
 if TYPE_CHECKING:
     from realize.arithmetic.steps import PrecisionSteps
@@ -50,6 +51,7 @@ def findings(examination: Examination, name: str = "") -> str:
         ("Hidden", _hidden(examination)),
         ("Why", _why(examination)),
         ("Basis", _basis(examination)),
+        *([("Within", _within(examination))] if examination.weighed else []),
         ("Cutoffs", _cutoffs(examination)),
         ("Removal", _removal(examination)),
         ("Next", _next(examination)),
@@ -95,7 +97,8 @@ def _named(examination: Examination, modes: Iterable[Mode]) -> list[tuple[str, M
     blur = _BLUR * _largest(examination) if modes else 0.0
     found: dict[tuple[str, Part], tuple[str, Mode, int]] = {}
     for mode in modes:
-        doubtful = mode.stability is Stability.CANNOT_TELL
+        # Within an uncertainty that was given the value is one of many, but no noise.
+        doubtful = mode.stability is Stability.CANNOT_TELL and examination.weighed is None
         value = mode.value
         if doubtful and examination.model.sampling_period is None:
             value = complex(0.0, value.imag if abs(value.imag) > blur else 0.0)
@@ -160,6 +163,11 @@ def _danger(examination: Examination) -> str:
                 f"no mode is hidden, but a model at relative distance {near.relative_distance:.2g} "
                 f"hides {_count(examination.order - near.order, 'mode')}; what those do, the "
                 "transfer function of that model does not show."
+            )
+        if examination.within_uncertainty is Within.OPEN:
+            return (
+                "no mode is hidden in the model itself; whether one is, and whether that is "
+                "stable, is open for other models within the uncertainty."
             )
         steps = examination.leading_steps
         if steps is not None and not steps.is_settled:
@@ -337,12 +345,16 @@ def _next(examination: Examination) -> str:
             "do not ship the reduced model as a model of the plant. Move a sensor or an actuator, "
             "or stop cancelling that pole; then examine again."
         )
+    if examination.within_uncertainty is Within.OPEN:
+        return _to_settle(examination)
     if steps is not None and status == 3:
         return _after_steps(examination, steps)
     if status == 3:
         return "give the exact path a larger budget, or treat the order as a guess."
     if examination.answer.order < examination.order:
         return _how_to_reduce(examination)
+    if examination.within_uncertainty is Within.MINIMAL:
+        return "use the model as it is: nothing within the uncertainty hides a mode."
     if not examination.paths_agree or not examination.readings_agree:
         return "say which reading is meant before a routine with a tolerance decides for you."
     return "use the model as it is."
@@ -372,6 +384,11 @@ def _how_to_reduce(examination: Examination) -> str:
     kept = "and keep the list of what was removed"
     if basis in ("stored", "written"):
         return f"reduce with `realize minimal --reading {basis}`, {kept}."
+    if basis == "nearest" and examination.witness is not None:
+        return (
+            "the data do not tell this model from the witness, which --json prints and `realize "
+            f"minimal` reduces: reduce that, {kept}; or go back for better data."
+        )
     if basis == "nearest":
         return f"reduce with `realize minimal`, whose floating path gives this order, {kept}."
     return f"reduce with `realize minimal`, {kept}."
@@ -379,8 +396,62 @@ def _how_to_reduce(examination: Examination) -> str:
 
 def _not_done(examination: Examination) -> str:
     undone = list(examination.not_done)
-    undone.append("no uncertainty was given, so none was weighed")
-    return "; ".join(undone) + "."
+    weighed = examination.weighed
+    if weighed is None:
+        undone.append("no uncertainty was given, so none was weighed")
+    elif weighed.unfinished is not None:
+        undone.append(f"the uncertainty was weighed, but not settled: {weighed.unfinished}")
+    return "; ".join(undone or ["nothing"]) + "."
+
+
+def _within(examination: Examination) -> str:
+    """Say what was weighed and what came of it."""
+    weighed = examination.weighed
+    if weighed is None:
+        raise AssertionError("no uncertainty was weighed")
+    given = f"uncertainty {examination.uncertainty}"
+    if weighed.within is Within.MINIMAL:
+        more = "twice it" if weighed.proved >= 2 else f"{_down(weighed.proved)} times it"
+        more = f", and within {more}," if weighed.proved >= 1.01 else ""
+        return f"{given}: every model within it{more} is minimal, proved."
+    proved = f"within {_down(weighed.proved)} of it every model is minimal, proved"
+    if weighed.within is Within.NOT_MINIMAL:
+        text = f"{given}: an exact model within it, the witness, is not minimal"
+        if weighed.point is not None and weighed.reached < 1:
+            text += f"; {weighed.reached:.2g} of it suffices to hide {_nearby(weighed)}"
+        return f"{text}; {proved}." if weighed.proved > 0 else f"{text}."
+    text = f"{given}: open. {proved[0].upper()}{proved[1:]}"
+    if weighed.point is None:
+        return f"{text}; no model that is not minimal was found."
+    return f"{text}; {weighed.reached:.3g} times it suffices to hide {_nearby(weighed)}."
+
+
+def _down(factor: float) -> str:
+    """Return a proved factor to three digits, not rounded up."""
+    shown = float(f"{factor:.3g}")
+    return f"{factor * (1 - 5e-3):.3g}" if shown > factor else f"{shown:g}"
+
+
+def _nearby(weighed: Weighed) -> str:
+    """Name the mode that is hidden nearest."""
+    point = weighed.point or 0j
+    how = "from the inputs" if weighed.side is Side.INPUT else "from the outputs"
+    return f"a mode at {mode_text(point)} {how}"
+
+
+def _to_settle(examination: Examination) -> str:
+    """Say what would settle an open question."""
+    weighed = examination.weighed
+    if weighed is None or not weighed.weights:
+        return (
+            "give a larger budget, or a smaller uncertainty; until then it is open whether the "
+            "data hide a mode."
+        )
+    entries = ", ".join(f"{name} ({share:.0%})" for name, share in weighed.weights)
+    return (
+        f"measure better what counts most: {entries}. A larger budget may settle it as well; "
+        "until then it is open whether the data hide a mode."
+    )
 
 
 def _shown_parts(examination: Examination) -> dict[str, dict[str, Polynomial | int | None]]:
@@ -405,6 +476,39 @@ def _short(polynomial: Polynomial | int | None, variable: str) -> str:
         if len(text) <= 44:
             return text
     return f"degree {len(polynomial) - 1}"
+
+
+def _data_table(examination: Examination, modes: tuple[Mode, ...]) -> list[str]:
+    """Return how far the data move the modes, where that shows, and what they do not tell apart."""
+    largest = _largest(examination)
+    shown = [
+        (value, mode.sensitivity)
+        for value, mode, _ in _named(examination, modes)
+        if mode.sensitivity is not None
+        and (examination.weighed is not None or mode.sensitivity > _BLUR * largest)
+    ]
+    lines: list[str] = []
+    if shown:
+        by = "one ulp of every entry" if examination.weighed is None else "the uncertainty"
+        lines.append(f"How far {by} moves the modes, to first order")
+        lines += [f"  {value:<26}{size:.2g}" for value, size in shown[:40]]
+        if len(shown) > 40:
+            lines.append(f"  and {len(shown) - 40} more")
+        lines.append("")
+    pairs = examination.alike
+    if pairs:
+        lines.append("These agree within what the data can tell")
+        for pair in pairs[:20]:
+            second = f"the {'zero' if pair.is_zero else 'mode'} {mode_text(pair.second)}"
+            text = (
+                f"  the mode {mode_text(pair.first)} and {second}: {pair.apart:.2g} apart, and the "
+                f"data move them by {pair.within:.2g}"
+            )
+            lines += textwrap.wrap(text, WIDTH, subsequent_indent="    ", break_on_hyphens=False)
+        if len(pairs) > 20:
+            lines.append(f"  and {len(pairs) - 20} more")
+        lines.append("")
+    return lines
 
 
 def _channel_table(examination: Examination, modes: tuple[Mode, ...]) -> list[str]:
@@ -478,6 +582,7 @@ def _tables(examination: Examination) -> list[str]:
     modes = examination.modes
     lines.extend(_mode_table(examination, modes))
     lines.extend(_channel_table(examination, modes))
+    lines.extend(_data_table(examination, modes))
     lines.append("Rank decisions of the floating path")
     readings = list(examination.minimal_order)
     head = "".join(f"{word:>10}" for word in readings)

@@ -13,8 +13,10 @@ from typing import Any, Final
 import numpy as np
 
 from realize.arithmetic.steps import PrecisionSteps
+from realize.examination.alike import Alike
 from realize.examination.nearest import Nearest
 from realize.model.connections import AlgebraicLoop
+from realize.model.files import to_document
 from realize.model.realization import Realization
 from realize.polynomials import Polynomial
 from realize.results import Deferred, Mode, Part, RankDecision, Reduction, ResponseChange, spelled
@@ -25,6 +27,8 @@ from realize.stability import (
     hidden_cautions,
 )
 from realize.tolerance import LOOP_MARGIN
+from realize.uncertainty import Uncertainty
+from realize.within.weigh import Weighed, Within
 
 __all__ = ["Answer", "Examination", "environment", "peak_memory"]
 
@@ -41,9 +45,10 @@ class Answer:
     order : int
     basis : str
         "given", "stored", "written": the reading it is proved for; "nearest": proved for an exact
-        model within the rounding floor of the one examined; "multiprecision": the exact path has
-        no answer, and the steps of precision are the evidence for this one, which is no proof;
-        "floating": by the floating path alone, and nothing is proved.
+        model within the rounding floor of the one examined, or within the uncertainty where one
+        was given; "multiprecision": the exact path has no answer, and the steps of precision are
+        the evidence for this one, which is no proof; "floating": by the floating path alone, and
+        nothing is proved.
     """
 
     order: int
@@ -81,8 +86,10 @@ class Examination:
         Reading -> the stages that leave no cutoff, in words; empty where there is a range.
     routes : dict
         Reading -> {"state": order, "polynomial": order, "hankel": order}.
-    within_uncertainty : None
-        Kept for data with an uncertainty, which are not built yet. So is `witness`.
+    uncertainty : Uncertainty or None
+        The one given.
+    weighed : Weighed or None
+        What is known of the models within it: bounds, and what they rest on.
     not_done : tuple of str
         What was skipped and why.
     precision_steps : dict
@@ -93,7 +100,7 @@ class Examination:
     hidden_parts : dict
         Reading -> hidden part -> exact characteristic polynomial.
     seconds : dict
-        Path -> wall-clock seconds.
+        Path -> wall-clock seconds; "uncertainty" too, where one was weighed.
     peak_memory : int or None
         Bytes, the most that the process has held so far; None where the system does not tell.
     """
@@ -115,8 +122,8 @@ class Examination:
     seconds: dict[str, float]
     peak_memory: int | None
     precision_steps: dict[str, PrecisionSteps] = field(default_factory=dict)
-    within_uncertainty: str | None = None
-    witness: Realization | None = None
+    uncertainty: Uncertainty | None = None
+    weighed: Weighed | None = None
     _decisions: Deferred[tuple[RankDecision, ...]]
     _hidden: Deferred[tuple[Mode, ...]]
     _visible: Deferred[tuple[Mode, ...]]
@@ -126,11 +133,25 @@ class Examination:
     _reduction: Deferred[Reduction | None]
     _nearly_hidden: Deferred[int]
     _loops: Deferred[tuple[AlgebraicLoop, ...]]
+    _alike: Deferred[tuple[Alike, ...]]
 
     @property
     def algebraic_loops(self) -> tuple[AlgebraicLoop, ...]:
         """The algebraic loops of a connected model; none where feedthroughs run in no circle."""
         return self._loops.get()
+
+    @property
+    def within_uncertainty(self) -> Within | None:
+        """Whether all models within the uncertainty are minimal; None when none was given.
+
+        "minimal": every one is, proved. "not minimal": `witness` is not. "open": neither is known.
+        """
+        return None if self.weighed is None else self.weighed.within
+
+    @property
+    def witness(self) -> Realization | None:
+        """An exact model within the uncertainty that is not minimal, if one was found."""
+        return None if self.weighed is None else self.weighed.witness
 
     @property
     def decisions(self) -> tuple[RankDecision, ...]:
@@ -166,6 +187,15 @@ class Examination:
         floating path, with infinite radius.
         """
         return self._hidden.get() + self._visible.get()
+
+    @property
+    def alike(self) -> tuple[Alike, ...]:
+        """Modes that agree, and visible modes and zeros that do, within what the data can tell.
+
+        Within the uncertainty, or one ulp of every entry where none was given, to first order.
+        None of exact data without an uncertainty.
+        """
+        return self._alike.get()
 
     @property
     def parts(self) -> dict[str, dict[str, Polynomial | None]]:
@@ -278,12 +308,15 @@ class Examination:
         """Exit status of the command line.
 
         0: nothing hidden, and nothing in doubt. 1: hidden modes, or paths or readings that
-        disagree. 3: undecided, nothing is proved, though steps of precision may be evidence.
+        disagree. 3: undecided: nothing is proved, though steps of precision may be evidence, or
+        the question is open within the uncertainty.
         4: a hidden mode is not known to be stable.
         """
         if any(mode.stability is not Stability.STABLE for mode in self.hidden_modes):
             return 4
         if self.answer.basis in ("floating", "multiprecision"):
+            return 3
+        if self.within_uncertainty is Within.OPEN:
             return 3
         clean = self.answer.order == self.order and self.paths_agree and self.readings_agree
         return 0 if clean else 1
@@ -313,6 +346,7 @@ class Examination:
             ),
             "parts": _plain_parts(self.parts),
             "modes": [mode.to_dict() for mode in self.modes],
+            "alike": [pair.to_dict() for pair in self.alike],
             "decisions": [decision.to_dict() for decision in self.decisions],
             "cutoff_ranges": {
                 reading: None if span is None else [_finite(value) for value in span]
@@ -320,8 +354,12 @@ class Examination:
             },
             "conflicts": {reading: list(text) for reading, text in self.conflicts.items()},
             "routes": {reading: dict(found) for reading, found in self.routes.items()},
-            "within_uncertainty": self.within_uncertainty,
-            "witness": None,
+            "uncertainty": None if self.uncertainty is None else str(self.uncertainty),
+            "within_uncertainty": (
+                None if self.within_uncertainty is None else str(self.within_uncertainty)
+            ),
+            "weighed": None if self.weighed is None else self.weighed.to_dict(),
+            "witness": None if self.witness is None else to_document(self.witness),
             "cautions": list(self.cautions),
             "not_done": list(self.not_done),
             "precision_steps": {

@@ -23,6 +23,7 @@ ROOMS: tuple[tuple[str, ...], ...] = (
     ("exact", "floating", "multiprecision", "dispatch"),
     ("convert",),
     ("nearness",),
+    ("within",),
     ("examination", "proof"),
     ("",),
     ("testing",),

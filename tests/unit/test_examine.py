@@ -874,7 +874,8 @@ KEYS = {
     "unscaled_order", "paths_agree", "readings_agree", "answer", "verdict", "stabilizable",
     "detectable", "nearest", "parts", "modes", "decisions", "cutoff_ranges", "conflicts",
     "response_change", "routes", "fragile", "precision_steps",
-    "within_uncertainty", "witness", "cautions", "not_done", "seconds", "environment", "digest",
+    "uncertainty", "within_uncertainty", "weighed", "witness", "alike", "cautions", "not_done",
+    "seconds", "environment", "digest",
 }  # fmt: skip
 
 
@@ -1084,14 +1085,6 @@ def test_readings_that_are_none_of_a_rational_model(words: Any) -> None:
     """A rational model knows every word, but no other."""
     with pytest.raises(errors.UnknownWordError):
         examine(four_parts(), readings=words)
-
-
-@pytest.mark.parametrize("uncertainty", [0.01, "ulp", 0])
-def test_uncertainty_is_not_built(uncertainty: Any) -> None:
-    """Anything but None is refused, and the error says that it is not built yet."""
-    with pytest.raises(errors.NotBuiltError, match="uncertainty") as caught:
-        examine(chamber(), uncertainty=uncertainty)
-    assert isinstance(caught.value, NotImplementedError)
 
 
 @pytest.mark.parametrize("budget", [-1, -1e-9, math.nan, "10", True, 1j, [1]])
