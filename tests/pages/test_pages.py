@@ -1,4 +1,4 @@
-"""The pages for ten situations, as they were approved.
+"""The pages for ten situations, as they were approved, and one of them under uncertainty.
 
 Each page was read with one question: what does the engineer decide from it, and do the first ten
 lines suffice? What the page begins with is kept as text. Sizes of rounding differ from machine to
@@ -28,6 +28,12 @@ SITUATIONS = {
     "delay-twice": (1, "the same delay, approximated once for each branch, is there twice"),
     "plain": (0, "simply minimal"),
 }
+# The fitted model again, with the standard deviations of its coefficients: small, and ten times that.
+DEVIATIONS = {"A": [[0.012, 0.011], [0, 0]], "C": [[0.004, 0.004]]}
+UNCERTAIN = {
+    "fitted-well": (0, 1, "minimal: every model that the data allow shows both states"),
+    "fitted-badly": (4, 10, "a model that the data allow hides a mode: go back for better data"),
+}
 TINY = re.compile(r"\b\d(\.\d+)?e-(1[2-9]|[2-9]\d)\b")
 
 
@@ -46,6 +52,22 @@ def test_the_page_is_the_approved_one(name: str) -> None:
     assert examination.status == SITUATIONS[name][0]
 
 
+@pytest.mark.parametrize("name", UNCERTAIN)
+def test_the_page_of_a_fitted_model_weighs_its_deviations(name: str) -> None:
+    """The same for a model fitted to data, with standard deviations."""
+    status, times, _ = UNCERTAIN[name]
+    spread = realize.Uncertainty(
+        standard_deviation={
+            letter: [[times * figure for figure in row] for row in rows]
+            for letter, rows in DEVIATIONS.items()
+        }
+    )
+    examination = realize.examine(realize.load(HERE / "fitted.json"), uncertainty=spread)
+    approved = (HERE / f"{name}.txt").read_text("utf-8")
+    assert masked(findings(examination)) == masked(approved)
+    assert examination.status == status
+
+
 @pytest.mark.parametrize("name", SITUATIONS)
 def test_the_page_fits_80_columns(name: str) -> None:
     """No line of the whole page is longer than a terminal is wide."""
@@ -57,4 +79,4 @@ def test_the_page_fits_80_columns(name: str) -> None:
 def test_every_situation_has_its_files() -> None:
     """One model and one page for each, and nothing else."""
     files = {path.stem for path in HERE.iterdir() if path.suffix in (".json", ".txt")}
-    assert files == set(SITUATIONS)
+    assert files == set(SITUATIONS) | set(UNCERTAIN)
