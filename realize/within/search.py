@@ -19,7 +19,6 @@ from typing import Any, Final
 
 import numpy as np
 import scipy.linalg
-from scipy.optimize import linprog
 from scipy.sparse import coo_array
 
 from realize.results import Side
@@ -328,6 +327,9 @@ class _Program:
             shape=(2 * self.count, total),
         ).tocsr()
         infinite = np.full(self.count, np.inf)
+        # Half as dear to load as all the rest of scipy, and hardly ever asked for.
+        from scipy.optimize import linprog
+
         solved = linprog(
             np.concatenate([np.zeros(total - 1), [1.0]]),
             A_ub=bounds,

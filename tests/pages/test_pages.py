@@ -28,7 +28,7 @@ SITUATIONS = {
     "delay-twice": (1, "the same delay, approximated once for each branch, is there twice"),
     "plain": (0, "simply minimal"),
 }
-# The fitted model again, with the standard deviations of its coefficients: small, and ten times that.
+# The fitted model again, with the standard deviations of its coefficients: small, and ten times so.
 DEVIATIONS = {"A": [[0.012, 0.011], [0, 0]], "C": [[0.004, 0.004]]}
 UNCERTAIN = {
     "fitted-well": (0, 1, "minimal: every model that the data allow shows both states"),
