@@ -456,9 +456,9 @@ def _inverses(matrices: Array) -> Array:
     try:
         return np.asarray(np.linalg.inv(matrices))
     except np.linalg.LinAlgError:
-        singular = np.linalg.matrix_rank(matrices) < matrices.shape[1]
-        matrices = matrices.copy()
-        matrices[singular] = -np.eye(matrices.shape[1])
+        size = matrices.shape[1]
+        matrices = np.where(np.isfinite(matrices).all(axis=(1, 2))[:, None, None], matrices, 0.0)
+        matrices[np.linalg.matrix_rank(matrices) < size] = -np.eye(size)
         return np.asarray(np.linalg.inv(matrices))
 
 

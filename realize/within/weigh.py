@@ -153,6 +153,12 @@ class _Weighing:
         except (PrecisionError, EntryError) as error:
             self.unfinished = str(error)
             return self._told()
+        # Where numbers overflow, what comes of it proves nothing and is no witness.
+        with np.errstate(all="ignore"):
+            self._weigh(doubles)
+        return self._told()
+
+    def _weigh(self, doubles: InDoubles) -> None:
         if self.known is None:
             for side in Side:
                 self.coverings[side] = Covering(doubles.pencil(side), _LARGEST, self._late)
@@ -165,7 +171,6 @@ class _Weighing:
                 self._prove(_CLOSE, 1.0)
         if self.witness is not None:
             self._hide_more(doubles)
-        return self._told()
 
     # Bounds
 

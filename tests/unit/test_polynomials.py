@@ -23,7 +23,6 @@ from realize.polynomials import (
     Polynomial,
     Root,
     _disjoint,
-    working_precision,
     add,
     degree,
     derivative,
@@ -41,6 +40,7 @@ from realize.polynomials import (
     strip,
     text,
     to_flint,
+    working_precision,
 )
 
 

@@ -374,6 +374,17 @@ def test_no_time_is_open_and_not_wrong() -> None:
     assert weigh(box(lags(-1, -2), F(1, 100)), None).within is Within.MINIMAL
 
 
+@pytest.mark.parametrize("radius", ["1e200", "1e400"])
+def test_radii_beyond_doubles(radius: str) -> None:
+    """Nothing overflows aloud: the middle decides where it can, and the rest is open."""
+    given = Uncertainty(absolute=radius)
+    assert examine(lags(-1, -1), uncertainty=given).within_uncertainty == "not minimal"
+    found = examine(lags(-1, -2), uncertainty=given, budget=1)
+    assert found.within_uncertainty in ("not minimal", "open")
+    assert f"absolute {'1e+200' if radius == '1e200' else 'about 2^1328'}" in words_of(found)
+    json.dumps(found.to_dict(), allow_nan=False)
+
+
 def test_entries_beyond_doubles_are_open() -> None:
     """No scaling brings them into doubles; the error of that is what is told."""
     model = Realization([["1e400", 1], [1, "-1e400"]], [1, 1], [1, 1])
