@@ -457,7 +457,8 @@ def _inverses(matrices: Array) -> Array:
         return np.asarray(np.linalg.inv(matrices))
     except np.linalg.LinAlgError:
         size = matrices.shape[1]
-        matrices = np.where(np.isfinite(matrices).all(axis=(1, 2))[:, None, None], matrices, 0.0)
+        finite = np.asarray(np.isfinite(matrices).all(axis=(1, 2)))
+        matrices = np.where(finite[:, None, None], matrices, 0.0)
         matrices[np.linalg.matrix_rank(matrices) < size] = -np.eye(size)
         return np.asarray(np.linalg.inv(matrices))
 

@@ -165,10 +165,11 @@ class _Weighing:
             self._prove(1.0, _PROVING)
             if self._lower() < 1:
                 self._look(doubles)
+            # First a bound that an open answer can be told with, then what takes longer.
+            if self._lower() < 1 < self._upper():
+                self._prove(_CLOSE, _SPLITTING)
             if self._lower() < 1 < self._upper():
                 self._split()
-            if self._lower() < 1 < self._upper():
-                self._prove(_CLOSE, 1.0)
         if self.witness is not None:
             self._hide_more(doubles)
 

@@ -340,7 +340,7 @@ def open_case() -> Realization:
 
 def test_an_open_question_has_both_bounds() -> None:
     """What is proved, what was reached, what counts most, and what would settle it."""
-    found = examine(open_case(), uncertainty=0.05, budget=1.5)
+    found = examine(open_case(), uncertainty=0.05, budget=4)
     assert found.within_uncertainty is Within.OPEN
     assert found.witness is None
     weighed = found.weighed
