@@ -185,7 +185,7 @@ class Uncertainty:
         for name in ("relative", "absolute", "standard_deviation"):
             figure = getattr(self, name)
             if figure is not None:
-                text = "by matrix" if isinstance(figure, dict) else f"{float(figure):.6g}"
+                text = "by matrix" if isinstance(figure, dict) else _shown(figure)
                 shown.append(f"{name.replace('_', ' ')} {text}")
         if self.covariance is not None:
             shown.append("covariance")
@@ -296,6 +296,14 @@ def as_uncertainty(given: Any) -> Uncertainty | None:
 
 
 # From what a caller gives to exact figures
+
+
+def _shown(figure: Fraction) -> str:
+    """Return a figure short enough to read, whatever its size."""
+    bits = figure.numerator.bit_length() - figure.denominator.bit_length()
+    if figure and abs(bits) > 1000:
+        return f"about 2^{bits}"
+    return f"{float(figure):.6g}"
 
 
 def _settle(record: Uncertainty, name: str, value: Any) -> None:

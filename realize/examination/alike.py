@@ -15,7 +15,7 @@ from realize.model.realization import Realization
 from realize.results import Mode, Part
 from realize.tolerance import UNIT_ROUNDOFF
 from realize.uncertainty import MatrixRadii
-from realize.within.box import in_doubles
+from realize.within.box import doubles_above, in_doubles
 
 __all__ = ["Alike", "alike"]
 
@@ -132,7 +132,7 @@ def _zeros(matrices: Sequence[Array], radii: MatrixRadii | None) -> list[tuple[c
     if radii is None:
         data = UNIT_ROUNDOFF * np.abs(whole)
     else:
-        each = (in_doubles(radius) for radius in (radii.A, radii.B, radii.C, radii.D))
+        each = (doubles_above(radius) for radius in (radii.A, radii.B, radii.C, radii.D))
         r_A, r_B, r_C, r_D = each
         data = np.block([[r_A, r_B], [r_C, r_D]])
     ones = np.diag(np.concatenate([np.ones(n), np.zeros(inputs)]))
@@ -144,7 +144,8 @@ def _zeros(matrices: Sequence[Array], radii: MatrixRadii | None) -> list[tuple[c
         overlap = abs(np.vdot(left[:n, k], right[:n, k]))
         if abs(below[k]) <= _AT_INFINITY * abs(above[k]) or not overlap:
             continue
-        change = float(np.abs(left[:, k]) @ data @ np.abs(right[:, k])) / overlap
+        with np.errstate(all="ignore"):
+            change = float(np.abs(left[:, k]) @ data @ np.abs(right[:, k])) / overlap
         if math.isfinite(change) and below[k]:
             found.append((complex(above[k] / below[k]), change))
     return found

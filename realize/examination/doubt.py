@@ -15,7 +15,7 @@ from realize.model.realization import Kind, Realization
 from realize.results import Mode
 from realize.stability import Stability, root_counts
 from realize.tolerance import UNIT_ROUNDOFF, rounding_floor
-from realize.within.box import in_doubles
+from realize.within.box import doubles_above, in_doubles
 
 __all__ = ["with_doubt"]
 
@@ -64,7 +64,7 @@ def with_doubt(
     shift = max(math.frexp(float(np.abs(A).max(initial=0.0)))[1], -1000)
     A = np.ldexp(A, -shift)
     unit = math.ldexp(1.0, -shift)
-    data = UNIT_ROUNDOFF * np.abs(A) if radii is None else np.ldexp(in_doubles(radii), -shift)
+    data = UNIT_ROUNDOFF * np.abs(A) if radii is None else np.ldexp(doubles_above(radii), -shift)
     norm = float(np.linalg.norm(A))
     spectrum = _Spectrum(*scipy.linalg.eig(A, left=True, right=True))
     found = tuple(
@@ -75,7 +75,8 @@ def with_doubt(
         return found
     if radii is None and basis == "nearest":
         data = np.full(A.shape, rounding_floor(model.order, norm) / model.order)
-    largest = _ALLOWANCE * math.sqrt(float(np.linalg.norm(data)) * norm)
+    with np.errstate(all="ignore"):
+        largest = _ALLOWANCE * math.sqrt(float(np.linalg.norm(data)) * norm)
     return tuple(
         replace(mode, stability=Stability.CANNOT_TELL)
         if mode.stability in (Stability.STABLE, Stability.UNSTABLE)
@@ -100,8 +101,10 @@ class _Spectrum:
         k = int(np.abs(self.values - value).argmin())
         y, x = np.abs(self.left[:, k]), np.abs(self.right[:, k])
         overlap = abs(np.vdot(self.left[:, k], self.right[:, k]))
-        change = float(y @ data @ x)
-        return math.inf if overlap * 1e300 <= change else change / overlap
+        with np.errstate(all="ignore"):
+            # Radii may be infinite, and then the change is, or is none that doubles can tell.
+            change = float(y @ data @ x)
+        return change / overlap if change < overlap * 1e300 else math.inf
 
 
 def _unscaled(size: float, shift: int) -> float:

@@ -12,11 +12,12 @@ import numpy as np
 
 from realize.arithmetic.scaling import Scaling, scaling_of
 from realize.entries import round_entry
+from realize.errors import PrecisionError
 from realize.model.realization import Kind, Realization
 from realize.results import Side
 from realize.uncertainty import MatrixRadii, Uncertainty
 
-__all__ = ["Box", "InDoubles", "Pencil", "in_doubles"]
+__all__ = ["Box", "InDoubles", "Pencil", "doubles_above", "in_doubles"]
 
 Array = np.ndarray[Any, Any]
 
@@ -123,7 +124,7 @@ class InDoubles:
     Raises
     ------
     PrecisionError
-        When no units bring the entries into the range of doubles.
+        When no units bring the entries into the range of doubles, or radii lie beyond it.
     """
 
     def __init__(self, box: Box) -> None:
@@ -132,10 +133,14 @@ class InDoubles:
         self.time, self.states = scaling.time, scaling.states.astype(np.int64)
         self.A, self.B, self.C = self._in_units((A, B, C), scaling)
         radii = (box.radii.A, box.radii.B, box.radii.C)
-        self.radii = self._in_units(tuple(map(_above, radii)), scaling)
+        self.radii = self._in_units(tuple(map(doubles_above, radii)), scaling)
+        if not all(np.isfinite(radius).all() for radius in self.radii):
+            raise PrecisionError(
+                "the uncertainty of an entry is too large for doubles; give a smaller one"
+            )
         given = box.centre.matrices()[:3]
         lost = (
-            _above(np.abs(matrix - _fractions(near)))
+            doubles_above(np.abs(matrix - _fractions(near)))
             for matrix, near in zip(given, (A, B, C), strict=True)
         )
         self.lost = self._in_units(tuple(lost), scaling)
@@ -199,7 +204,7 @@ def _shifted(matrix: Array, exponents: Array) -> Array:
     return result
 
 
-def _above(matrix: Array) -> Array:
+def doubles_above(matrix: Array) -> Array:
     """Return doubles that are not below exact numbers."""
     flat = [_double_above(entry) for entry in matrix.ravel().tolist()]
     return np.array(flat, dtype=float).reshape(matrix.shape)

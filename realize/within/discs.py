@@ -456,9 +456,10 @@ def _inverses(matrices: Array) -> Array:
     try:
         return np.asarray(np.linalg.inv(matrices))
     except np.linalg.LinAlgError:
-        singular = np.linalg.matrix_rank(matrices) < matrices.shape[1]
-        matrices = matrices.copy()
-        matrices[singular] = -np.eye(matrices.shape[1])
+        size = matrices.shape[1]
+        finite = np.asarray(np.isfinite(matrices).all(axis=(1, 2)))
+        matrices = np.where(finite[:, None, None], matrices, 0.0)
+        matrices[np.linalg.matrix_rank(matrices) < size] = -np.eye(size)
         return np.asarray(np.linalg.inv(matrices))
 
 

@@ -153,19 +153,25 @@ class _Weighing:
         except (PrecisionError, EntryError) as error:
             self.unfinished = str(error)
             return self._told()
+        # Where numbers overflow, what comes of it proves nothing and is no witness.
+        with np.errstate(all="ignore"):
+            self._weigh(doubles)
+        return self._told()
+
+    def _weigh(self, doubles: InDoubles) -> None:
         if self.known is None:
             for side in Side:
                 self.coverings[side] = Covering(doubles.pencil(side), _LARGEST, self._late)
             self._prove(1.0, _PROVING)
             if self._lower() < 1:
                 self._look(doubles)
+            # First a bound that an open answer can be told with, then what takes longer.
+            if self._lower() < 1 < self._upper():
+                self._prove(_CLOSE, _SPLITTING)
             if self._lower() < 1 < self._upper():
                 self._split()
-            if self._lower() < 1 < self._upper():
-                self._prove(_CLOSE, 1.0)
         if self.witness is not None:
             self._hide_more(doubles)
-        return self._told()
 
     # Bounds
 

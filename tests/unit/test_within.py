@@ -340,7 +340,7 @@ def open_case() -> Realization:
 
 def test_an_open_question_has_both_bounds() -> None:
     """What is proved, what was reached, what counts most, and what would settle it."""
-    found = examine(open_case(), uncertainty=0.05, budget=1.5)
+    found = examine(open_case(), uncertainty=0.05, budget=4)
     assert found.within_uncertainty is Within.OPEN
     assert found.witness is None
     weighed = found.weighed
@@ -372,6 +372,17 @@ def test_no_time_is_open_and_not_wrong() -> None:
     assert weighed.unfinished is not None
     assert "time" in weighed.unfinished
     assert weigh(box(lags(-1, -2), F(1, 100)), None).within is Within.MINIMAL
+
+
+@pytest.mark.parametrize("radius", ["1e200", "1e400"])
+def test_radii_beyond_doubles(radius: str) -> None:
+    """Nothing overflows aloud: the middle decides where it can, and the rest is open."""
+    given = Uncertainty(absolute=radius)
+    assert examine(lags(-1, -1), uncertainty=given).within_uncertainty == "not minimal"
+    found = examine(lags(-1, -2), uncertainty=given, budget=1)
+    assert found.within_uncertainty in ("not minimal", "open")
+    assert f"absolute {'1e+200' if radius == '1e200' else 'about 2^1328'}" in words_of(found)
+    json.dumps(found.to_dict(), allow_nan=False)
 
 
 def test_entries_beyond_doubles_are_open() -> None:
