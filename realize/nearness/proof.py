@@ -62,7 +62,7 @@ Array = np.ndarray[Any, Any]
 _LONGEST: Final = 80
 """How many terms of the series are taken at most; the square must be smaller then."""
 
-MOST_ROWS: Final = 3
+MOST_ROWS: Final = 5
 """How many singular directions are kept at most."""
 
 _MOST_ROWS_BELOW: Final = 8
@@ -149,7 +149,8 @@ def reduce_in_doubles(
     large = s[: n - k]
     gap = float(large[-1]) if n > k else math.inf
     corner = X.conj().T @ Z
-    terms = [np.zeros_like(corner), -corner]
+    scale = _power_above(radius)
+    terms = [np.zeros_like(corner), -corner * scale]
     terms[0][:, :k] = np.diag(s[n - k :])
     left = right = 0.0
     missing = 0.0
@@ -162,20 +163,21 @@ def reduce_in_doubles(
         share = radius / gap
         if share > 0.5:
             return None
-        rows = -rows
-        power = radius * radius
+        rows = -rows * scale
+        power = radius * radius / scale
         while True:
-            terms.append(rows @ columns)
+            terms.append(rows @ columns * scale)
             missing = power * share * float(np.linalg.norm(rows)) * breadth / (1 - share)
             if missing <= enough:
                 break
             if len(terms) > _LONGEST:
                 return None
-            rows = ((rows @ U1.conj().T) @ V1) / large
-            power *= radius
+            rows = ((rows @ U1.conj().T) @ V1) * (scale / large)
+            power *= radius / scale
         missing = 1.001 * missing + 6 * (34 * n * ROUNDOFF) * radius * share
     return Reduced(
         terms=np.array(terms),
+        scale=scale,
         gap=gap * (1 - 1e-12),
         left=left + 1e-12 / gap,
         right=right + 1e-12 / gap,
@@ -197,6 +199,11 @@ def reduce_in_doubles(
 def bits_for(target: float, rtol: float) -> int:
     """Return the precision in which a distance of that size can be told to that ratio."""
     return 53 + _SPARE_BITS + math.ceil(-math.log2(target) - math.log2(rtol))
+
+
+def _power_above(radius: float) -> float:
+    """Return the least power of two above a number."""
+    return math.ldexp(1.0, math.frexp(radius)[1])
 
 
 def _balls(values: Array) -> Any:
@@ -326,22 +333,26 @@ def reduce_in_balls(
     enclosed = [exact.corner - beside * exact.above]
     # Errors of the rows enter the terms from w on, and those of later rows from w^2 on.
     fine = enough / max(radius * breadth, 1e-300) if math.isfinite(enough) else 1e-20
-    rows = exact.over(beside * exact.inner_slope, fine) - beside_slope
-    enclosed.append(beside * exact.above_slope - exact.corner_slope - rows * exact.above)
+    scale = _power_above(radius)
+    unit = acb(scale)
+    rows = (exact.over(beside * exact.inner_slope, fine) - beside_slope) * unit
+    first = (beside * exact.above_slope - exact.corner_slope) * unit
+    enclosed.append(first - rows * exact.above)
     # How many terms are needed is guessed from midpoints, and then proved once.
     row, inner, large = _midpoints(rows)[0], _midpoints(exact.inner_slope)[0], exact.large
-    count, power = 0, radius * radius
-    while n > k and power * float(np.linalg.norm(row)) * breadth > enough / 2:
-        row = (row @ inner) / large
-        power *= radius
+    count, share_left = 0, radius / scale
+    while n > k and share_left * radius * float(np.linalg.norm(row)) * breadth > enough / 2:
+        row = (row @ inner) * (scale / large)
+        share_left *= radius / scale
         count += 1
         if count > _LONGEST:
             return None
     for _ in range(max(count, 1)):
-        enclosed.append(rows * exact.above_slope)
-        rows = exact.over(rows * exact.inner_slope, fine)
+        enclosed.append(rows * exact.above_slope * unit)
+        rows = exact.over(rows * exact.inner_slope, fine) * unit
         enclosed[-1] = enclosed[-1] - rows * exact.above
-    missing = radius ** len(enclosed) * _size(rows) * (breadth + above / gap) / (1 - share)
+    missing = radius * (radius / scale) ** (len(enclosed) - 1) * _size(rows)
+    missing *= (breadth + above / gap) / (1 - share)
     if missing > 2 * enough:
         return None
     terms, power = [], 1.0
@@ -349,12 +360,13 @@ def reduce_in_balls(
         middles, rest = _midpoints(matrix)
         terms.append(middles)
         missing += power * rest
-        power *= radius
+        power *= radius / scale
     columns, columns_rest = _midpoints(exact.above_slope)
     right = float(np.linalg.norm(columns / exact.large[:, None])) + columns_rest / s
     stretched = 1 / (1 - exact.rest_size / s)
     return Reduced(
         terms=np.array(terms),
+        scale=scale,
         gap=gap / (1 + 2 * turn),
         left=_size(beside_slope),
         right=1.001 * right * stretched,

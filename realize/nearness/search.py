@@ -59,7 +59,7 @@ _SHARE: Final = 0.05
 _NEWS: Final = 0.2
 """Share of the room between the bounds by which a value must undercut the upper one to be news."""
 
-_STARTS: Final = 3
+_STARTS: Final = 2
 """How many eigenvalues the local search begins from."""
 
 _STEPS: Final = 30
@@ -200,7 +200,8 @@ class Search:
             return _sketch(found)
         self.when_small()
         reduced, left, least = self._in_balls(found)
-        terms = left.conj() @ reduced.terms
+        terms = left.conj() @ reduced.terms[:3]
+        terms /= (reduced.scale ** np.arange(len(terms)))[:, None]
         return _Local(
             point=point,
             value=least,

@@ -250,6 +250,7 @@ def test_both_makers_give_the_same_problem() -> None:
     assert first is not None
     assert second is not None
     count = min(len(first.terms), len(second.terms))
+    assert first.scale == second.scale
     assert np.abs(first.terms[:count] - second.terms[:count]).max() < 1e-13
     assert first.left == pytest.approx(second.left, rel=1e-6)
     # The bound of the second is the looser one, by a thousandth.
