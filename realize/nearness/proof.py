@@ -13,11 +13,14 @@ both are below 0.01. So
 
     sigma(M) >= sigma([S 0] - w P) (1 - dU - dV) - |E| - 1.1 |w| (dU + dV),
 
-and G11 = S1, G12 = 0, G21 = 0 in the text of `realize.nearness.squares`. The products U*U, V V* and
-U S V are computed; each rounds by at most ``gamma_{4 n}`` times the product of the moduli
-(Higham 2002, sections 3.5 and 3.6), whose Frobenius norm is at most n, n + m and
-``sqrt(n) |S|``. The rows c_j and the terms y_j round too: a product of a row with P11 by at most
-``e = 8 n gamma_4`` of its length per step, which sums to less than ``6 e r^2 q`` for r q <= 1/2.
+and G11 = S1, G12 = 0, G21 = 0 in the text of `realize.nearness.squares`. The products U*U, V V*
+and U S V are computed. A complex product of inner length n rounds by at most ``gamma_{2n+4}``
+times the product of the moduli (Higham 2002, sections 3.5 and 3.6), and ``| |U| |_2 <= sqrt(n)``:
+so U*U and V V* are good to ``6 N^2 u``, N their size, and U S V to ``6 n sqrt(n) u |M|``,
+Frobenius norms. A row c_j is multiplied by P11 through U1 and V1, at ``2 gamma_{2n+4} sqrt(n)`` of
+its length per step; with P12, of k + m columns, the terms from y_2 on are good to ``e = 14 n
+sqrt(n (k + m)) u`` of ``j q^(j-1)``, which sums to less than ``6 e r^2 q`` over ``j >= 2`` for r q
+<= 1/2, and y_1 to ``(2 n + 8) sqrt(k (k + m)) u``.
 
 *In balls.* ``G = U* M(c) V*`` and ``P = U* [I 0] V*`` are enclosed; ``G11 = S1 + F`` with F small,
 and ``x G11^-1`` is the limit of ``x -> (b - x F) S1^-1``; after i steps, begun at zero, the error
@@ -117,7 +120,7 @@ def _turns(found: Decomposed) -> tuple[float, float]:
         size = len(factor)
         product = factor.conj().T @ factor
         np.einsum("ii->i", product)[...] -= 1
-        bounds.append(1.01 * (float(np.linalg.norm(product)) + 5 * size * size * ROUNDOFF))
+        bounds.append(1.01 * (float(np.linalg.norm(product)) + 6 * size * size * ROUNDOFF))
     return bounds[0], bounds[1]
 
 
@@ -174,13 +177,15 @@ def reduce_in_doubles(
                 return None
             rows = ((rows @ U1.conj().T) @ V1) * (scale / large)
             power *= radius / scale
-        missing = 1.001 * missing + 6 * (34 * n * ROUNDOFF) * radius * share
+        step = 14 * n * math.sqrt(n * (k + pencil.inputs)) * ROUNDOFF
+        missing = 1.001 * missing + 6 * step * radius * share
+    missing += 1.01 * radius * (2 * n + 8) * math.sqrt(k * (k + pencil.inputs)) * ROUNDOFF
     return Reduced(
         terms=np.array(terms),
         scale=scale,
         gap=gap * (1 - 1e-12),
-        left=left + 1e-12 / gap,
-        right=right + 1e-12 / gap,
+        left=left + 1e-11 / gap,
+        right=right + 1e-11 / gap,
         left_rest=0.0,
         right_rest=0.0,
         radius=radius * (1 + 1e-12),

@@ -283,7 +283,8 @@ class Search:
             With `lower` as far as it was proved.
         """
         low, high, top = self.pencil.field_of_values()
-        room = self.upper * (1 + 1e-9) + self.pencil.slack
+        # The last term is for the rounding of the few sums below.
+        room = self.upper * (1 + 1e-9) + self.pencil.slack + 16 * ROUNDOFF * self.pencil.size
         width = high - low + 2 * room
         height = max(top + room, width / 8)
         # Corners must be doubles, so the grid has few bits: its unit is a power of two.

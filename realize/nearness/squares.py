@@ -61,8 +61,9 @@ __all__ = ["Cover", "Reduced"]
 
 Array = np.ndarray[Any, Any]
 
-_DEEPEST: Final = 48
-"""How often a square may be halved inside one reduced problem; its floats have 53 bits."""
+_DEEPEST: Final = 44
+"""How often a square may be halved inside one reduced problem: the centres, whose grid has six bits
+of its own, are then doubles exactly."""
 
 _WIDEST: Final = (256, 64)
 """How many squares of one size may stay open inside one reduced problem, of one row or more."""
@@ -171,7 +172,8 @@ class Reduced:
         wanted = (target + self.shift) * self.stretch * (1 + _SAFE)
         sizes = self._sizes()
         count = np.arange(len(sizes))
-        horner = 16 * (len(sizes) + 2) * ROUNDOFF
+        # What evaluating Y and, times h, its derivative can round.
+        horner = 16 * (len(sizes) + 2) ** 2 * ROUNDOFF
         xs = ys = np.zeros(1, dtype=np.int64)
         left: list[tuple[int, int, int]] = []
         low: complex | None = None
