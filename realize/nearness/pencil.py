@@ -29,7 +29,6 @@ singular value of the pencil.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
 from fractions import Fraction
 from typing import Any, Final
 
@@ -55,19 +54,25 @@ def rounded(point: Point) -> complex:
     return complex(float(point[0]), float(point[1]))
 
 
-def _binary_exponent(values: Iterable[Fraction]) -> int | None:
-    """Return e with 2^(e-1) < the largest size < 2^(e+1); None when all are zero."""
-    return max(
-        (abs(v.numerator).bit_length() - v.denominator.bit_length() for v in values if v),
-        default=None,
-    )
+def _read(A: Array, B: Array) -> tuple[int, Array, bool]:
+    """Return the exponent of the unit, [A, B] in that unit, and whether doubles hold it exactly.
 
-
-def _scaled(values: Array, exponent: int) -> Array:
-    """Return rationals times 2^-exponent as doubles, each correctly rounded."""
+    The largest entry comes to lie between 1/2 and 2; each entry is correctly rounded.
+    """
+    entries = [v.as_integer_ratio() for v in np.hstack([A, B]).ravel().tolist()]
+    lengths = [(p.bit_length(), q.bit_length()) for p, q in entries]
+    exponent = max((a - b for a, b in lengths if a), default=None)
+    if exponent is None:
+        raise ZeroDivisionError("the pencil of a pair of zeros has no unit")
     up, down = max(-exponent, 0), max(exponent, 0)
-    flat = [(v.numerator << up) / (v.denominator << down) for v in values.ravel().tolist()]
-    return np.array(flat, dtype=float).reshape(values.shape)
+    flat = [(p << up) / (q << down) if p else 0.0 for p, q in entries]
+    # Fractions are in lowest terms: a short numerator over a power of two is a double.
+    exact = all(
+        a <= 53 and not q & (q - 1) and a - b > exponent - 1000
+        for (_, q), (a, b) in zip(entries, lengths, strict=True)
+        if a
+    )
+    return exponent, np.array(flat).reshape(len(A), -1), exact
 
 
 class Pencil:
@@ -91,38 +96,19 @@ class Pencil:
     """
 
     def __init__(self, A: Array, B: Array) -> None:
-        exponent = _binary_exponent((*A.ravel().tolist(), *B.ravel().tolist()))
-        if exponent is None:
-            raise ZeroDivisionError("the pencil of a pair of zeros has no unit")
         self.exact = A, B
-        self.exponent = exponent
         self.order, self.inputs = B.shape
-        self.A, self.B = _scaled(A, exponent), _scaled(B, exponent)
-        self.slack = self._rounding()
-        self.size = 1.0001 * math.hypot(
-            float(np.linalg.norm(self.A)), float(np.linalg.norm(self.B))
-        )
+        self.exponent, whole, exact = _read(A, B)
+        self.A = np.ascontiguousarray(whole[:, : self.order])
+        self.B = np.ascontiguousarray(whole[:, self.order :])
+        size = float(np.linalg.norm(whole))
+        self.slack = 0.0 if exact else 2 * ROUNDOFF * size + _TINY
+        self.size = 1.0001 * size
         self.evaluations = 0
         self._gram = self.A @ self.A.T + self.B @ self.B.T
         self._sum, self._difference = self.A + self.A.T, self.A - self.A.T
         self._gram_trace, self._trace = float(np.trace(self._gram)), float(np.trace(self.A))
         self._balls: tuple[int, list[list[Any]]] = (0, [])
-
-    def _rounding(self) -> float:
-        """Return a bound of the 2-norm of what rounding changed."""
-        # Fractions are in lowest terms: a short numerator over a power of two is a double.
-        exact = all(
-            not v.denominator & (v.denominator - 1)
-            and v.numerator.bit_length() <= 53
-            and v.numerator.bit_length() - v.denominator.bit_length() > self.exponent - 1000
-            for matrix in self.exact
-            for v in matrix.ravel().tolist()
-            if v
-        )
-        if exact:
-            return 0.0
-        size = math.hypot(float(np.linalg.norm(self.A)), float(np.linalg.norm(self.B)))
-        return 2 * ROUNDOFF * size + _TINY
 
     @property
     def unit(self) -> Fraction:

@@ -13,11 +13,14 @@ both are below 0.01. So
 
     sigma(M) >= sigma([S 0] - w P) (1 - dU - dV) - |E| - 1.1 |w| (dU + dV),
 
-and G11 = S1, G12 = 0, G21 = 0 in the text of `realize.nearness.squares`. The products U*U, V V* and
-U S V are computed; each rounds by at most ``gamma_{4 n}`` times the product of the moduli
-(Higham 2002, sections 3.5 and 3.6), whose Frobenius norm is at most n, n + m and
-``sqrt(n) |S|``. The rows c_j and the terms y_j round too: a product of a row with P11 by at most
-``e = 8 n gamma_4`` of its length per step, which sums to less than ``6 e r^2 q`` for r q <= 1/2.
+and G11 = S1, G12 = 0, G21 = 0 in the text of `realize.nearness.squares`. The products U*U, V V*
+and U S V are computed. A complex product of inner length n rounds by at most ``gamma_{2n+4}``
+times the product of the moduli (Higham 2002, sections 3.5 and 3.6), and ``| |U| |_2 <= sqrt(n)``:
+so U*U and V V* are good to ``6 N^2 u``, N their size, and U S V to ``6 n sqrt(n) u |M|``,
+Frobenius norms. A row c_j is multiplied by P11 through U1 and V1, at ``2 gamma_{2n+4} sqrt(n)`` of
+its length per step; with P12, of k + m columns, the terms from y_2 on are good to ``e = 14 n
+sqrt(n (k + m)) u`` of ``j q^(j-1)``, which sums to less than ``6 e r^2 q`` over ``j >= 2`` for r q
+<= 1/2, and y_1 to ``(2 n + 8) sqrt(k (k + m)) u``.
 
 *In balls.* ``G = U* M(c) V*`` and ``P = U* [I 0] V*`` are enclosed; ``G11 = S1 + F`` with F small,
 and ``x G11^-1`` is the limit of ``x -> (b - x F) S1^-1``; after i steps, begun at zero, the error
@@ -62,7 +65,7 @@ Array = np.ndarray[Any, Any]
 _LONGEST: Final = 80
 """How many terms of the series are taken at most; the square must be smaller then."""
 
-MOST_ROWS: Final = 3
+MOST_ROWS: Final = 5
 """How many singular directions are kept at most."""
 
 _MOST_ROWS_BELOW: Final = 8
@@ -117,7 +120,7 @@ def _turns(found: Decomposed) -> tuple[float, float]:
         size = len(factor)
         product = factor.conj().T @ factor
         np.einsum("ii->i", product)[...] -= 1
-        bounds.append(1.01 * (float(np.linalg.norm(product)) + 5 * size * size * ROUNDOFF))
+        bounds.append(1.01 * (float(np.linalg.norm(product)) + 6 * size * size * ROUNDOFF))
     return bounds[0], bounds[1]
 
 
@@ -149,7 +152,8 @@ def reduce_in_doubles(
     large = s[: n - k]
     gap = float(large[-1]) if n > k else math.inf
     corner = X.conj().T @ Z
-    terms = [np.zeros_like(corner), -corner]
+    scale = _power_above(radius)
+    terms = [np.zeros_like(corner), -corner * scale]
     terms[0][:, :k] = np.diag(s[n - k :])
     left = right = 0.0
     missing = 0.0
@@ -162,23 +166,26 @@ def reduce_in_doubles(
         share = radius / gap
         if share > 0.5:
             return None
-        rows = -rows
-        power = radius * radius
+        rows = -rows * scale
+        power = radius * radius / scale
         while True:
-            terms.append(rows @ columns)
+            terms.append(rows @ columns * scale)
             missing = power * share * float(np.linalg.norm(rows)) * breadth / (1 - share)
             if missing <= enough:
                 break
             if len(terms) > _LONGEST:
                 return None
-            rows = ((rows @ U1.conj().T) @ V1) / large
-            power *= radius
-        missing = 1.001 * missing + 6 * (34 * n * ROUNDOFF) * radius * share
+            rows = ((rows @ U1.conj().T) @ V1) * (scale / large)
+            power *= radius / scale
+        step = 14 * n * math.sqrt(n * (k + pencil.inputs)) * ROUNDOFF
+        missing = 1.001 * missing + 6 * step * radius * share
+    missing += 1.01 * radius * (2 * n + 8) * math.sqrt(k * (k + pencil.inputs)) * ROUNDOFF
     return Reduced(
         terms=np.array(terms),
+        scale=scale,
         gap=gap * (1 - 1e-12),
-        left=left + 1e-12 / gap,
-        right=right + 1e-12 / gap,
+        left=left + 1e-11 / gap,
+        right=right + 1e-11 / gap,
         left_rest=0.0,
         right_rest=0.0,
         radius=radius * (1 + 1e-12),
@@ -197,6 +204,11 @@ def reduce_in_doubles(
 def bits_for(target: float, rtol: float) -> int:
     """Return the precision in which a distance of that size can be told to that ratio."""
     return 53 + _SPARE_BITS + math.ceil(-math.log2(target) - math.log2(rtol))
+
+
+def _power_above(radius: float) -> float:
+    """Return the least power of two above a number."""
+    return math.ldexp(1.0, math.frexp(radius)[1])
 
 
 def _balls(values: Array) -> Any:
@@ -326,22 +338,26 @@ def reduce_in_balls(
     enclosed = [exact.corner - beside * exact.above]
     # Errors of the rows enter the terms from w on, and those of later rows from w^2 on.
     fine = enough / max(radius * breadth, 1e-300) if math.isfinite(enough) else 1e-20
-    rows = exact.over(beside * exact.inner_slope, fine) - beside_slope
-    enclosed.append(beside * exact.above_slope - exact.corner_slope - rows * exact.above)
+    scale = _power_above(radius)
+    unit = acb(scale)
+    rows = (exact.over(beside * exact.inner_slope, fine) - beside_slope) * unit
+    first = (beside * exact.above_slope - exact.corner_slope) * unit
+    enclosed.append(first - rows * exact.above)
     # How many terms are needed is guessed from midpoints, and then proved once.
     row, inner, large = _midpoints(rows)[0], _midpoints(exact.inner_slope)[0], exact.large
-    count, power = 0, radius * radius
-    while n > k and power * float(np.linalg.norm(row)) * breadth > enough / 2:
-        row = (row @ inner) / large
-        power *= radius
+    count, share_left = 0, radius / scale
+    while n > k and share_left * radius * float(np.linalg.norm(row)) * breadth > enough / 2:
+        row = (row @ inner) * (scale / large)
+        share_left *= radius / scale
         count += 1
         if count > _LONGEST:
             return None
     for _ in range(max(count, 1)):
-        enclosed.append(rows * exact.above_slope)
-        rows = exact.over(rows * exact.inner_slope, fine)
+        enclosed.append(rows * exact.above_slope * unit)
+        rows = exact.over(rows * exact.inner_slope, fine) * unit
         enclosed[-1] = enclosed[-1] - rows * exact.above
-    missing = radius ** len(enclosed) * _size(rows) * (breadth + above / gap) / (1 - share)
+    missing = radius * (radius / scale) ** (len(enclosed) - 1) * _size(rows)
+    missing *= (breadth + above / gap) / (1 - share)
     if missing > 2 * enough:
         return None
     terms, power = [], 1.0
@@ -349,12 +365,13 @@ def reduce_in_balls(
         middles, rest = _midpoints(matrix)
         terms.append(middles)
         missing += power * rest
-        power *= radius
+        power *= radius / scale
     columns, columns_rest = _midpoints(exact.above_slope)
     right = float(np.linalg.norm(columns / exact.large[:, None])) + columns_rest / s
     stretched = 1 / (1 - exact.rest_size / s)
     return Reduced(
         terms=np.array(terms),
+        scale=scale,
         gap=gap / (1 + 2 * turn),
         left=_size(beside_slope),
         right=1.001 * right * stretched,

@@ -59,7 +59,7 @@ _SHARE: Final = 0.05
 _NEWS: Final = 0.2
 """Share of the room between the bounds by which a value must undercut the upper one to be news."""
 
-_STARTS: Final = 3
+_STARTS: Final = 2
 """How many eigenvalues the local search begins from."""
 
 _STEPS: Final = 30
@@ -200,7 +200,8 @@ class Search:
             return _sketch(found)
         self.when_small()
         reduced, left, least = self._in_balls(found)
-        terms = left.conj() @ reduced.terms
+        terms = left.conj() @ reduced.terms[:3]
+        terms /= (reduced.scale ** np.arange(len(terms)))[:, None]
         return _Local(
             point=point,
             value=least,
@@ -282,7 +283,8 @@ class Search:
             With `lower` as far as it was proved.
         """
         low, high, top = self.pencil.field_of_values()
-        room = self.upper * (1 + 1e-9) + self.pencil.slack
+        # The last term is for the rounding of the few sums below.
+        room = self.upper * (1 + 1e-9) + self.pencil.slack + 16 * ROUNDOFF * self.pencil.size
         width = high - low + 2 * room
         height = max(top + room, width / 8)
         # Corners must be doubles, so the grid has few bits: its unit is a power of two.

@@ -61,10 +61,11 @@ __all__ = ["Cover", "Reduced"]
 
 Array = np.ndarray[Any, Any]
 
-_DEEPEST: Final = 48
-"""How often a square may be halved inside one reduced problem; its floats have 53 bits."""
+_DEEPEST: Final = 44
+"""How often a square may be halved inside one reduced problem: the centres, whose grid has six bits
+of its own, are then doubles exactly."""
 
-_WIDEST: Final = (256, 32)
+_WIDEST: Final = (256, 64)
 """How many squares of one size may stay open inside one reduced problem, of one row or more."""
 
 _FEW: Final = 5
@@ -93,7 +94,9 @@ class Reduced:
     Attributes
     ----------
     terms : complex array (J + 1, k, k + m)
-        y_0, ..., y_J.
+        y_0, y_1 scale, ..., y_J scale^J, so that neither they nor their squares overflow.
+    scale : float
+        A power of two, not below the radius.
     gap : float
         A lower bound of the least singular value of G11; divided into |w| wherever T is inverted.
     left, right : float
@@ -111,6 +114,7 @@ class Reduced:
     """
 
     terms: Array
+    scale: float
     gap: float
     left: float
     right: float
@@ -127,24 +131,18 @@ class Reduced:
         return int(self.terms.shape[1])
 
     def _sizes(self) -> Array:
-        """Return |y_j|, (J + 1)."""
+        """Return |y_j| scale^j, (J + 1)."""
         return np.asarray(np.sqrt((np.abs(self.terms) ** 2).sum(axis=(1, 2))))
 
     def at(self, offsets: Array) -> tuple[Array, Array]:
         """Return Y and its derivative at offsets (N), each of shape (N, k, k + m)."""
-        w = offsets[:, None, None]
+        w = offsets[:, None, None] / self.scale
         value = np.broadcast_to(self.terms[-1], (len(offsets), *self.terms.shape[1:])).copy()
         slope = np.zeros_like(value)
         for term in self.terms[-2::-1]:
             slope = slope * w + value
             value = value * w + term
-        return value, slope
-
-    def upper(self, offsets: Array) -> Array:
-        """Return about the least singular value of M at offsets, from above but for rounding."""
-        value, _ = self.at(offsets)
-        turned = self.left * np.abs(offsets) / np.maximum(1 - np.abs(offsets) / self.gap, 0.1)
-        return _least(value) / np.sqrt(1 + turned**2)
+        return value, slope / self.scale
 
     def _inside(self, eta_inverse: Array, reach: Array, target: float) -> Array:
         """Whether (lower) shows sigma(M) >= target, for 1 / eta and |w| given."""
@@ -174,7 +172,8 @@ class Reduced:
         wanted = (target + self.shift) * self.stretch * (1 + _SAFE)
         sizes = self._sizes()
         count = np.arange(len(sizes))
-        horner = 16 * (len(sizes) + 2) * ROUNDOFF
+        # What evaluating Y and, times h, its derivative can round.
+        horner = 16 * (len(sizes) + 2) ** 2 * ROUNDOFF
         xs = ys = np.zeros(1, dtype=np.int64)
         left: list[tuple[int, int, int]] = []
         low: complex | None = None
@@ -183,13 +182,15 @@ class Reduced:
             half = step * 0.7071067811865476 * (1 + 1e-14)
             w = (-side / 2 + (xs + 0.5) * step) + 1j * (-side / 2 + (ys + 0.5) * step)
             reach = (np.abs(w) + half) * (1 + 1e-14)
-            powers = reach[:, None] ** count
+            powers = (reach[:, None] / self.scale) ** count
             lost = self.tail + horner * (powers @ sizes)
             bend = (powers[:, : len(sizes) - 2] * (count[2:] * (count[2:] - 1))) @ sizes[2:]
             value, slope = self.at(w)
             least, here = _least_over(value, slope, step, half)
             proved = self._inside(
-                least * (1 - _SAFE) - lost - half**2 / 2 * bend * (1 + _SAFE), reach, wanted
+                least * (1 - _SAFE) - lost - (half / self.scale) ** 2 / 2 * bend * (1 + _SAFE),
+                reach,
+                wanted,
             )
             below = here < news
             if below.any():

@@ -77,8 +77,9 @@ CASES: dict[str, tuple[tuple[Rows, Rows], float, complex | None, float]] = {
         23.857142505 + 12.062694379j,
         1e-6,
     ),
-    # Chen 1999, Linear System Theory and Design, ch. 6; distance recomputed.
-    "D-06": (PENDULUM, 0.491085563460386638874, 0.487440611110526546 + 0j, 1e-9),
+    # Chen 1999, Linear System Theory and Design, ch. 6; distance recomputed. Attained at
+    # 0.487440611110526546 and at its mirror image.
+    "D-06": (PENDULUM, 0.491085563460386638874, None, 1e-9),
     # Brockett 1970, Finite Dimensional Linear Systems; distances recomputed.
     "D-07, tangential": ((SATELLITE, unit_column(4, 3)), 0.352695761861954376801, None, 1e-9),
     "D-07, both": (

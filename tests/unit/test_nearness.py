@@ -31,6 +31,7 @@ from realize.nearness.proof import (
 )
 from realize.nearness.witness import root_above
 from realize.polynomials import working_precision
+from tests.helpers import walk
 
 GAO = Realization([[1, 1, 1], ["0.1", 3, 5], [0, -1, -1]], [1, "0.1", 0], [1, 0, 2])
 
@@ -250,6 +251,7 @@ def test_both_makers_give_the_same_problem() -> None:
     assert first is not None
     assert second is not None
     count = min(len(first.terms), len(second.terms))
+    assert first.scale == second.scale
     assert np.abs(first.terms[:count] - second.terms[:count]).max() < 1e-13
     assert first.left == pytest.approx(second.left, rel=1e-6)
     # The bound of the second is the looser one, by a thousandth.
@@ -357,3 +359,32 @@ def test_pickles() -> None:
     assert again.real_upper == found.real_upper
     assert again.witness == found.witness
     assert repr(again) == repr(found)
+
+
+def test_results_are_plain_and_precision_is_left_alone() -> None:
+    """No object of FLINT is in the answer, and its precision is what it was, balls or no balls."""
+    import flint
+
+    before = flint.ctx.prec
+    weak = Realization([[2, 0], [0, "1/3"]], [1, "1e-25"], [1, 1])
+    for model in (weak, GAO):
+        found = distance_to_uncontrollability(model)
+        assert found.real_upper > 0
+        for where, value in walk(found):
+            assert not type(value).__module__.startswith("flint"), where
+    assert flint.ctx.prec == before
+
+
+def test_rationals_that_no_double_holds() -> None:
+    """Thirds and sevenths: the rounding of the entries is part of what is proved."""
+    model = Realization(
+        [["1/3", "2/7", 1], ["-1/7", "1/9", "1/3"], [0, "5/7", "-1/3"]],
+        ["1/3", 0, "1/11"],
+        [1, 0, 0],
+    )
+    assert pencil_of(model).slack > 0
+    found = distance_to_uncontrollability(model, rtol=1e-8)
+    near = distance_to_uncontrollability(model.to_float(), rtol=1e-8)
+    assert found.lower <= near.upper * (1 + 1e-12)
+    assert near.lower <= found.upper * (1 + 1e-12)
+    assert found.upper != near.upper
