@@ -80,7 +80,7 @@ def alike(
         matrices = tuple(in_doubles(matrix) for matrix in model.matrices())
     except EntryError:
         return ()
-    size = float(np.linalg.norm(matrices[0]))
+    size = math.hypot(*matrices[0].ravel().tolist())  # infinite without a word where it overflows
     upper = [
         mode
         for mode in modes
@@ -141,7 +141,7 @@ def _zeros(matrices: Sequence[Array], radii: MatrixRadii | None) -> list[tuple[c
     )
     found = []
     for k in range(n + inputs):
-        overlap = abs(np.vdot(left[:n, k], right[:n, k]))
+        overlap = float(abs(np.vdot(left[:n, k], right[:n, k])))
         if abs(below[k]) <= _AT_INFINITY * abs(above[k]) or not overlap:
             continue
         with np.errstate(all="ignore"):

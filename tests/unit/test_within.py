@@ -345,7 +345,8 @@ def test_an_open_question_has_both_bounds() -> None:
     assert found.witness is None
     weighed = found.weighed
     assert weighed is not None
-    assert 0.3 < weighed.proved < 1 < weighed.reached < 1.2
+    # How near the bounds come depends on how much a machine does in that time.
+    assert 0 < weighed.proved < 1 < weighed.reached < 2
     assert found.status == 3
     assert found.answer.order == 6
     assert weighed.unfinished
