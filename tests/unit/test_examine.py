@@ -275,7 +275,7 @@ def test_equal_readings_are_computed_once(
     model: Realization, answers: int, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     """Readings that give one exact model share one exact answer."""
-    room = sys.modules["realize.examination.examine"]
+    room = sys.modules["realize.examination.answer"]
     made: list[Realization] = []
     original = room.ExactAnswer  # type: ignore[attr-defined]
 
@@ -743,7 +743,7 @@ def test_without_time_for_any_steps_the_answer_is_the_floating_one(
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:
     """No time at all: nothing is proved, every reading is named with the reason, status 3."""
-    monkeypatch.setattr(sys.modules["realize.examination.examine"], "STEPS_BUDGET", 0.0)
+    monkeypatch.setattr(sys.modules["realize.examination.answer"], "STEPS_BUDGET", 0.0)
     found = examine(chamber(), budget=0)
     assert found.answer.basis == "floating"
     assert found.answer.order == found.floating_order == 1

@@ -18,7 +18,7 @@ from realize.arithmetic.modular import Clock
 from realize.arithmetic.steps import PrecisionSteps, precision_steps
 from realize.entries import Reading
 from realize.examination import stepped
-from realize.examination.examine import _reading_seconds
+from realize.examination.answer import reading_seconds
 from tests.helpers import (
     CONTROLLABLE_OBSERVABLE,
     CONTROLLABLE_UNOBSERVABLE,
@@ -30,7 +30,7 @@ pytestmark = pytest.mark.filterwarnings("ignore::realize.HiddenInstabilityWarnin
 
 F = Fraction
 ROOT = sympy.sqrt(2)
-ROOM = sys.modules["realize.examination.examine"]
+ROOM = sys.modules["realize.examination.answer"]
 
 
 def in_coordinates(A: Any, B: Any, C: Any, T: Any, **options: Any) -> Realization:
@@ -461,9 +461,9 @@ def test_the_estimate_of_reading_knows_connections() -> None:
         products, found = connection.work()
         assert found == largest
         assert products >= 2 * largest * model.order
-        apart = sum(_reading_seconds(each, Reading.STORED) for each in connection.blocks)
-        assert _reading_seconds(model, Reading.STORED) > apart
-    assert _reading_seconds(wide, Reading.INTENDED) > 5 * _reading_seconds(wide, Reading.STORED)
+        apart = sum(reading_seconds(each, Reading.STORED) for each in connection.blocks)
+        assert reading_seconds(model, Reading.STORED) > apart
+    assert reading_seconds(wide, Reading.INTENDED) > 5 * reading_seconds(wide, Reading.STORED)
     # Substitution is no loop: a chain without feedthrough has none.
     chain = cascade(block(3, 1), Realization([[-1.0]], [1.0], [1.0]))._connection
     assert chain is not None

@@ -30,7 +30,7 @@ from realize.stability import (
 )
 
 F = Fraction
-ROOM = sys.modules["realize.examination.examine"]
+ROOM = sys.modules["realize.examination.answer"]
 
 
 def fraction(numerator: list[object], denominator: list[object]) -> Realization:
