@@ -25,7 +25,7 @@ _AT_INFINITY: Final = 1e-8
 """Share of its partner below which the second of a pair of generalised eigenvalues is zero."""
 
 _BLURRED: Final = 0.1
-"""Sensitivity over the largest entry of A above which a value says nothing, and so agrees with nothing."""
+"""Sensitivity over the largest entry of A above which a value says nothing: it agrees with none."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
