@@ -25,7 +25,7 @@ _AT_INFINITY: Final = 1e-8
 """Share of its partner below which the second of a pair of generalised eigenvalues is zero."""
 
 _BLURRED: Final = 0.1
-"""Sensitivity over the size of A above which a value says nothing, and so agrees with nothing."""
+"""Sensitivity over the largest entry of A above which a value says nothing: it agrees with none."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -80,7 +80,7 @@ def alike(
         matrices = tuple(in_doubles(matrix) for matrix in model.matrices())
     except EntryError:
         return ()
-    size = math.hypot(*matrices[0].ravel().tolist())  # infinite without a word where it overflows
+    size = float(np.abs(matrices[0]).max(initial=0.0))
     upper = [
         mode
         for mode in modes
@@ -95,9 +95,10 @@ def alike(
                 _compare(found, mode, other.value, other.sensitivity or 0.0, is_zero=False)
     visible = [mode for mode in upper if mode.part is Part.CONTROLLABLE_OBSERVABLE]
     hidden = [mode.value for mode in upper if mode.part is not Part.CONTROLLABLE_OBSERVABLE]
-    zeros = [
-        zero for zero in _zeros(matrices, radii) if zero[0].imag >= 0 and zero[1] <= _BLURRED * size
-    ]
+    # Where numbers overflow, no zero is found that is finite.
+    with np.errstate(all="ignore"):
+        every = _zeros(matrices, radii)
+    zeros = [zero for zero in every if zero[0].imag >= 0 and zero[1] <= _BLURRED * size]
     for value in hidden:
         if zeros:
             zeros.pop(min(range(len(zeros)), key=lambda k: abs(zeros[k][0] - value)))
@@ -144,8 +145,7 @@ def _zeros(matrices: Sequence[Array], radii: MatrixRadii | None) -> list[tuple[c
         overlap = float(abs(np.vdot(left[:n, k], right[:n, k])))
         if abs(below[k]) <= _AT_INFINITY * abs(above[k]) or not overlap:
             continue
-        with np.errstate(all="ignore"):
-            change = float(np.abs(left[:, k]) @ data @ np.abs(right[:, k])) / overlap
+        change = float(np.abs(left[:, k]) @ data @ np.abs(right[:, k])) / overlap
         if math.isfinite(change) and below[k]:
             found.append((complex(above[k] / below[k]), change))
     return found

@@ -338,9 +338,11 @@ def open_case() -> Realization:
     return Realization(*(rng.standard_normal(s).round(3) for s in ((6, 6), (6, 1), (1, 6))))
 
 
-def test_an_open_question_has_both_bounds() -> None:
+def test_an_open_question_has_both_bounds(monkeypatch: pytest.MonkeyPatch) -> None:
     """What is proved, what was reached, what counts most, and what would settle it."""
-    found = examine(open_case(), uncertainty=0.05, budget=4)
+    # Ended by work done, not by the clock.
+    monkeypatch.setattr("realize.within.weigh._PIECES", 100)
+    found = examine(open_case(), uncertainty=0.05, budget=None)
     assert found.within_uncertainty is Within.OPEN
     assert found.witness is None
     weighed = found.weighed
