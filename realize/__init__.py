@@ -62,6 +62,11 @@ if TYPE_CHECKING:
     from realize.model.files import load, save
     from realize.model.realization import Realization
     from realize.model.transfer import TransferMatrix
+    from realize.nearness.distance import (
+        Distance,
+        distance_to_uncontrollability,
+        distance_to_unobservability,
+    )
     from realize.proof.certify import certify
     from realize.proof.compare import same_transfer
     from realize.proof.record import Certificate, Comparison, check
@@ -89,6 +94,7 @@ __all__ = [
     "CertificateError",
     "Comparison",
     "DisagreementError",
+    "Distance",
     "EntryError",
     "Examination",
     "HiddenInstabilityWarning",
@@ -128,6 +134,8 @@ __all__ = [
     "certify",
     "check",
     "companion",
+    "distance_to_uncontrollability",
+    "distance_to_unobservability",
     "exact",
     "examine",
     "floating",
@@ -199,6 +207,11 @@ _HOMES = {
     "realize.proof.certify": ("certify",),
     "realize.proof.compare": ("same_transfer",),
     "realize.proof.record": ("Certificate", "Comparison", "check"),
+    "realize.nearness.distance": (
+        "Distance",
+        "distance_to_uncontrollability",
+        "distance_to_unobservability",
+    ),
     "realize.results": (
         "Cancellation",
         "KalmanParts",

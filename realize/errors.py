@@ -359,14 +359,28 @@ class BudgetError(RealizeError, RuntimeError):
     ----------
     budget, spent : float or None
         Seconds allowed and seconds used.
+    lower, upper : float or None
+        The bounds of a distance that were reached, both proved; None where there are none.
+    point : complex or None
+        Where the upper bound is attained.
     """
 
     def __init__(
-        self, message: str, *, budget: float | None = None, spent: float | None = None
+        self,
+        message: str,
+        *,
+        budget: float | None = None,
+        spent: float | None = None,
+        lower: float | None = None,
+        upper: float | None = None,
+        point: complex | None = None,
     ) -> None:
         super().__init__(message)
         self.budget = budget
         self.spent = spent
+        self.lower = lower
+        self.upper = upper
+        self.point = point
 
 
 class CertificateError(RealizeError, ValueError):

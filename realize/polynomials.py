@@ -606,7 +606,7 @@ def root_boxes(f: Polynomial) -> Iterator[tuple[int, tuple[Box, ...]]]:
 
 
 @contextmanager
-def _working_precision(bits: int) -> Iterator[None]:
+def working_precision(bits: int) -> Iterator[None]:
     """Set FLINT's precision for the block and put it back, one thread at a time."""
     from flint import ctx
 
@@ -654,7 +654,7 @@ def _interval(x: arb) -> _Interval:
 def _enclosures(f: Polynomial, bits: int) -> list[acb]:
     """Disjoint balls around the roots of a squarefree polynomial, real ones exactly real."""
     integer_form = to_flint(f).numer()
-    with _working_precision(bits):
+    with working_precision(bits):
         # FLINT's type stubs leave out the multiplicity that comes with each root.
         pairs = cast("list[tuple[acb, int]]", integer_form.complex_roots())
     return [root for root, _ in pairs]
@@ -692,7 +692,7 @@ def _square_roots(half: Polynomial, bits: int) -> list[tuple[_Interval, _Interva
     """One square root, in the closed first quadrant, of each root of `half` not below the axis."""
     result: list[tuple[_Interval, _Interval]] = []
     enclosures = _enclosures(half, bits)
-    with _working_precision(bits):
+    with working_precision(bits):
         for y in enclosures:
             if y.imag.is_zero():
                 if y.real.contains(0):

@@ -22,9 +22,13 @@ from realize.errors import ToleranceError
 
 __all__ = [
     "DEFAULT_FACTOR",
+    "DEFAULT_RTOL",
+    "DISTANCE_BUDGET",
     "FLOOR_FACTOR",
     "LOOP_MARGIN",
     "SAME_MODE",
+    "SMALLEST_RTOL",
+    "check_rtol",
     "check_tolerance",
     "cutoff",
     "default_tolerance",
@@ -60,6 +64,35 @@ that has no solution; and the connected model has lost six digits of the doubles
 
 SHARE_OF_DIGITS: Final = Fraction(1, 2)
 """Share of the digits of the multiprecision path within which a number counts as not zero."""
+
+DEFAULT_RTOL: Final = 0.1
+"""Room between the bounds of a distance, over the upper one: what a distance is for is its size."""
+
+SMALLEST_RTOL: Final = 1e-10
+"""The least such room: the bounds are doubles, and so is most of what they are computed from."""
+
+DISTANCE_BUDGET: Final = 300.0
+"""Seconds that a distance may take unless another budget is given: 60 states with one input and a
+distance below the roundoff are done in that time."""
+
+
+def check_rtol(rtol: float) -> float:
+    """Return the room between the bounds that a caller allows; refuse what is none.
+
+    Raises
+    ------
+    ToleranceError
+        When it is no real number, not below 1, or below `SMALLEST_RTOL`.
+    """
+    number = isinstance(rtol, (int, float)) and not isinstance(rtol, bool)
+    if not number or not SMALLEST_RTOL <= rtol < 1:
+        raise ToleranceError(
+            f"rtol is {rtol!r}; wanted a number from {SMALLEST_RTOL:g} to below 1, the room "
+            "between the bounds over the upper one",
+            argument="rtol",
+            found=repr(rtol),
+        )
+    return float(rtol)
 
 
 def check_tolerance(tolerance: float | None) -> float | None:

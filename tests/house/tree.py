@@ -22,6 +22,7 @@ ROOMS: tuple[tuple[str, ...], ...] = (
     ("forms",),
     ("exact", "floating", "multiprecision", "dispatch"),
     ("convert",),
+    ("nearness",),
     ("examination", "proof"),
     ("",),
     ("testing",),

@@ -23,7 +23,6 @@ from realize.polynomials import (
     Polynomial,
     Root,
     _disjoint,
-    _working_precision,
     add,
     degree,
     derivative,
@@ -41,6 +40,7 @@ from realize.polynomials import (
     strip,
     text,
     to_flint,
+    working_precision,
 )
 
 
@@ -583,7 +583,7 @@ def test_a_thread_waits_while_another_has_changed_the_precision() -> None:
     """Only one thread at a time may hold FLINT's precision, or it would be put back wrong."""
     before = flint.ctx.prec
     thread = threading.Thread(target=roots, args=(poly(1, 0, 1, -3),))
-    with _working_precision(before + 100):
+    with working_precision(before + 100):
         thread.start()
         thread.join(0.2)
         assert thread.is_alive()
