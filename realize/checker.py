@@ -19,10 +19,10 @@ at. Models are (A, B, C, D), of order n; H = D + C (z - A)^-1 B is the transfer 
    determinant is then a unit modulo N, hence not zero modulo N, for N >= 2 (modulo 1 zero is a
    unit, and everything has every rank), hence not zero. N need not be prime: an element that is
    no unit is never used as a pivot, so a composite N can only make the test fail.
-3. *A model realizes the fractions beside it.* For an entry with row c of C, column b of B, and d
-   of D, and a fraction n/f of degree t, let w = 0 and for e = t, ..., 0 let n_e = c w + f_e d, then
-   w := A w + f_e b. These n_e are the coefficients of z^e, e >= 0, in f H, and those of z^-1,
-   z^-2, ... are c w, c A w, ... with the last w: if the first n vanish, all do (Cayley, Hamilton).
+3. *A model realizes the fractions beside it.* With h_0 = D, h_j = C A^(j-1) B and
+   f h = sum of f_l h_j z^(l-j), t/f = h when the coefficients of z^e in f h are those of t for
+   e >= 0 and vanish for e < 0. The latter are c A^(-e-1) x for some vectors c and x, so if the
+   first n of them (the order of the model) vanish all do (Cayley and Hamilton).
 4. *Two models differ at a point.* z - A is invertible, because it is modulo N; so a solution X of
    (z - A) X = B is (z - A)^-1 B, and C X + D is the value of H. The two values differ.
 5. *Doubles delivered lie near.* The sum of the squares of all differences is compared.
@@ -253,12 +253,17 @@ class Proof:
 
     def product(self, left: Matrix, right: Matrix) -> Matrix:
         """Return a product. Its rows are empty where there is nothing to sum: they are zero."""
-        columns, longest = list(zip(*right[0], strict=True)), bits(*right[0])
+        result, width, longest = [], len(right[0][0]) if right[0] else 0, bits(*right[0])
         for row in left[0]:
-            used, width = len(row) - row.count(0), len(columns)
-            self.spend((used + len(row) // 8 + 4) * width, width + 4, bits(row), longest)
-        rows = [[sum(map(mul, row, column)) for column in columns] for row in left[0]]
-        return rows, left[1] * right[1]
+            used = [j for j, x in enumerate(row) if x]
+            self.spend((len(used) + 4) * width + 20, width + 4, bits(row), longest)
+            weights, columns = (
+                [row[j] for j in used],
+                zip(*(right[0][j] for j in used), strict=True),
+            )
+            sums = [sum(map(mul, weights, column)) for column in columns]
+            result.append(sums if used else [0] * width)
+        return result, left[1] * right[1]
 
     def minus(self, left: Matrix, right: Matrix) -> Matrix:
         """Return a difference; empty rows are zero."""
@@ -333,19 +338,22 @@ class Proof:
             [items(row, list, model.m, where) for row in items(table, list, model.p, where)]
             for table in take(transfer, where, ("numerators", "denominators"))
         )
-        (A, q), (B, _), (C, _), (D, _) = model.matrices
+        A, power, C, D = model.matrices
+        markov = [D]
+        for _ in range(max((len(f) for row in downs for f in row), default=1) - 1 + model.n):
+            markov.append(self.product(C, power))
+            power = self.product(A, power)
         for i, j in pairs(range(model.p), range(model.m)):
             t, f = tops[i][j], downs[i][j]
             demand(0 < len(t) <= len(f), f"{where}: not a proper fraction")
             (t, f), _ = self.table([["0"] * (len(f) - len(t)) + t, f], 2, len(f), where)
             demand(f[0], f"{where}: not a proper fraction")
-            step = [[*C[i], D[i][j]], *([*row, b[j]] for row, b in zip(A, B, strict=True))]
-            w, power, more, longest = [[0]] * model.n, 1, [0] * model.n, bits(f, t)
-            for x, y in zip(f + more, t + more, strict=True):
-                self.spend(40, 9, longest, power.bit_length() + q.bit_length())
-                (value, *w), _ = self.product((step, q), ([*w, [x * power]], 1))
-                power *= q
-                demand(value[0] == y * power, f"{where}: entry {i + 1}, {j + 1} is not realized")
+            last = markov[len(f) - 1 + model.n][1]
+            self.spend(len(f) * (len(f) + model.n), 2 * len(f), last.bit_length(), bits(f, t))
+            h = [rows[i][j] * (last // below) for rows, below in markov[: len(f) + model.n]]
+            for e, wanted in enumerate(t + [0] * model.n):
+                found = sum(map(mul, f, h[e::-1]))
+                demand(found == wanted * last, f"{where}: entry {i + 1}, {j + 1} is not realized")
 
     # Kinds of claims
 
@@ -398,11 +406,8 @@ class Proof:
             self.reduces(first, one, common, "evidence.first")
             self.reduces(second, other, common, "evidence.second")
         else:
-            (N,), n, where = (
-                take(evidence, "evidence", ("modulus",)),
-                first.n,
-                "claim.transformation",
-            )
+            (N,), n = take(evidence, "evidence", ("modulus",)), first.n
+            where = "claim.transformation"
             demand(n == second.n, f"{where}: the orders differ")
             T = self.table(claim["transformation"], n, n, where)
             self.carries(first.matrices, T, second.matrices, where)

@@ -226,3 +226,61 @@ def test_ports_without_states() -> None:
         document["claim"]["values"][key] = []
         document["evidence"][key] = []
     refused(seal(document), "two values are equal")
+
+
+@pytest.mark.usefixtures("small_allowance")
+def test_squares_without_end() -> None:
+    """All squares cut again and again: paid for level by level."""
+    document = original("distance")
+    document["evidence"]["squares"] = ["x" * (2 * 4**level) for level in range(11)]
+    refused(seal(document), "too much")
+
+
+@pytest.mark.usefixtures("small_allowance")
+def test_levels_without_end() -> None:
+    """More levels than are read, and as many as are, where numbers grow level by level."""
+    document = original("distance")
+    document["evidence"]["squares"] = ["xx"] * 201
+    refused(seal(document), "wanted levels")
+    deep = ["x."] + ["x..."] * 198 + ["...."]
+    document["evidence"]["squares"] = deep
+    refused(seal(document), "corner|wanted at least")
+
+
+@pytest.mark.usefixtures("small_allowance")
+@pytest.mark.parametrize("key", ["lower", "upper", "radius", "point", "vector", "all"])
+def test_long_numbers_in_a_distance(key: str) -> None:
+    """Numbers of thousands of digits, and bounds that are nearly equal: every bit is paid for."""
+    document = original("distance")
+    long = [long_number(k, 19_000) for k in range(12)]
+    near = {"lower": f"{long[0]}/{long[1]}", "upper": f"{long[2][:-1]}9/{long[1]}"}
+    if key in ("lower", "upper", "all"):
+        document["claim"] |= near if key == "all" else {key: near[key]}
+    if key in ("radius", "all"):
+        document["evidence"]["radius"] = f"1000{long[4]}/{long[5]}"
+    if key in ("point", "all"):
+        document["evidence"]["point"] = [f"{long[6]}/{long[7]}", f"{long[8]}/{long[9]}"]
+    if key in ("vector", "all"):
+        document["evidence"]["vector"] = [[long[6], f"{long[7]}/{long[8]}"], ["0", long[9]]]
+    refused(seal(document), "upper|too much|wanted|corner")
+
+
+@pytest.mark.usefixtures("small_allowance")
+@pytest.mark.parametrize(("digits", "levels"), [(2, 5), (60, 4), (2000, 1)])
+def test_many_states_and_squares(digits: int, levels: int) -> None:
+    """Corners of a large model are paid for before the first is looked at."""
+    size, count = 60, iter(range(10**9))
+    A = [[f"{long_number(next(count), digits)}" for _ in range(size)] for _ in range(size)]
+    document = original("distance")
+    document["claim"] |= {"lower": "1", "upper": "1" + "0" * (digits + 9)}
+    document["claim"]["model"] |= {
+        "A": A, "B": [["1"]] * size, "C": [["1"] * size], "order": size,
+        "state_names": [f"x{i}" for i in range(size)],
+    }  # fmt: skip
+    vector = [["1"] + ["0"] * (size - 1), ["0"] * size]
+    squares = ["x" * (2 * 4**level) for level in range(levels)] + ["." * (2 * 4**levels)]
+    radius = "1" + "0" * (digits + 9)
+    document["evidence"] = {
+        "vector": vector, "point": ["0", "0"], "radius": radius, "squares": squares,
+    }  # fmt: skip
+    refused(seal(document), "too much|corner")

@@ -264,12 +264,12 @@ WEAKNESSES: list[tuple[str, tuple[str, str], Callable[[], Document]]] = [
     ("negative period", ("demand(above > 0,", "demand(True,"), negative_period),
     (
         "fractions",
-        ("demand(value[0] == y * power", "demand(True"),
+        ("demand(found == wanted * last", "demand(True"),
         fractions(["1", "2"], ["1", "3"]),
     ),
     (
         "fractions, what vanishes",
-        ("[0] * model.n, bits(f, t)", "[], bits(f, t)"),
+        ("enumerate(t + [0] * model.n)", "enumerate(t)"),
         fractions(["1"], ["1", "5"]),
     ),
     (
