@@ -109,8 +109,8 @@ def check(text: str) -> str:
         refuse(f"not JSON: {error}")
     except RecursionError:
         refuse("nested deeper than Python reads")
-    demand((format_, version) == (FORMAT, VERSION), f"wanted {FORMAT}, version {VERSION}")
-    demand(type(version) is int, "version: wanted an integer")
+    known = (format_, version) == (FORMAT, VERSION) and type(version) is int
+    demand(known, f"wanted {FORMAT}, version {VERSION}")
     demand(stated == digest, f"digest: that of claim and evidence is {digest}")
     kind = str(claim.get("kind")) if type(claim) is dict else ""
     demand(kind in KINDS, f"claim.kind: known are {', '.join(KINDS)}")
@@ -227,8 +227,6 @@ class Proof:
         demand(self.work <= MAX_WORK, "the certificate takes too much work to check")
         demand(self.bits <= MAX_BITS, "the certificate takes too much memory to check")
 
-    # Matrices of rationals
-
     def tables(self, *wanted: tuple[Any, int, int, str]) -> list[Matrix]:
         """Return rows of texts, of the shapes stated, as matrices over one denominator."""
         read, below = [], 1
@@ -277,28 +275,25 @@ class Proof:
         """Demand an identity."""
         demand(not any(map(any, self.minus(left, right)[0])), f"{what} does not hold")
 
-    # Paragraphs of the text above
-
-    def spans(self, A: Matrix, B: Matrix, V: Matrix, A1: Matrix, B1: Matrix, where: str) -> None:
-        """Test that the columns of V span what holds B and is kept by A."""
-        self.equal(self.product(A, V), self.product(V, A1), f"{where}: A V = V A1")
-        self.equal(B, self.product(V, B1), f"{where}: B = V B1")
-
     def carries(self, model: list[Matrix], V: Matrix, other: list[Matrix], where: str) -> None:
         """Test the identities of paragraph 1."""
         (A, B, C, D), (A1, B1, C1, D1) = model, other
-        self.spans(A, B, V, A1, B1, where)
+        self.equal(self.product(A, V), self.product(V, A1), f"{where}: A V = V A1")
+        self.equal(B, self.product(V, B1), f"{where}: B = V B1")
         self.equal(self.product(C, V), C1, f"{where}: C V = C1")
         self.equal(D, D1, f"{where}: D = D1")
 
     def basis(self, A: Matrix, B: Matrix, steps: Any, where: str) -> tuple[Matrix, Matrix, Matrix]:
-        """Return V, A1 and B1."""
+        """Return V, A1 and B1 that pass the first two of them."""
         n, pivots = len(A[0]), steps["pivots"]
         demand(type(pivots) is list and len(pivots) <= n, f"{where}.pivots: wanted a short list")
         rows = [whole(i, 0, n - 1, f"{where}.pivots") for i in pivots]
         V = self.table(steps["reached"], n, len(rows), f"{where}.reached")
         AV = self.product(A, V)
-        return V, ([AV[0][i] for i in rows], AV[1]), ([B[0][i] for i in rows], B[1])
+        A1, B1 = ([AV[0][i] for i in rows], AV[1]), ([B[0][i] for i in rows], B[1])
+        self.equal(AV, self.product(V, A1), f"{where}.reached: A V = V A1")
+        self.equal(B, self.product(V, B1), f"{where}.reached: B = V B1")
+        return V, A1, B1
 
     def reduces(self, model: Model, steps: Any, reduced: Model, where: str) -> None:
         """Test the two steps of a reduction."""
@@ -306,10 +301,8 @@ class Proof:
         demand(model.ports == reduced.ports, f"{where}: sizes or sampling periods differ")
         A, B, C, D = model.matrices
         V, A1, B1 = self.basis(A, B, steps, where)
-        middle = [A1, B1, self.product(C, V), D]
-        self.carries(model.matrices, V, middle, f"{where}.reached")
         U = self.table(steps["seen"], reduced.n, len(A1[0]), f"{where}.seen")
-        self.carries(reduced.matrices, U, middle, f"{where}.seen")
+        self.carries(reduced.matrices, U, [A1, B1, self.product(C, V), D], f"{where}.seen")
 
     def rank(self, what: str, N: Any, vectors: Matrix, n: int, A: Matrix | None = None) -> None:
         """Demand that rows, and A times them again and again, have rank n modulo N."""
@@ -354,8 +347,6 @@ class Proof:
             for e, wanted in enumerate(t + [0] * model.n):
                 found = sum(map(mul, f, h[e::-1]))
                 demand(found == wanted * last, f"{where}: entry {i + 1}, {j + 1} is not realized")
-
-    # Kinds of claims
 
     def minimal_realization(self, claim: Any, evidence: Any) -> list[str]:
         """Two models have one transfer matrix, and the second is minimal."""
@@ -452,9 +443,10 @@ class Proof:
             A, B = turned(A, n), turned(C, n)
         if bounds == ["0", "0"]:
             take(evidence, "evidence", ("reached", "pivots"))
-            V, A1, B1 = self.basis(A, B, evidence, "evidence")
-            demand(len(A1[0]) < n, "evidence: V has as many columns as rows")
-            self.spans(A, B, V, A1, B1, "evidence")
+            demand(
+                len(self.basis(A, B, evidence, "evidence")[1][0]) < n,
+                "evidence: V has as many columns as rows",
+            )
             return [f"{head} is 0.", *model.words]
         wanted = ("vector", "point", "radius", "squares")
         vector, point, radius, words = take(evidence, "evidence", wanted)

@@ -320,15 +320,15 @@ WEAKNESSES: list[tuple[str, tuple[str, str], Callable[[], Document]]] = [
     ),
     ("corners", ("demand(proved,", "demand(True,"), bounds("3/5", "2", radius="3")),
     ("outputs", ("A, B = turned(A, n), turned(C, n)", "pass"), other_side),
-    ("all columns", ("demand(len(A1[0]) < n,", "demand(True,"), all_is_reached),
+    ("all columns", ('"evidence")[1][0]) < n', '"evidence")[1][0]) <= n'), all_is_reached),
     (
         "kept by A",
-        without("evidence: A V = V A1"),
+        without("evidence.reached: A V = V A1"),
         one_column([["-1", "0"], ["1", "-2"]], [["1"], ["0"]]),
     ),
     (
         "holds B",
-        without("evidence: B = V B1"),
+        without("evidence.reached: B = V B1"),
         one_column([["-1", "1"], ["0", "-2"]], [["0"], ["1"]]),
     ),
 ]
