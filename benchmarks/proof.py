@@ -6,6 +6,8 @@ is 1 when a number is not reached.
 
 from __future__ import annotations
 
+import json
+import math
 import resource
 import statistics
 import subprocess
@@ -13,12 +15,23 @@ import sys
 import tempfile
 import time
 import warnings
+from fractions import Fraction
 from pathlib import Path
 from typing import Any, Final
 
+import numpy as np
+
 from benchmarks.measure import ROOT, interleaved, ratio, save
 from benchmarks.numbers import Number, plain, planted, report, three_masses
-from realize import HiddenInstabilityWarning, certify, exact, floating, same_transfer
+from realize import (
+    HiddenInstabilityWarning,
+    Realization,
+    certify,
+    distance_to_uncontrollability,
+    exact,
+    floating,
+    same_transfer,
+)
 
 CHECKER: Final = ROOT / "realize" / "checker.py"
 ROUNDS: Final = 15
@@ -92,6 +105,47 @@ def comparing() -> list[Number]:
     return found
 
 
+def distances() -> list[Number]:
+    """Bounds of a distance: what their certificate takes beside the distance itself, and its check.
+
+    The pair of Gao and Neumann (1993), companion pairs of (s + 1)^n, and seeded random pairs.
+    """
+    gao = Realization([[1, 1, 1], ["1/10", 3, 5], [0, -1, -1]], [[1], ["1/10"], [0]], [[1, 0, 0]])
+    cases = {"3 states, 1 input": (gao, 0.1), "3 states, 1 input, to 1e-6": (gao, 1e-6)}
+    for n in (5, 10):
+        A = np.eye(n, k=1)
+        A[-1] = [-math.comb(n, k) for k in range(n)]
+        cases[f"companion, {n} states"] = Realization(A, np.eye(n)[:, -1:], np.eye(n)[:1]), 0.1
+    draw = np.random.default_rng(20261201)
+    for n, m in ((6, 1), (6, 2), (10, 1), (10, 3), (20, 1), (20, 4), (40, 8)):
+        pair = draw.standard_normal((n, n)), draw.standard_normal((n, m))
+        cases[f"random, {n} states, {m} inputs"] = Realization(*pair, np.eye(n)[:1]), 0.1
+    found = []
+    for what, (model, rtol) in cases.items():
+        began = time.process_time()
+        distance = distance_to_uncontrollability(model, rtol=rtol)
+        middle = time.process_time()
+        text = certify(distance).to_json()
+        seconds = {"distance": middle - began, "certify": time.process_time() - middle}
+        document = json.loads(text)
+        lower, upper = (float(Fraction(document["claim"][key])) for key in ("lower", "upper"))
+        squares = sum(word.count(".") for word in document["evidence"]["squares"])
+        facts = {"lower": lower, "upper": upper, "squares": squares, "characters": len(text)}
+        found.append(
+            Number(
+                what=f"certify a distance, {what}",
+                asked=None,
+                measured=seconds["certify"],
+                unit="seconds",
+                seconds=seconds,
+                facts=facts,
+            )
+        )
+        check = f"check of it, upper/lower {upper / lower:.3g}, {squares} squares"
+        found.append(_checked(check, text, asked=60.0, rounds=1))
+    return found
+
+
 def _checked(what: str, text: str, *, asked: float, rounds: int) -> Number:
     """Run the checker as a file, in a process of its own, start of Python and all.
 
@@ -125,7 +179,7 @@ def _spent() -> float:
 
 
 def main() -> int:
-    numbers = [*making(), *small(), *comparing()]
+    numbers = [*making(), *small(), *comparing(), *distances()]
     print(report(numbers))
     target = save("proof", {"numbers": [plain(number) for number in numbers]})
     print(f"\nwritten to {target.relative_to(ROOT)}")

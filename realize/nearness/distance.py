@@ -64,6 +64,9 @@ class Distance:
     proved: bool
     _witness: Deferred[tuple[Realization | None, float]]
     _pair: Deferred[Pair | None]
+    # The exact model, and what it is far from: "uncontrollability" or "unobservability".
+    _source: Realization
+    _word: str = "uncontrollability"
 
     @property
     def witness(self) -> Realization | None:
@@ -147,8 +150,7 @@ def distance_to_uncontrollability(
         raise UnsupportedEntryError(
             f"budget is {budget!r}; wanted seconds, not negative, or None for no limit"
         )
-    exact = model if model.kind is Kind.RATIONAL else model.read(Reading.STORED)
-    return _distance(exact, allowed, budget)
+    return _distance(_exact(model), allowed, budget)
 
 
 def distance_to_unobservability(
@@ -195,7 +197,13 @@ def distance_to_unobservability(
         proved=found.proved,
         _witness=Deferred(witness),
         _pair=found._pair,
+        _source=_exact(model),
+        _word="unobservability",
     )
+
+
+def _exact(model: Realization) -> Realization:
+    return model if model.kind is Kind.RATIONAL else model.read(Reading.STORED)
 
 
 def _distance(model: Realization, rtol: float, budget: float | None) -> Distance:
@@ -208,6 +216,7 @@ def _distance(model: Realization, rtol: float, budget: float | None) -> Distance
             proved=True,
             _witness=Deferred.known((None, math.inf)),
             _pair=Deferred.known(None),
+            _source=model,
         )
     began = time.monotonic()
     deadline = math.inf if budget is None else began + budget
@@ -239,6 +248,7 @@ def _distance(model: Realization, rtol: float, budget: float | None) -> Distance
         proved=True,
         _witness=Deferred(witness),
         _pair=Deferred.known(pair),
+        _source=model,
     )
 
 
@@ -292,6 +302,7 @@ def _hidden(model: Realization, near: complex, budget: float | None) -> Distance
         proved=True,
         _witness=Deferred.known((model, 0.0)),
         _pair=Deferred.known(None),
+        _source=model,
     )
 
 

@@ -11,15 +11,18 @@ from typing import Any
 import flint
 import numpy as np
 
-from realize import forms
+from realize import checker, forms
 from realize.arithmetic.exact import ExactPath
 from realize.arithmetic.modular import Clock
 from realize.arithmetic.rational import RationalMatrix
 from realize.arithmetic.similar import inverse_modulus, rank_modulus
 from realize.entries import Kind, Reading, known_word, make_fraction, spell_fraction
-from realize.errors import CertificateError, UnsupportedEntryError
+from realize.errors import CertificateError, LimitError, UnsupportedEntryError
 from realize.model.realization import Realization
 from realize.model.transfer import TransferMatrix
+from realize.nearness.distance import Distance
+from realize.nearness.pencil import Pencil
+from realize.proof.cover import radius, squares
 from realize.proof.record import Certificate, Comparison, Difference
 from realize.results import Echelon, Evidence, Reduction
 
@@ -30,15 +33,24 @@ Array = np.ndarray[Any, Any]
 _TRIED = (Reading.STORED, Reading.WRITTEN)
 """The readings of a floating reduction that are tried when none is named; intended never leads."""
 
+_MOST = 300_000
+"""So many squares at most are looked at, and those that take the checker half of its work."""
 
-def certify(result: Reduction | Comparison, *, reading: str | None = None) -> Certificate:
+_NARROW = 1e-11
+"""Bounds nearer to each other than this are moved apart by that much."""
+
+
+def certify(
+    result: Reduction | Comparison | Distance, *, reading: str | None = None
+) -> Certificate:
     """Make a certificate of a result, which anyone can check without trusting this package.
 
     Parameters
     ----------
-    result : Reduction or Comparison
-        What `minimal` or `same_transfer` returned. An exact reduction is certified as it is, with
-        the evidence found on the way. A floating one is certified through a reading: see Notes.
+    result : Reduction, Comparison or Distance
+        What `minimal`, `same_transfer` or a distance returned. An exact reduction is certified as
+        it is, with the evidence found on the way. A floating one is certified through a reading,
+        and a distance perhaps with a weaker lower bound: see Notes.
     reading : {"stored", "written", "intended"}, keyword-only, optional
         For a floating reduction: which exact model it is about. Left out, the first of stored and
         written under which the minimal order is the order delivered.
@@ -52,9 +64,10 @@ def certify(result: Reduction | Comparison, *, reading: str | None = None) -> Ce
     ------
     CertificateError
         When the exact minimal order under the reading is not the order delivered, or when a
-        result does not know what it was made of.
+        result does not know what it was made of; for a distance of a model without states.
     LimitError
-        When the certificate would be longer than the checker reads.
+        When the certificate would be longer than the checker reads, or a distance takes more
+        squares than it looks at.
     UnsupportedEntryError
         When the result is of another kind.
 
@@ -67,10 +80,15 @@ def certify(result: Reduction | Comparison, *, reading: str | None = None) -> Ce
     delivered, and the certificate bounds how far these lie from it. All of it is about exact
     tables of numbers, and not about a plant.
 
+    Of a distance it holds a vector for the upper bound and a covering of the plane by squares for
+    the lower one. The checker takes plain squares only, so where they are too many for the lower
+    bound that was proved, half and then a quarter of the upper bound are tried in its place; the
+    claim in words says which bounds it is about. ``about`` says that it was so.
+
     References
     ----------
     Kalman (1963), Mathematical description of linear dynamical systems, SIAM J. Control 1.
-    Kailath (1980), Linear Systems, section 2.4.
+    Kailath (1980), Linear Systems, section 2.4. Eising (1984), Systems and Control Letters 4.
 
     Examples
     --------
@@ -84,9 +102,11 @@ def certify(result: Reduction | Comparison, *, reading: str | None = None) -> Ce
         return _of_reduction(result, word)
     if isinstance(result, Comparison):
         return _of_comparison(result)
+    if isinstance(result, Distance):
+        return _of_distance(result)
     raise UnsupportedEntryError(
-        f"found a value of type {type(result).__name__}; give the result of minimal or of "
-        "same_transfer",
+        f"found a value of type {type(result).__name__}; give the result of minimal, of "
+        "same_transfer or of a distance",
         found=type(result).__name__,
     )
 
@@ -103,11 +123,7 @@ def _of_reduction(result: Reduction, reading: Reading | None) -> Certificate:
         )
     if result.model.kind is Kind.FLOATING:
         return _of_floating(result, source, reading)
-    if isinstance(source.sampling_period, float):
-        raise CertificateError(
-            f"the sampling period is the float {source.sampling_period!r}, and a certificate is "
-            "about exact numbers; reduce source.read(reading), which reads it too"
-        )
+    _check_period(source)
     evidence = result._evidence.get()
     if evidence is None or evidence.reached is None:
         raise CertificateError(
@@ -116,6 +132,14 @@ def _of_reduction(result: Reduction, reading: Reading | None) -> Certificate:
         )
     steps = _steps(evidence, _turned(evidence.seen))
     return _minimal(source, evidence.model, result.model, steps, evidence.modulus)
+
+
+def _check_period(source: Realization | TransferMatrix) -> None:
+    if isinstance(source.sampling_period, float):
+        raise CertificateError(
+            f"the sampling period is the float {source.sampling_period!r}, and a certificate is "
+            "about exact numbers; take model.read(reading), which reads it too"
+        )
 
 
 def _of_floating(
@@ -298,6 +322,73 @@ def _through_one(result: Comparison) -> dict[str, Any]:
 def _shifted(model: Realization, point: Fraction) -> RationalMatrix:
     """Return z - A."""
     return RationalMatrix.identity(model.order).scaled(point) - RationalMatrix.from_array(model.A)
+
+
+# Distances
+
+
+def _of_distance(result: Distance) -> Certificate:
+    source = result._source
+    _check_period(source)
+    if not source.order:
+        raise CertificateError(
+            "a model without states is at no finite distance, so there are no bounds to certify"
+        )
+    claim: dict[str, Any] = {
+        "kind": f"distance to {result._word}",
+        "model": _source(source, source),
+    }
+    pair = result._pair.get()
+    model = source if result._word == "uncontrollability" else source.dual()
+    if pair is None:
+        found = forms.reduce(ExactPath(), model)._evidence.get()
+        assert found is not None
+        steps = _steps(found, [])
+        del steps["seen"]
+        return Certificate._of(claim | {"lower": "0", "upper": "0"}, steps, _about())
+    if not result.proved:
+        raise CertificateError("the bounds of this distance are not proved; ask for it again")
+    length = math.lcm(*(v.denominator for v in (*pair.real, *pair.imaginary)))
+    evidence: dict[str, Any] = {
+        "vector": [[str(int(v * length)) for v in part] for part in (pair.real, pair.imaginary)],
+        "point": _texts(pair.point),
+    }
+    pencil = Pencil(model.A, model.B)
+    most = min(_MOST, checker.MAX_WORK // (2 * checker.corner_work(model.order)))
+    for share in (None, 2, 4):
+        bound = result.upper / share if share else result.lower
+        if bound > result.lower:
+            continue
+        texts = _decimals(bound, result.upper)
+        lower, upper = map(Fraction, texts)
+        R = radius(pencil, lower)
+        words = squares(pencil, lower, upper, R, most)
+        if words is None:
+            continue
+        about = _about()
+        if share:
+            about["lower"] = f"{result.lower!r} was proved; for it the squares were too many"
+        bounds = dict(zip(("lower", "upper"), texts, strict=True))
+        more = {"radius": spell_fraction(R), "squares": words}
+        return Certificate._of(claim | bounds, evidence | more, about)
+    raise LimitError(
+        f"found the distance {result!r}; to show a quarter of its upper bound from below takes "
+        f"more than the {most} squares that are worth looking at for {model.order} states, or "
+        "finer ones than doubles can choose. Certify a model with fewer states or more inputs, "
+        "or rely on the bounds of the result, which are proved by this package",
+        what="squares",
+        where="certificate",
+        found=None,
+        limit=most,
+    )
+
+
+def _decimals(lower: float, upper: float) -> tuple[str, str]:
+    """Return p/10^k for two bounds, moved apart by less than a hundredth of their distance."""
+    places = 3 - math.floor(math.log10(max(upper - lower, _NARROW * upper)))
+    scale = Fraction(10) ** max(places, 0)
+    below, above = math.floor(Fraction(lower) * scale), math.ceil(Fraction(upper) * scale)
+    return (f"{below}/{scale}", f"{above}/{scale}") if scale > 1 else (str(below), str(above))
 
 
 # Documents

@@ -2,13 +2,18 @@
 
 Plain Fractions and the plainest methods; it shares no code and no method with the checker: no
 evidence is looked at, Markov parameters are compared, and ranks are taken over the rationals.
+Distances alone are in doubles, by the plainest descent.
 """
 
 from __future__ import annotations
 
+import math
 import re
 from fractions import Fraction
+from functools import cache
 from typing import Any
+
+import numpy as np
 
 Rows = list[list[Fraction]]
 
@@ -31,6 +36,15 @@ def truth(claim: Any) -> bool:
 
 def _judge(claim: dict[str, Any]) -> bool:
     kind = claim["kind"]
+    if kind in ("distance to uncontrollability", "distance to unobservability"):
+        model, lower, upper = System(claim["model"]), number(claim["lower"]), number(claim["upper"])
+        if not model.n or not model.fractions_hold():
+            return False
+        dual = kind.endswith("unobservability")
+        A = [list(row) for row in zip(*model.A, strict=True)] if dual else model.A
+        B = model.C if dual else [list(row) for row in zip(*model.B, strict=True)]
+        found = distance(tuple(map(tuple, A)), tuple(map(tuple, B)))
+        return lower * (1 - MARGIN) <= found <= upper * (1 + MARGIN)
     if kind == "minimal realization":
         model, reduced = System(claim["model"]), System(claim["reduced"])
         if not model.ports_equal(reduced) or model.names != reduced.names:
@@ -77,6 +91,52 @@ def _judge(claim: dict[str, Any]) -> bool:
         found = [first.value(point), second.value(point)]
         return values == found and values[0] != values[1]
     raise Unreadable
+
+
+MARGIN = Fraction(1, 10**7)
+"""How well a minimum that is found by steps is known, relatively."""
+
+
+@cache
+def distance(A: tuple[tuple[Fraction, ...], ...], B: tuple[tuple[Fraction, ...], ...]) -> Fraction:
+    """The distance to uncontrollability for the columns B; exact when it is zero.
+
+    Local minima from the eigenvalues and from a grid. One that is missed makes the value too large
+    and the oracle too strict about what an upper bound may be, never too lax about a lower one.
+    """
+    vectors = [list(b) for b in B]
+    krylov = list(vectors)
+    for _ in range(len(A) - 1):
+        vectors = [
+            [sum((x * y for x, y in zip(row, v, strict=True)), Fraction(0)) for row in A]
+            for v in vectors
+        ]
+        krylov += vectors
+    if rank(krylov) < len(A):
+        return Fraction(0)
+    a, b = np.array(A, dtype=float), np.array(B, dtype=float).T
+
+    def least(z: Any) -> Any:
+        shifted = a - np.asarray(z)[..., None, None] * np.eye(len(a))
+        wide = np.broadcast_to(b, (*shifted.shape[:-1], b.shape[1]))
+        return np.linalg.svd(np.concatenate([shifted, wide], axis=-1), compute_uv=False)[..., -1]
+
+    reach = float(np.linalg.norm(a)) + 1e-3
+    x, y = np.meshgrid(np.linspace(-reach, reach, 41), np.linspace(0, reach, 21))
+    grid = (x + 1j * y).ravel()
+    starts = [*np.linalg.eigvals(a), *grid[np.argsort(least(grid))[:2]]]
+    found = math.inf
+    for z in starts:
+        step, value = reach / 8, float(least(z))
+        around = np.exp(2j * np.pi * np.arange(12) / 12)
+        while step > 1e-10 * reach:
+            values = least(z + step * around)
+            if values.min() < value:
+                z, value = z + step * around[values.argmin()], float(values.min())
+            else:
+                step /= 2
+        found = min(found, value)
+    return Fraction(found)
 
 
 def number(text: Any) -> Fraction:

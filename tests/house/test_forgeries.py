@@ -26,6 +26,8 @@ from realize import (
     TransferMatrix,
     certify,
     checker,
+    distance_to_uncontrollability,
+    distance_to_unobservability,
     exact,
     floating,
     same_transfer,
@@ -50,11 +52,17 @@ NAMES = (
     "different, fractions",
     "different periods",
     "different sizes",
+    "distance",
+    "distance, fine",
+    "distance, outputs",
+    "distance, zero",
 )
 
 #: How many forgeries each test makes at least.
 FORGERIES = {
     **{f"leaf, {name}": 70 for name in NAMES},
+    "leaf, distance": 105,
+    "leaf, distance, zero": 60,
     "leaf, minimal, nothing hidden": 350,
     "leaf, different, fractions": 330,
     "leaf, same, coordinates": 300,
@@ -68,12 +76,14 @@ FORGERIES = {
     "word, floating": 1000,
     "word, same, coordinates": 1200,
     "word, different": 950,
+    "word, distance": 400,
     "parts": 600,
     "sizes": 1800,
     "moduli": 530,
     "coordinates": 186,
     "poles": 372,
-    "many": 1250,
+    "bounds": 640,
+    "many": 1150,
 }
 
 
@@ -113,14 +123,6 @@ def attempt(document: Document) -> int:
 SOUND: dict[int, Any] = {}
 
 
-def stated(value: Any) -> None:
-    """Let no model name a digest that the checker can compute."""
-    for key in ("model", "first", "second"):
-        model = value.get(key)
-        if isinstance(model, dict) and model.get("reading") == "given":
-            model["reading"] = "written"
-
-
 @cache
 def originals() -> dict[str, str]:
     """Small certificates of every kind, as texts."""
@@ -151,6 +153,12 @@ def originals() -> dict[str, str]:
             "different, fractions": certify(same_transfer(drum, TransferMatrix([1], [1, 2]))),
             "different periods": certify(same_transfer(hidden, hidden.read("written").dual())),
             "different sizes": certify(same_transfer(hidden, two)),
+            "distance": certify(distance_to_uncontrollability(other)),
+            "distance, fine": certify(distance_to_uncontrollability(other, rtol=1e-4)),
+            "distance, outputs": certify(distance_to_unobservability(two)),
+            "distance, zero": certify(
+                distance_to_uncontrollability(Realization([[1, 2], [0, 3]], [1, 0], [1, 1]))
+            ),
         }
         made["different periods"] = certify(
             same_transfer(other, Realization(*turned.matrices(), sampling_period=2))
@@ -158,11 +166,9 @@ def originals() -> dict[str, str]:
     return {name: certificate.to_json() for name, certificate in made.items()}
 
 
-def original(name: str, *, open_table: bool = True) -> Document:
-    """A fresh copy; with a table that nobody sees, so that its digest can be anything."""
+def original(name: str) -> Document:
+    """A fresh copy."""
     document: Document = json.loads(originals()[name])
-    if open_table:
-        stated(document["claim"])
     SOUND[id(document["claim"])] = document["claim"]
     return document
 
@@ -209,7 +215,11 @@ def other_values(leaf: Any) -> list[Any]:
         if leaf != "0":
             found += [leaf.removeprefix("-"), "-" + leaf.removeprefix("-"), leaf + "/2"]
         return [value for value in found if value != leaf]
-    return ["0" * 64, "given", "stored", "minimal realization", "same transfer matrix", "y9"]
+    return [
+        "0" * 64, "given", "stored", "minimal realization", "same transfer matrix", "y9",
+        "distance to uncontrollability", "distance to unobservability",
+        leaf.replace("x", "."), leaf.replace(".", "x"), leaf[1:], leaf + ".", "." * len(leaf),
+    ]  # fmt: skip
 
 
 def test_the_originals_are_accepted() -> None:
@@ -242,7 +252,9 @@ WORDS: tuple[Any, ...] = (
 )  # fmt: skip
 
 
-@pytest.mark.parametrize("name", ["minimal", "floating", "same, coordinates", "different"])
+@pytest.mark.parametrize(
+    "name", ["minimal", "floating", "same, coordinates", "different", "distance"]
+)
 def test_what_is_no_number(name: str) -> None:
     """Every leaf replaced by what `int`, JSON or a careless pattern would let through."""
     document = original(name)
@@ -378,6 +390,31 @@ def test_points_that_are_poles() -> None:
             document["evidence"]["modulus"] = modulus
             found += attempt(document)
     enough("poles", found)
+
+
+def test_bounds_that_do_not_hold() -> None:
+    """Bounds moved past a distance of 1/2, by much or little, under coverings fine or rough."""
+    document = forgeable("distance")
+    whole = document["evidence"]["squares"]
+    coverings = [whole, whole[:-1], [".."], ["xx", "........"], ["xx"], [], ["." * 9], [2]]
+    found = 0
+    for lower, upper in (
+        ("50001/100000", "1"), ("51/100", "1"), ("2", "3"), ("1/100", "49999/100000"),
+        ("1/3", "2/5"), ("0", "1/1000000"), ("0", "0"), ("-1", "1/4"), ("1", "1/3"), ("1", "1"),
+    ):  # fmt: skip
+        document["claim"] |= {"lower": lower, "upper": upper}
+        for radius in ("1/1000", "1/2", "2", "3", "7/2", "100", "-5", "0"):
+            for squares in coverings:
+                document["evidence"] |= {"radius": radius, "squares": squares}
+                found += attempt(document)
+    document["claim"] |= {"lower": "499/1000", "upper": "501/1000"}
+    fine = json.loads(originals()["distance, fine"])["evidence"]
+    document["evidence"] = fine
+    assert not attempt(document)
+    assert accepted(seal(document))
+    document["claim"]["lower"] = "50001/100000"
+    found += attempt(document)
+    enough("bounds", found)
 
 
 def test_many_changes_at_once() -> None:

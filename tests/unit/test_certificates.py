@@ -26,6 +26,8 @@ from realize import (
     certify,
     check,
     checker,
+    distance_to_uncontrollability,
+    distance_to_unobservability,
     exact,
     floating,
     multiprecision,
@@ -231,6 +233,85 @@ def test_a_floating_transfer_function(order: int) -> None:
     assert Fraction(claim["distance"]) < Fraction(1, 10**9)
     assert truth(claim)
     check(certificate)
+
+
+# --------------------------------------------------------------------------- distances
+
+
+def gao_neumann() -> Realization:
+    """A pair whose distance is 0.03923843 (Gao and Neumann 1993; value recomputed)."""
+    return Realization([[1, 1, 1], ["1/10", 3, 5], [0, -1, -1]], [[1], ["1/10"], [0]], [[1, 0, 0]])
+
+
+@pytest.mark.parametrize("rtol", [0.1, 1e-6])
+def test_both_bounds_of_a_distance(rtol: float) -> None:
+    """They hold the value of the literature, and are hardly farther apart than the result's."""
+    found = distance_to_uncontrollability(gao_neumann(), rtol=rtol)
+    certificate = certify(found)
+    claim = read(certificate)["claim"]
+    lower, upper = Fraction(claim["lower"]), Fraction(claim["upper"])
+    assert lower < Fraction("0.0392384302187") < upper
+    assert lower <= Fraction(found.lower) < Fraction(found.upper) <= upper
+    assert 1 - lower / upper < 1.03 * rtol
+    assert certificate.kind == "distance to uncontrollability"
+    assert f"{claim['lower']} and {claim['upper']}" in check(certificate)
+    assert "lower" not in read(certificate)["about"]
+    assert truth(claim)
+
+
+def test_a_distance_to_unobservability_is_about_the_model_itself() -> None:
+    """Not about its dual; floats are read as stored."""
+    model = Realization([[0.1, 1.0], [0.0, -0.3]], [[0.0], [1.0]], [[1.0, 0.7]])
+    certificate = certify(distance_to_unobservability(model))
+    claim = read(certificate)["claim"]
+    assert claim["kind"] == certificate.kind == "distance to unobservability"
+    assert (claim["model"]["reading"], claim["model"]["table"]) == ("stored", model.digest)
+    assert claim["model"]["C"][0][0] == "1"
+    assert truth(claim)
+    check(certificate)
+
+
+@pytest.mark.parametrize("B", [[[0], [1], [0], [0]], [[0], [0], [0], [0]]], ids=["radial", "none"])
+def test_a_distance_of_zero(B: list[list[int]]) -> None:
+    """A satellite with radial thrust alone (Brockett 1970; value recomputed), and with none."""
+    A = [[0, 1, 0, 0], [3, 0, 0, 2], [0, 0, 0, 1], [0, -2, 0, 0]]
+    certificate = certify(distance_to_uncontrollability(Realization(A, B, [[1, 0, 0, 0]])))
+    assert "of this exact model is 0." in check(certificate)
+    assert truth(read(certificate)["claim"])
+
+
+def test_where_the_squares_are_too_many(monkeypatch: pytest.MonkeyPatch) -> None:
+    """First half of the upper bound, then a quarter is tried, and said; then it is refused."""
+    found = distance_to_uncontrollability(gao_neumann(), rtol=1e-6)
+    for most, share in ((400, 2), (300, 4)):
+        monkeypatch.setattr("realize.proof.certify._MOST", most)
+        certificate = certify(found)
+        document = read(certificate)
+        assert "the squares were too many" in document["about"]["lower"]
+        assert 1 < found.upper / share / float(Fraction(document["claim"]["lower"])) < 1.01
+        assert truth(document["claim"])
+        check(certificate)
+    monkeypatch.setattr("realize.proof.certify._MOST", 20)
+    with pytest.raises(LimitError, match="Certify a model with fewer states") as caught:
+        certify(found)
+    assert caught.value.limit == 20
+
+
+def test_distances_that_cannot_be_certified() -> None:
+    """Without states there are no bounds; a sampling period that is a float is no exact number."""
+    with pytest.raises(CertificateError, match="without states"):
+        certify(distance_to_uncontrollability(Realization([], [], [], [[1]])))
+    timed = Realization([["1/2"]], [1], [1], sampling_period=0.1)
+    with pytest.raises(CertificateError, match=r"sampling period is the float 0\.1"):
+        certify(distance_to_uncontrollability(timed))
+    check(certify(distance_to_uncontrollability(timed.read("written"))))
+
+
+def test_a_pair_of_numbers_of_every_size() -> None:
+    """The squares and the unit follow the size of the entries."""
+    for size in (Fraction(1, 10**30), Fraction(1), Fraction(10**30)):
+        model = Realization([[size, 2 * size], [0, -size]], [[size / 3], [size]], [[1, 1]])
+        check(certify(distance_to_uncontrollability(model)))
 
 
 # --------------------------------------------------------------------------- what cannot be
