@@ -83,7 +83,8 @@ def certify(
     Of a distance it holds a vector for the upper bound and a covering of the plane by squares for
     the lower one. The checker takes plain squares only, so where they are too many for the lower
     bound that was proved, half and then a quarter of the upper bound are tried in its place; the
-    claim in words says which bounds it is about. ``about`` says that it was so.
+    claim in words says which bounds it is about. ``about`` says that it was so. Such a
+    certificate is checked before it is handed out, which may take half a minute.
 
     References
     ----------
