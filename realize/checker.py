@@ -479,7 +479,7 @@ class Proof:
         for level, word in enumerate(words):
             fits = type(word) is str and len(word) == len(squares) and not word.strip(".x")
             demand(fits, f"evidence.squares: wanted {len(squares)} marks on level {level}")
-            self.spend(20 * len(word), 40 * len(word), R.bit_length(), 0)
+            self.spend(20 * len(word), 9 * len(word), R.bit_length() + 384, 0)
             side, more = R >> level, []
             for (x, y), mark in zip(squares, word, strict=True):
                 for i, j in ((0, 0), (0, 1), (1, 0), (1, 1)):

@@ -297,6 +297,14 @@ def test_where_the_squares_are_too_many(monkeypatch: pytest.MonkeyPatch) -> None
     assert caught.value.limit == 20
 
 
+def test_the_checker_has_the_last_word(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Squares that do not show the bound are never handed out."""
+    found = distance_to_uncontrollability(gao_neumann())
+    monkeypatch.setattr("realize.proof.certify.squares", lambda *_: [".."])
+    with pytest.raises(LimitError, match="squares"):
+        certify(found)
+
+
 def test_distances_that_cannot_be_certified() -> None:
     """Without states there are no bounds; a sampling period that is a float is no exact number."""
     with pytest.raises(CertificateError, match="without states"):
