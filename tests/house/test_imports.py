@@ -6,6 +6,7 @@ import json
 import os
 import subprocess
 import sys
+from pathlib import Path
 
 import pytest
 
@@ -62,6 +63,8 @@ import importlib, json, os, sys, traceback
 for name in ("numpy", "scipy.linalg", "scipy.sparse.csgraph", "scipy.special", "scipy.optimize",
              "sympy", "mpmath", "flint", "click", "rich.console", "hypothesis"):
     importlib.import_module(name)
+# Compiled once, wherever the environment would have it compiled again and again.
+sys.dont_write_bytecode, sys.pycache_prefix = False, sys.argv[2]
 failed = {}
 for name in json.loads(sys.argv[1]):
     reader, writer = os.pipe()
@@ -83,14 +86,14 @@ print(json.dumps(failed))
 
 
 @pytest.mark.skipif(not hasattr(os, "fork"), reason="needs a system that forks")
-def test_every_module_can_be_imported_first() -> None:
+def test_every_module_can_be_imported_first(tmp_path: Path) -> None:
     """Each module imports alone in a process of its own, so no import depends on an earlier one."""
     # __main__ runs the command line when it is imported.
     names = [name for name in modules() if not name.endswith("__main__")]
-    done = run(FORKED, json.dumps(names))
+    done = run(FORKED, json.dumps(names), str(tmp_path))
     assert done.returncode == 0, done.stderr
     assert json.loads(done.stdout) == {}
-    planted = run(FORKED, json.dumps(["realize.no_such_module"]))
+    planted = run(FORKED, json.dumps(["realize.no_such_module"]), str(tmp_path))
     assert "ModuleNotFoundError" in json.loads(planted.stdout)["realize.no_such_module"]
 
 
