@@ -7,10 +7,7 @@ from collections.abc import Iterable
 from typing import Final
 
 from realize.entries import Reading, is_simple, known_word, read_float
-from realize.errors import (
-    UnknownWordError,
-    UnsupportedEntryError,
-)
+from realize.errors import EntryError, UnknownWordError, UnsupportedEntryError
 from realize.examination.accuracy import settle
 from realize.examination.alike import alike
 from realize.examination.answer import Found, answered, exact_answers, with_uncertainty
@@ -261,7 +258,11 @@ def _visible_modes(
             return floating.visible_modes(), False
     elif about is None or about.visible_within(budget) is None:
         return floating.visible_modes(), False
-    return about.visible_modes(), True
+    try:
+        return about.visible_modes(), True
+    except EntryError:
+        # One of them is too large for a double; the table says how many are missing.
+        return floating.visible_modes(), False
 
 
 def _count_unsimple(model: Realization) -> int:

@@ -7,10 +7,7 @@ from collections.abc import Callable
 from functools import cached_property
 
 from realize.arithmetic.floating import FloatingPath, FloatingReach, OpenedFloating
-from realize.errors import (
-    EntryError,
-    PrecisionError,
-)
+from realize.errors import EntryError, PrecisionError
 from realize.examination.eigenvectors import Eigenvectors
 from realize.examination.nearest import Answered, Nearest, nearest_of
 from realize.examination.pairing import Replay, replayed

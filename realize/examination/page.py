@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 import textwrap
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
@@ -115,7 +116,7 @@ def _named(examination: Examination, modes: Iterable[Mode]) -> list[tuple[str, M
 
 def _largest(examination: Examination) -> float:
     entries = examination.model.A.ravel().tolist()
-    return max((abs(float(value)) for value in entries), default=0.0)
+    return max((float(min(abs(value), sys.float_info.max)) for value in entries), default=0.0)
 
 
 def _times(count: int) -> str:
@@ -547,6 +548,9 @@ def _mode_table(examination: Examination, modes: tuple[Mode, ...]) -> list[str]:
         lines.append(f"  {value:<26}{times:<7}{mode.stability:<13}{when:<24}{ratio}")
     if len(named) > 40:
         lines.append(f"  and {len(named) - 40} more")
+    shown = sum(mode.multiplicity for mode in modes)
+    if shown < examination.order:
+        lines.append(f"  {examination.order - shown} more: beyond the range of doubles, not shown")
     return [*lines, ""]
 
 

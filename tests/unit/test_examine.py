@@ -1108,3 +1108,11 @@ def test_the_record_cannot_be_changed() -> None:
         found.order = 3  # type: ignore[misc]
     with pytest.raises((AttributeError, TypeError)):
         found.other = 3  # type: ignore[attr-defined]
+
+
+def test_modes_beyond_doubles_are_counted() -> None:
+    """The order is exact, the page is printed, and it says how many modes it cannot show."""
+    found = examine(Realization([["1e400", 1], [1, "-1e400"]], [1, 1], [1, 1]))
+    assert found.minimal_order == {"given": 2}
+    assert found.modes == ()
+    assert "2 more: beyond the range of doubles, not shown" in str(found)
