@@ -132,11 +132,12 @@ def _balance(graph: Array, order: int) -> tuple[Array, int]:
     # Single precision is enough for exponents that will be rounded, and half the memory: for a
     # large model, fresh memory costs more than the arithmetic.
     work = np.empty((size + 1, size + 1), dtype=np.float32, order="F")
-    mantissas, exponents = np.frexp(graph)
-    pattern = mantissas != 0.0
-    units, roots = _tree_potentials(pattern, exponents)
     logs = work[:size, :size]
-    np.abs(mantissas, out=logs, casting="same_kind")
+    exponents = np.empty((size, size), dtype=np.int32, order="F")
+    np.frexp(graph, logs, exponents, casting="same_kind")
+    pattern = graph != 0.0
+    units, roots = _tree_potentials(pattern, exponents)
+    np.abs(logs, out=logs)
     logs[~pattern] = 1.0
     np.log2(logs, out=logs)
     # Whole exponents are added to the logarithms of the mantissas, so that the sums, and their
@@ -152,7 +153,7 @@ def _balance(graph: Array, order: int) -> tuple[Array, int]:
         moved = _least_squares(work, logs, pattern, roots, order)
     whole = np.rint(moved).astype(np.int32)
     units = units + whole[:size]
-    powers = np.subtract(units, units[:, None], order="F")
+    powers = np.subtract(units, units[:, None], out=exponents)
     powers[:order, :order] -= whole[size]
     np.ldexp(graph, powers, out=graph)
     # A at norm 1 while the states are balanced: its weight against B and C must not depend on
