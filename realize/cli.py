@@ -298,7 +298,7 @@ def score_command(
     picture: str | None,
     as_json: bool,
 ) -> None:
-    """Score a routine of yours on families of problems with known answers.
+    """Score a routine of yours on problems with known answers.
 
     It takes float arrays A, B, C, D and returns an order, or A, B, C, D of a reduced model. Exit
     status: 0 all right; 1 some wrong or crashed; 2 usage or input error.
@@ -340,7 +340,7 @@ def score_command(
     help="Reduce exactly, with floats read so. Default: the arithmetic follows the data.",
 )
 def certify_command(file: str, output: str, reading: str | None) -> None:
-    """Write a certificate of the minimal realization of the model in FILE."""
+    """Certify the minimal realization of the model in FILE."""
     source = _read(file)
     if reading is not None:
         source = source.read(reading)
