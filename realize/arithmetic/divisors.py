@@ -44,10 +44,9 @@ def split(f: Array, g: Array, degree: int) -> tuple[Array, Array, Array, float]:
     and all three are refined together by Gauss-Newton, with the leading coefficient of h held.
     """
     # Powers of two, so that squares neither overflow nor vanish.
-    f_shift, g_shift = (int(np.frexp(np.abs(p).max())[1]) for p in (f, g))
-    f, g = np.ldexp(f, -f_shift), np.ldexp(g, -g_shift)
-    unit = variable_unit(f if f.size >= g.size else g)
-    f, g = (np.ldexp(p, -unit * np.arange(p.size)) for p in (f, g))
+    longer = f if f.size >= g.size else g
+    unit = variable_unit(_levelled(longer, 0)[0])
+    (f, f_shift), (g, g_shift) = _levelled(f, unit), _levelled(g, unit)
     f_norm, g_norm = float(np.linalg.norm(f)), float(np.linalg.norm(g))
     f, g = f / f_norm, g / g_norm
     null = np.linalg.svd(sylvester(f, g, degree))[2][-1]
@@ -65,6 +64,16 @@ def split(f: Array, g: Array, degree: int) -> tuple[Array, Array, Array, float]:
     u = np.ldexp(u * f_norm, unit * np.arange(u.size) + f_shift)
     v = np.ldexp(v * g_norm, unit * np.arange(v.size) + g_shift)
     return h, u, v, best
+
+
+def _levelled(polynomial: Array, unit: int) -> tuple[Array, int]:
+    """Return a polynomial in a unit of its variable, its largest coefficient about 1, and a shift.
+
+    The coefficients are those returned times two to the unit times their place, plus the shift.
+    """
+    places = unit * np.arange(polynomial.size)
+    shift = int((np.frexp(polynomial)[1] - places)[polynomial != 0.0].max())
+    return np.ldexp(polynomial, -places - shift), shift
 
 
 def variable_unit(polynomial: Array) -> int:

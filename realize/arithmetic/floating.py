@@ -233,9 +233,7 @@ class OpenedFloating:
         A, B, C = model.A, model.B, model.C
         with np.errstate(all="ignore"):
             # What overflows is found by the norm of the result, and refused there.
-            self.scaling: Scaling = (
-                scaling_of(A, B, C) if scaled and A.shape[0] else unscaled(A, B, C)
-            )
+            self.scaling: Scaling = scaling_of(A, B, C) if scaled else unscaled(A, B, C)
         self.A, self.B, self.C = self.scaling.A, self.scaling.B, self.scaling.C
         self.tolerance = tolerance
         self.cutoff = rule.cutoff(model.order, self.scaling.scale, tolerance)

@@ -97,6 +97,8 @@ def scaling_of(A: Array, B: Array, C: Array) -> Scaling:
     A, B, C : float arrays (n, n), (n, m), (p, n).
     """
     order, inputs = B.shape
+    if not order:
+        return unscaled(A, B, C)
     first_output = order + inputs
     size = first_output + C.shape[0]
     # One graph of states, inputs and outputs: entry (i, j) is how j acts on i.

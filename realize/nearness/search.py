@@ -262,7 +262,7 @@ class Search:
                     "of [A - zI, B]; nothing is proved there"
                 )
             left, least, _ = np.linalg.svd(reduced.terms[0])
-            if bits > -math.log2(_SMALLEST) + 200:
+            if least[-1] <= _SMALLEST and 1e6 * 2.0**-bits <= _SMALLEST:
                 raise PrecisionError(
                     f"[A - zI, B] has a singular value below {_SMALLEST:g} of its size near "
                     f"{self._told(found.point)}, which is out of the range of this search. The "

@@ -151,11 +151,16 @@ class Reduced:
         share = np.where(ok, reach / self.gap, 0.0)
         left = (self.left * reach + self.left_rest) / (1 - share)
         right = (self.right * reach + self.right_rest) / (1 - share)
-        corner = 1 / (self.gap * (1 - share)) + right * eta * left
-        total = corner**2 + (right * eta) ** 2 + (eta * left) ** 2 + eta**2
-        # The determinant of the four norms is eta / (s - |w|).
-        product = eta / (self.gap * (1 - share))
-        norm = np.sqrt((total + np.sqrt(np.maximum(total**2 - 4 * product**2, 0.0))) / 2)
+        # Near the least distances squares would overflow, so the largest of the norms comes out.
+        with np.errstate(over="ignore", invalid="ignore"):
+            corner = 1 / (self.gap * (1 - share)) + right * eta * left
+            largest = np.maximum(np.maximum(corner, eta), eta * np.maximum(left, right))
+            parts = (corner, right * eta, eta * left, eta)
+            total = sum((part / largest) ** 2 for part in parts)
+            # The determinant of the four norms is eta / (s - |w|).
+            product = eta / largest / (self.gap * (1 - share)) / largest
+            root = np.sqrt(np.maximum(total**2 - 4 * product**2, 0.0))
+            norm = largest * np.sqrt((total + root) / 2)
         return np.asarray(ok & (norm * (target * (1 + _SAFE)) <= 1))
 
     def cover(self, side: float, target: float, news: float) -> Cover:

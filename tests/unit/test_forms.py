@@ -597,3 +597,13 @@ def test_no_warning_for_visible_modes(place: ModuleType, rational: bool) -> None
     """An unstable mode that is kept is no reason to warn (warnings are errors here)."""
     source = Realization([[1, 0], [0, -1]], [[1], [0]], [[1, 0]])
     assert place.minimal(in_kind(source, rational)).order == 1
+
+
+@pytest.mark.parametrize("scale", [1e-140, 1e70, 1e140])
+def test_common_factors_in_extreme_units_of_time(scale: float) -> None:
+    """Neither the powers of a pole nor the squares of coefficients leave the range of doubles."""
+    denominator = [1.0, 3.0 * scale, 2.0 * scale * scale]
+    found = floating.cancel(TransferMatrix([1e-30, 1e-30 * scale], denominator))
+    assert np.roots(found.common).tolist() == pytest.approx([-scale])
+    apart = floating.cancel(TransferMatrix([1e-30, 5e-30 * scale], denominator))
+    assert tuple(apart.common) == (1.0,)

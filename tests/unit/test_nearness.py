@@ -388,3 +388,12 @@ def test_rationals_that_no_double_holds() -> None:
     assert found.lower <= near.upper * (1 + 1e-12)
     assert near.lower <= found.upper * (1 + 1e-12)
     assert found.upper != near.upper
+
+
+@pytest.mark.parametrize("size", [1e-100, 1e-126, 1e-138])
+def test_distances_whose_squares_are_beyond_doubles(size: float) -> None:
+    """One state beside an input of that size: the distance is the size, and nothing overflows."""
+    found = distance_to_uncontrollability(Realization([[1.0]], [[size]], [[1.0]]))
+    assert found.proved
+    assert found.lower <= size <= found.upper * (1 + 1e-12)
+    assert found.lower >= 0.89 * size

@@ -582,3 +582,15 @@ def test_sampling_and_corners_of_a_proved_box() -> None:
             given.radii.C * s[6:].reshape(1, 2),
         ))  # fmt: skip
         assert exact.minimal(corner).order == 2
+
+
+@pytest.mark.parametrize(("inputs", "outputs"), [(0, 0), (2, 1), (0, 1)])
+def test_a_model_without_states_is_minimal_whatever_moves(inputs: int, outputs: int) -> None:
+    """There is no mode to hide, also where there is nothing at all."""
+    empty = Realization(
+        np.zeros((0, 0)), np.zeros((0, inputs)), np.zeros((outputs, 0)), np.ones((outputs, inputs))
+    )
+    for uncertainty in (0.1, "ulp"):
+        found = examine(empty, uncertainty=uncertainty)
+        assert found.within_uncertainty is Within.MINIMAL
+        assert found.answer.order == 0
