@@ -31,12 +31,17 @@ from realize.examination.examine import DEFAULT_BUDGET, examine
 from realize.examination.page import findings, page
 from realize.forms import reduce
 from realize.model.files import load, save, to_document
-from realize.model.realization import Realization
+from realize.model.realization import Kind, Realization
 from realize.model.transfer import TransferMatrix
 from realize.proof.certify import certify
 from realize.proof.record import check
 from realize.results import Mode, Reduction, spelled
-from realize.stability import Stability, hidden_cautions
+from realize.stability import (
+    NUMBERS_NOT_PLANT,
+    ROUNDED_COEFFICIENTS,
+    Stability,
+    hidden_cautions,
+)
 from realize.testing.problems import DIFFICULTIES, families
 from realize.testing.scoring import check_picture_name, load_routine, score
 from realize.uncertainty import Rounding, Uncertainty
@@ -111,6 +116,11 @@ def _read(file: str) -> Realization | TransferMatrix:
     return load(sys.stdin if file == "-" else file)
 
 
+def _caution(*texts: str) -> None:
+    for text in texts:
+        click.echo(f"caution: {text}", err=True)
+
+
 def _print_page(text: str) -> None:
     """Print a page; on a terminal the labels stand out and a danger is red."""
     if not sys.stdout.isatty():
@@ -170,7 +180,10 @@ def examine_command(
     if against is not None:
         with open(against, encoding="utf-8") as stream:
             recorded = read_record(stream)
-    model = as_realization(_read(file))
+    source = _read(file)
+    if isinstance(source, TransferMatrix) and source.kind == Kind.FLOATING:
+        _caution(ROUNDED_COEFFICIENTS)
+    model = as_realization(source)
     examination = examine(
         model,
         readings=readings or None,
@@ -240,8 +253,7 @@ def minimal_command(file: str, output: str, reading: str | None, as_json: bool) 
     click.echo(
         f"order {reduction.source_order} to {reduction.order}, {reduction.model.kind}", err=True
     )
-    for caution in hidden_cautions(modes):
-        click.echo(f"caution: {caution}", err=True)
+    _caution(*hidden_cautions(modes))
     sys.exit(status)
 
 
@@ -359,8 +371,7 @@ def certify_command(file: str, output: str, reading: str | None) -> None:
         f"order {reduction.source_order} to {reduction.order}, certificate {certificate.digest}",
         err=True,
     )
-    for caution in hidden_cautions(modes):
-        click.echo(f"caution: {caution}", err=True)
+    _caution(*hidden_cautions(modes), NUMBERS_NOT_PLANT)
     sys.exit(NOT_STABLE if _status_of(reduction, modes) == NOT_STABLE else 0)
 
 

@@ -141,16 +141,6 @@ class Profile:
     pivots: tuple[int, ...]
     stairs: tuple[int, ...] = ()
 
-    def beats(self, other: Profile) -> bool:
-        """Whether this profile is nearer the true one: larger rank, then earlier pivots.
-
-        Modulo a prime the rank can only fall and the pivots can only move right, so the true
-        profile dominates; primes with different profiles must never be mixed.
-        """
-        if len(self.pivots) != len(other.pivots):
-            return len(self.pivots) > len(other.pivots)
-        return self.pivots < other.pivots
-
 
 def pivot_columns(echelon: nmod_mat, rank: int) -> tuple[int, ...]:
     """Return the column of the leading 1 of each non-zero row of a reduced echelon form."""

@@ -254,6 +254,14 @@ def test_without_a_target_the_model_is_on_stdout(
     assert (tmp_path / "target.json").read_text("ascii") == plain.stdout
 
 
+def test_rounded_coefficients_come_with_their_caution(file: Callable[[Any], str]) -> None:
+    """A transfer function in doubles may be another filter than the one meant; an exact one not."""
+    rounded = run("examine", file(TransferMatrix([1.0], [1.0, 0.1])))
+    assert "caution: Coefficients that are correctly rounded" in rounded.stderr
+    assert rounded.exit_code == 0
+    assert run("examine", file(TransferMatrix([1], [1, "1/10"]))).stderr == ""
+
+
 def test_cautions_go_to_stderr(file: Callable[[Any], str], tmp_path: Path) -> None:
     """What the reduced model no longer shows is said, and not among the data."""
     done = run("minimal", file(hidden_growing()))
@@ -332,6 +340,7 @@ def test_a_certificate_is_written_and_checked(
     assert (checked.exit_code, checked.stderr) == (0, "")
     assert checked.stdout == realize.check(text) + "\n"
     assert json.loads(text)["digest"] in done.stderr
+    assert "caution: A certificate is a statement about exact tables of numbers" in done.stderr
     assert run("check", "-", text=text).stdout == checked.stdout
     shown = run("certify", file(model()), *arguments)
     assert json.loads(shown.stdout)["digest"] == json.loads(text)["digest"]
