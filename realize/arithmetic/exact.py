@@ -443,6 +443,10 @@ def _numerator(below: Polynomial, shifted: Polynomial, feedthrough: Fraction) ->
 
 
 def _better(first: tuple[Any, ...], second: tuple[Any, ...]) -> bool:
+    """Whether the first pivots are nearer the true ones: more of them, then earlier ones.
+
+    Modulo a prime the rank can only fall and pivots can only move right.
+    """
     return len(first) > len(second) or (len(first) == len(second) and first < second)
 
 
